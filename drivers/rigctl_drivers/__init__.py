@@ -1,0 +1,1 @@
+"""Drivers that ship with polrig, one per command convention."""

@@ -1,0 +1,239 @@
+"""What a driver implements and what a simulated bench offers: the contracts between the core and its plugins.
+
+Plain synchronous Python. A driver never sleeps and never waits for physics: what takes time returns `Begun`,
+and the runner polls it when it is due. Angles are degrees in the bench's sense (positive is counter-clockwise
+to an eye facing the light), powers watts, times seconds, instants seconds since the run began.
+"""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from enum import IntFlag
+from typing import Any, Generic, Literal, Protocol, TypeVar
+
+from rigctl.links.channel import Twin
+from rigctl.links.family import Family
+from rigctl.links.link import Link
+
+T = TypeVar("T")
+
+RoleKind = Literal["rotation stage", "power meter", "shutter"]
+
+
+@dataclass(frozen=True, slots=True)
+class Begun(Generic[T]):
+    """Something under way.
+
+    `poll` makes at most one short exchange and returns the value, or None while there is none yet. It is first
+    called at `due_s`, then every `again_s`, until `give_up_s`.
+    """
+
+    due_s: float
+    poll: Callable[[], T | None]
+    again_s: float
+    give_up_s: float
+
+
+class Flag(IntFlag):
+    """What is wrong with the readings of one dwell; 0 is nothing."""
+
+    OVERLOAD = 1
+    UNDERRANGE = 2
+    NOT_A_NUMBER = 4
+    QUESTIONABLE = 8
+
+
+@dataclass(frozen=True, slots=True)
+class Dwell:
+    """Readings of one detector at one visit.
+
+    `levels_w` has one entry a reading, NaN where the reading was a flag; `flags` is their union.
+    `began_s` and `ended_s` bound the integration.
+    """
+
+    levels_w: tuple[float, ...]
+    flags: Flag
+    range_w: float
+    began_s: float
+    ended_s: float
+
+
+@dataclass(frozen=True, slots=True)
+class Identity:
+    """Who answered: the four fields of IEEE 488.2 `*IDN?`, empty where the convention has none."""
+
+    maker: str
+    model: str
+    serial: str
+    firmware: str
+
+    @property
+    def is_simulated(self) -> bool:
+        """Whether a twin says of itself that it is one."""
+        return self.model.startswith("simulated")
+
+
+@dataclass(frozen=True, slots=True)
+class StageCapabilities:
+    """What a mount can do; travel and backlash in degrees, the bench's sense."""
+
+    travel_deg: tuple[float, float]
+    speed_deg_per_s: float
+    acceleration_deg_per_s2: float
+    backlash_deg: float
+    resolution_deg: float
+    can_spin: bool = False
+
+    def travel_time_s(self, distance_deg: float) -> float:
+        """Duration of a move with a trapezoidal (or triangular) speed profile, s."""
+        distance, speed, acceleration = abs(distance_deg), self.speed_deg_per_s, self.acceleration_deg_per_s2
+        if distance >= speed**2 / acceleration:
+            return distance / speed + speed / acceleration
+        return 2.0 * (distance / acceleration) ** 0.5
+
+
+@dataclass(frozen=True, slots=True)
+class MeterCapabilities:
+    """What a power meter can do.
+
+    `ranges_w` are full scales in ascending order; `time_constant_s` and `noise_w` belong to each range.
+    """
+
+    ranges_w: tuple[float, ...]
+    time_constant_s: tuple[float, ...]
+    noise_w: tuple[float, ...]
+    saturation_w: float
+    aperture_s: tuple[float, float]
+
+
+@dataclass(frozen=True, slots=True)
+class ShutterCapabilities:
+    """What a shutter can do."""
+
+    moves_in_s: float
+
+
+Capabilities = StageCapabilities | MeterCapabilities | ShutterCapabilities
+
+
+class Instrument(Protocol):
+    """What every driver offers; `make_safe` is called at every ending, whatever else failed."""
+
+    def identify(self) -> Identity:
+        """Ask who is there; raises `WrongInstrumentError` when it cannot be this kind."""
+
+    def settings(self) -> Mapping[str, str | float]:
+        """Read back the settings that matter to an analyst, for the run file."""
+
+
+class RotationStage(Instrument, Protocol):
+    """A mount that turns."""
+
+    capabilities: StageCapabilities
+
+    def begin_move(self, angle_deg: float) -> Begun[float]:
+        """Start a move; yields the angle reached, deg. Raises `MotionError` on an alarm."""
+
+    def begin_home(self) -> Begun[float]:
+        """Start the search for the mount's own zero; yields the angle afterwards, deg."""
+
+    def angle_deg(self) -> float:
+        """Read the angle now."""
+
+    def is_homed(self) -> bool:
+        """Whether the angle can be trusted."""
+
+    def stop(self) -> None:
+        """Stop turning now; returns once the mount acknowledges it."""
+
+
+class PowerMeter(Instrument, Protocol):
+    """A head that reads power."""
+
+    capabilities: MeterCapabilities
+
+    def set_wavelength(self, wavelength_m: float) -> None:
+        """Set the wavelength of the light and read it back."""
+
+    def set_range(self, full_scale_w: float | None) -> float:
+        """Fix the smallest range that holds a power (None: automatic) and return its full scale, W."""
+
+    def set_dwell(self, readings: int, aperture_s: float) -> None:
+        """Arrange for dwells of `readings` readings, each integrated over `aperture_s`."""
+
+    def begin_dwell(self) -> Begun[Dwell]:
+        """Start a block of readings."""
+
+
+class Shutter(Instrument, Protocol):
+    """A shutter before everything else in the light's way."""
+
+    capabilities: ShutterCapabilities
+
+    def begin_set(self, is_open: bool) -> Begun[bool]:
+        """Start to open or close; yields the state read back."""
+
+    def is_open(self) -> bool:
+        """Read the state back now."""
+
+
+@dataclass(frozen=True, slots=True)
+class Option:
+    """One key that a driver or twin accepts in the rig file.
+
+    `kind` is a quantity kind of `rigctl.quantities` (its value arrives in that kind's base unit), a span of one
+    (`span of angle`), a list of one (`list of power`), `text`, `whole number` or `choice`.
+    """
+
+    kind: str
+    default: Any = None
+    choices: tuple[str, ...] = ()
+    meaning: str = ""
+
+
+Options = Mapping[str, Any]
+
+
+@dataclass(frozen=True, slots=True)
+class Driver:
+    """A driver as plugins declare it under the entry point group `rigctl.drivers`.
+
+    `capabilities` works from the rig file alone, so that `check` needs no bench; `open` takes hold of the
+    instrument on its link, which every channel behind the same address shares.
+    """
+
+    name: str
+    kind: RoleKind
+    family: Family
+    options: Mapping[str, Option]
+    capabilities: Callable[[Options], Capabilities]
+    open: Callable[[Link, Options], Instrument]
+    meaning: str = field(default="", kw_only=True)
+
+
+class Bench(Protocol):
+    """A simulated bench: one world, and a twin for each address of the rig."""
+
+    def twin(self, address: str) -> Twin:
+        """Return what stands at an address of the rig file."""
+
+    def truth(self) -> Mapping[str, float]:
+        """Return the hidden value of every quantity of the train, by name, in its kind's base unit."""
+
+    def block_by_hand(self, is_blocked: bool, now_s: float) -> None:
+        """A person puts something into the beam, or takes it away."""
+
+
+class BenchFactory(Protocol):
+    """What a simulated bench declares under the entry point group `rigctl.benches`."""
+
+    def twin_options(self, driver: str) -> Mapping[str, Option]:
+        """Keys that the rig file's `simulated:` accepts for an instrument of this driver."""
+
+    def bench_options(self) -> Mapping[str, Option]:
+        """Keys that the rig file's `simulated:` accepts for the bench as a whole."""
+
+    def default_rig(self, roles: Mapping[str, RoleKind]) -> str:
+        """Return the text of a rig file with a well-behaved instrument for each role."""
+
+    def build(self, recipe: Any, rig: Any, seed: int) -> Bench:
+        """Build a bench for a checked `Recipe` and `Rig`; its hidden truth is drawn from the seed."""

@@ -1,0 +1,1 @@
+"""One link to one address."""
