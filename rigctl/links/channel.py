@@ -44,7 +44,7 @@ class Twin(Protocol):
         """Bytes arrive at the instrument."""
 
     def next_ready_s(self) -> float | None:
-        """Return the instant at which the next reply bytes become readable; None when nothing is under way."""
+        """Return the instant at which the next reply bytes become readable; None: nothing is under way."""
 
     def take(self, now_s: float) -> bytes:
         """Return the reply bytes readable by now, in order."""

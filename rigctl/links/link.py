@@ -4,10 +4,11 @@ It owns the promise that what it returns answers what was just asked. It knows n
 framed beyond lines and blocks, and how a lost step is found again, is the family's. It never sends a question
 twice.
 
-A link is out of step from the moment it is opened, and again whenever something is asked and the whole answer
-has not come: the deadline passed, a stop was asked for, the bytes were no reply. Nothing passes then before the
-family's resync has succeeded. What a byte stream cannot show is a second copy of an older reply that arrives
-while the next question is open, in a piece of its own, before the answer: that is seen only afterwards.
+A link is out of step from the moment it is opened, and again whenever something is asked and the whole
+answer has not come: the deadline passed, a stop was asked for, the bytes were no reply. Nothing passes then
+before the family's resync has succeeded. What a byte stream cannot show is a second copy of an older reply
+that arrives while the next question is open, in a piece of its own, before the answer: that is seen only
+afterwards.
 """
 
 import threading
@@ -45,9 +46,7 @@ class Link:
     def open(self) -> None:
         """Take hold of the address; does nothing while it is held."""
         with self.lock:
-            if self._channel is None:
-                self._channel = self._open_channel()
-                self._is_lost = self.is_in_step = False
+            self._take_hold()
 
     def close(self) -> None:
         """Give the address back; a second call does nothing."""
@@ -107,7 +106,7 @@ class Link:
         LinkTimeoutError
             No complete answer in time; it carries the line that came in part.
         RefusedError
-            No answer in time, and the instrument says why: its first complaint since the queue was last empty.
+            No answer in time, and the instrument says why: its oldest complaint.
         FramingError, DisconnectedError, StopRequestedError
             As the channel tells them.
         """
@@ -171,8 +170,12 @@ class Link:
                 address=self.address,
                 do="look at the instrument and its cable, then resume the run",
             )
-        self.open()
-        assert self._channel is not None
+        return self._take_hold()
+
+    def _take_hold(self) -> Channel:
+        if self._channel is None:
+            self._channel = self._open_channel()
+            self._is_lost = self.is_in_step = False
         return self._channel
 
     def _in_step(self) -> Channel:
