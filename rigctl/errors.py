@@ -5,7 +5,8 @@ It owns the tree and the exit codes; it never prints and never catches.
     PolrigError                      70
     ├── PlanError                     2   mend what was written; nothing was sent
     │   ├── UsageError                2   mend the command line
-    │   └── FileError                 2   mend the recipe, rig file or table; carries every mistake with its place
+    │   ├── QuantityError             2   a text is no quantity; carries what was expected
+    │   └── FileError                 2   mend the recipe or rig file; carries every mistake with its place
     ├── InstrumentError               3   look at the bench
     │   ├── LinkError                 3
     │   │   ├── LinkTimeoutError      3   no complete reply in time; carries the partial bytes
@@ -52,9 +53,18 @@ class UsageError(PlanError):
     """The command line is wrong."""
 
 
+class QuantityError(PlanError):
+    """A text is not a quantity of the kind wanted; `nearest` is a text that would do, or empty."""
+
+    def __init__(self, what: str, *, expected: str, nearest: str = "") -> None:
+        self.expected, self.nearest = expected, nearest
+        guess = f"; did you mean '{nearest}'?" if nearest else ""
+        super().__init__(what, do=f"Expected {expected}{guess}")
+
+
 @dataclass(frozen=True, slots=True)
 class Mistake:
-    """One mistake of a file; line and column count from 1."""
+    """One mistake of a file; line and column count from 1, and line 0 stands for the file as a whole."""
 
     path: str
     line: int
@@ -67,7 +77,8 @@ class Mistake:
     def __str__(self) -> str:
         expected = f"; expected {self.expected}" if self.expected else ""
         nearest = f"; did you mean '{self.nearest}'?" if self.nearest else ""
-        return f"{self.path}:{self.line}:{self.column}: {self.what}{expected}{nearest}"
+        place = f":{self.line}:{self.column}" if self.line else ""
+        return f"{self.path}{place}: {self.what}{expected}{nearest}"
 
 
 class FileError(PlanError):
