@@ -169,7 +169,7 @@ def _element_slopes(
     return slopes
 
 
-def hidden_slopes(
+def coefficient_visibility(
     train: Train, visits: Visits, x: Mapping[str, float], element: Element
 ) -> tuple[Array, Array]:
     """Slopes of the transmission with the cosine and sine coefficients of one element.
