@@ -1,6 +1,7 @@
 PYTHON ?= python3
-BIN    := .venv/bin
-READY  := .venv/.ready
+VENV   ?= .venv
+BIN    := $(VENV)/bin
+READY  := $(VENV)/.ready
 unexport VIRTUAL_ENV
 export UV_PYTHON_DOWNLOADS := never
 
@@ -31,7 +32,7 @@ lock: $(READY)
 	@$(BIN)/uv pip compile pyproject.toml --group dev --universal --generate-hashes --no-header --no-annotate --quiet -o requirements.lock
 
 $(READY): pyproject.toml requirements.lock
-	@test -x $(BIN)/uv || { $(PYTHON) -m venv .venv && $(BIN)/python -m pip install -q 'uv>=0.8,<1'; }
+	@test -x $(BIN)/uv || { $(PYTHON) -m venv $(VENV) && $(BIN)/python -m pip install -q 'uv>=0.8,<1'; }
 	@$(BIN)/uv pip install --quiet --python $(BIN)/python --require-hashes -r requirements.lock
 	@$(BIN)/uv pip install --quiet --python $(BIN)/python --no-deps --no-build-isolation -e .
 	@touch $@

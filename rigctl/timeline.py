@@ -10,7 +10,7 @@ import os
 import select
 import time
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from datetime import UTC, datetime, timedelta
 from typing import Protocol
 
@@ -33,7 +33,8 @@ class StopRequest:
     def request(self, reason: str) -> None:
         """Ask to stop; may be called from a signal handler."""
         self.reasons.append(reason)
-        os.write(self._wake_write, b"!")
+        with suppress(BlockingIOError):  # a full pipe wakes every poll already
+            os.write(self._wake_write, b"!")
 
     def check(self) -> None:
         """Raise `StopRequestedError` when a stop was asked for and is not masked."""

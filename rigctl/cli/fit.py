@@ -1,0 +1,25 @@
+"""`polrig fit`: estimates with uncertainties, from a run file."""
+
+from rigctl.cli.options import AsJson, RunPath
+
+NAME = "fit"
+
+
+def command(file: RunPath, as_json: AsJson = False) -> int:
+    """Estimate what the recipe calls unknown, with standard uncertainties."""
+    from rigctl.cli.console import complain, say, say_json
+    from rigctl.cli.show import fit_as_dict, fit_lines
+    from rigctl.errors import UndecidedError
+    from rigctl.estimates import fit_run
+    from rigctl.record import load_run
+
+    run = load_run(file)
+    if run.status != "complete":
+        complain(f"note: the run is {run.status}; this is what it measured so far")
+    fitted = fit_run(run)
+    if as_json:
+        say_json({"file": str(file), "status": run.status, "fit": fit_as_dict(fitted, run.header.truth)})
+    else:
+        for line in fit_lines(fitted, run.header.truth):
+            say(line)
+    return UndecidedError.exit_code if fitted.refusals else 0

@@ -1,0 +1,18 @@
+"""Options that several commands share, so that they read alike everywhere."""
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+RecipePath = Annotated[Path, typer.Argument(metavar="RECIPE", help="What to measure (YAML).")]
+RunPath = Annotated[Path, typer.Argument(metavar="FILE", help="A run file (HDF5).")]
+Out = Annotated[
+    Path | None,
+    typer.Option(help="The run file to write, or a folder for it; never overwritten.", show_default=False),
+]
+Trace = Annotated[
+    Path | None,
+    typer.Option(help="Write every byte to and from the instruments to this file.", show_default=False),
+]
+AsJson = Annotated[bool, typer.Option("--json", help="Answer with one JSON object.")]

@@ -1,0 +1,30 @@
+"""The way to an angle: from one side only, so that backlash drops out.
+
+Pure arithmetic on angles; who turns the mount is elsewhere.
+"""
+
+from typing import Literal
+
+Approach = Literal["from below", "from above", "either"]
+
+
+def waypoints(
+    last_deg: float | None, target_deg: float, approach: Approach, *, backlash_deg: float
+) -> tuple[float, ...]:
+    """Return the angles to move to, in order, so that the last move comes from the wanted side.
+
+    A one-sided approach goes past the target by twice the backlash and comes back, unless the mount stands on
+    the right side already and came there from that side. Where the last angle is unknown (the first visit,
+    after homing) it always does.
+
+    Parameters
+    ----------
+    last_deg
+        Angle of the last completed move of the same approach, deg; None when there is none.
+    """
+    if approach == "either" or backlash_deg == 0.0:
+        return (target_deg,)
+    sense = 1.0 if approach == "from below" else -1.0
+    if last_deg is not None and sense * (target_deg - last_deg) > 0.0:
+        return (target_deg,)
+    return (target_deg - sense * 2.0 * backlash_deg, target_deg)
