@@ -20,11 +20,17 @@ class Resynced:
 class Family(Protocol):
     """Framing, resync and safe bytes of one command convention."""
 
-    name: str
-    reply_timeout_s: float
-    """How long an ordinary reply may take."""
-    longest_s: float
-    """How long the slowest operation may hold a reply back; the deadline of a resync."""
+    @property
+    def name(self) -> str:
+        """What the convention is called."""
+
+    @property
+    def reply_timeout_s(self) -> float:
+        """How long an ordinary reply may take."""
+
+    @property
+    def longest_s(self) -> float:
+        """How long the slowest operation may hold a reply back; the deadline of a resync."""
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         """Exchange bytes until the next reply is sure to answer the next question.

@@ -77,6 +77,22 @@ class Link:
         """Send what nothing is answered to."""
         self._transact(data, lambda _channel, _deadline_s: None, timeout_s=None)
 
+    def interrupt(self, data: bytes) -> None:
+        """Send bytes that act at once, whatever is under way and even while the link is out of step.
+
+        For what must not wait for a resync, such as a feed hold. Nothing is answered to them.
+        """
+        with self.lock:
+            channel = self._held()
+            try:
+                channel.write(data, self.timeline.now() + self.family.reply_timeout_s)
+            except DisconnectedError:
+                self._lose()
+                raise
+            except LinkError:
+                self.is_in_step = False
+                raise
+
     def exchange(
         self,
         data: bytes,
@@ -160,7 +176,7 @@ class Link:
             except DisconnectedError:
                 self._lose()
                 raise
-            self.is_in_step = True
+            self.is_in_step = not self._is_lost
             return answer
 
     def _held(self) -> Channel:
@@ -225,7 +241,12 @@ class Link:
 
     def _refuse_more(self, channel: Channel, answer: bytes) -> None:
         """With more than one reply here, nothing tells which of them is the answer."""
-        if more := channel.discard():
+        try:
+            more = channel.discard()
+        except DisconnectedError:  # the answer came whole before the end: told at the next exchange
+            self._lose()
+            return
+        if more:
             raise self._no_reply("more than one reply came to one question", answer + b"\n" + more)
 
     def _no_reply(self, what: str, partial: bytes) -> FramingError:
