@@ -1,0 +1,150 @@
+"""The records of a journal as values: visits, darks, and what is accepted at all.
+
+It owns the names of the keys. Every record is checked before it is written, so that a view can always be
+built from what the journal holds.
+"""
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from rigctl.errors import RecordError
+from rigctl.interfaces import Dwell, Flag
+from rigctl.record.layout import Header
+
+KINDS = ("header", "identity", "settings", "calibration", "event", "visit", "dark", "end")
+VISIT_STATUSES = ("ok", "saturated", "failed")
+END_STATUSES = ("complete", "stopped", "failed")
+DARK_WHEN = ("before", "after")
+DARK_HOW = ("by hand", "by shutter")
+
+
+@dataclass(frozen=True, slots=True)
+class Visit:
+    """One attempt at a visit; instants in s since the start, angles by role in deg.
+
+    `number` counts visits in the order they were planned, `index` is the place in the step's grid, `start`
+    says how often the run had been started. A role that was not read is missing or NaN.
+    """
+
+    step: str
+    number: int
+    index: tuple[int, ...]
+    attempt: int
+    start: int
+    began_s: float
+    ended_s: float
+    asked: Mapping[str, float]
+    read: Mapping[str, float]
+    dwells: Mapping[str, Dwell]
+    status: str
+    why: str
+
+
+@dataclass(frozen=True, slots=True)
+class Dark:
+    """Readings of every detector with the beam blocked at the source."""
+
+    step: str
+    when: str
+    how: str
+    began_s: float
+    ended_s: float
+    dwells: Mapping[str, Dwell]
+
+
+def dwell_record(dwell: Dwell) -> dict[str, Any]:
+    """Return a dwell as it stands under `detectors` in the record of a visit or a dark."""
+    return {
+        "levels_w": list(dwell.levels_w),
+        "flags": int(dwell.flags),
+        "range_w": dwell.range_w,
+        "t_begin": dwell.began_s,
+        "t_end": dwell.ended_s,
+    }
+
+
+def parse_visit(record: Mapping[str, Any]) -> Visit:
+    """Return the visit of a record."""
+    return Visit(
+        step=record["step"],
+        number=record["visit"],
+        index=tuple(record["index"]),
+        attempt=record["attempt"],
+        start=record["start"],
+        began_s=_real(record["t_begin"]),
+        ended_s=_real(record["t_end"]),
+        asked=_reals(record["asked"]),
+        read=_reals(record.get("read", {})),
+        dwells=_dwells(record.get("detectors", {})),
+        status=record["status"],
+        why=record.get("why", ""),
+    )
+
+
+def parse_dark(record: Mapping[str, Any]) -> Dark:
+    """Return the dark of a record."""
+    return Dark(
+        step=record["step"],
+        when=record["when"],
+        how=record["how"],
+        began_s=_real(record["t_begin"]),
+        ended_s=_real(record["t_end"]),
+        dwells=_dwells(record["detectors"]),
+    )
+
+
+def check_visit(visit: Visit, header: Header) -> None:
+    """Raise `RecordError` for a visit that has no place in the layout."""
+    shape = header.step(visit.step).shape
+    inside = len(visit.index) == len(shape) and all(
+        0 <= i < n for i, n in zip(visit.index, shape, strict=True)
+    )
+    if not inside:
+        raise RecordError(
+            f"visit {visit.number} at {visit.index} lies outside the grid {shape}", where=visit.step
+        )
+    require_word(visit.status, VISIT_STATUSES)
+    _require_detectors(visit.dwells, header)
+
+
+def check_dark(dark: Dark, header: Header) -> None:
+    """Raise `RecordError` for a dark that has no place in the layout."""
+    header.step(dark.step)
+    require_word(dark.when, DARK_WHEN)
+    require_word(dark.how, DARK_HOW)
+    _require_detectors(dark.dwells, header)
+
+
+def require_word(value: str, words: tuple[str, ...]) -> None:
+    """Raise `RecordError` unless a record uses one of these words."""
+    if value not in words:
+        raise RecordError(f"a record says '{value}'", do=f"possible: {', '.join(words)}")
+
+
+def _require_detectors(dwells: Mapping[str, Dwell], header: Header) -> None:
+    for role in dwells:
+        require_word(role, header.detectors)
+
+
+def _real(value: float | None) -> float:
+    return math.nan if value is None else float(value)
+
+
+def _reals(values: Mapping[str, float | None]) -> dict[str, float]:
+    return {key: _real(value) for key, value in values.items()}
+
+
+def _dwells(records: Mapping[str, Mapping[str, Any]]) -> dict[str, Dwell]:
+    return {role: _dwell(record) for role, record in records.items()}
+
+
+def _dwell(record: Mapping[str, Any]) -> Dwell:
+    return Dwell(
+        levels_w=tuple(_real(level) for level in record["levels_w"]),
+        flags=Flag(record["flags"]),
+        range_w=_real(record["range_w"]),
+        began_s=_real(record["t_begin"]),
+        ended_s=_real(record["t_end"]),
+    )
