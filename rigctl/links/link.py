@@ -25,6 +25,9 @@ T = TypeVar("T")
 LONGEST_BLOCK_BYTES = 64 * 2**20
 """Larger blocks are taken for garbage; far above what a spectrum or a waveform needs."""
 
+LONGEST_DISCARDED_BYTES = 4096
+"""Of what was thrown away no more than this is kept; far more than a few lines said unasked."""
+
 
 class Link:
     """The way to one address, shared by everything behind it; opened at its first use.
@@ -42,6 +45,7 @@ class Link:
         self._open_channel = open_channel
         self._channel: Channel | None = None
         self._is_lost = False
+        self._discarded = b""
 
     def open(self) -> None:
         """Take hold of the address; does nothing while it is held."""
@@ -71,7 +75,16 @@ class Link:
                 self._lose()
                 raise
             self.is_in_step = True
+            self._discarded += b"\n".join(found.stale)
             return found
+
+    def take_discarded(self) -> bytes:
+        """Return what came unasked or too late since the last call; it answers nothing that was asked.
+
+        A convention whose instruments speak unasked, as by an alarm, looks for that here.
+        """
+        discarded, self._discarded = self._discarded, b""
+        return discarded[-LONGEST_DISCARDED_BYTES:]
 
     def write(self, data: bytes) -> None:
         """Send what nothing is answered to."""
@@ -198,11 +211,12 @@ class Link:
         """Return the channel once the next reply is sure to answer the next question."""
         channel = self._held()
         try:
-            has_unread = self.is_in_step and bool(channel.discard())
+            unread = channel.discard() if self.is_in_step else b""
         except DisconnectedError:
             self._lose()
             raise
-        if has_unread or not self.is_in_step:
+        if unread or not self.is_in_step:
+            self._discarded = self._discarded[-LONGEST_DISCARDED_BYTES:] + unread
             self.resync()
         return channel
 
