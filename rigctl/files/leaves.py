@@ -1,0 +1,169 @@
+"""Types of the texts at the ends of a written file: quantities, choices, names and switches.
+
+It owns how one text becomes one value, and its JSON Schema; a text that will not do raises what was expected.
+"""
+
+import re
+from collections.abc import Callable, Sequence
+from datetime import date
+from typing import Annotated, Any, Literal
+
+from pydantic import PlainValidator, ValidationInfo, WithJsonSchema
+from pydantic_core import PydanticCustomError
+
+from rigctl.errors import PlanError, QuantityError
+from rigctl.files.mistakes import either, nearest_word, quoted
+from rigctl.quantities import KINDS, Measured, parse_measured, parse_quantity, parse_span
+
+Sign = Literal["any", "positive", "not negative"]
+
+LONGEST_NAME = 40
+"""Characters of a name; names become parts of the run file and columns of tables."""
+LONGEST_TITLE = 200
+LABEL = f"a letter, then letters A to Z, digits, spaces or '_', at most {LONGEST_NAME} in all"
+NAME = f"a letter, then letters, digits, spaces, '-' or '_', at most {LONGEST_NAME} in all"
+WAVELENGTH = "wavelength_m"
+"""Key of the validation context that holds the wavelength of the light, m."""
+
+
+def wrong(what: str, *, expected: str = "", nearest: str = "", key: str = "") -> PydanticCustomError:
+    """Make a mistake that is put in its place later; `key` is one below that place, or empty."""
+    context = {"what": what, "expected": expected, "nearest": nearest, "key": key}
+    return PydanticCustomError("mistake", "{what}", context)
+
+
+def _text(value: object, expected: str) -> str:
+    """Return a text; refuse a list or a mapping that stands in its place."""
+    if isinstance(value, str):
+        return value
+    raise wrong(f"a {'list' if isinstance(value, list) else 'mapping'} stands here", expected=expected)
+
+
+def _leaf(read: Callable[[str, ValidationInfo], object], expected: str) -> PlainValidator:
+    def validate(value: object, info: ValidationInfo) -> object:
+        text = _text(value, expected)
+        try:
+            return read(text, info)
+        except QuantityError as error:
+            raise wrong(error.what, expected=error.expected, nearest=error.nearest) from error
+        except PlanError as error:
+            raise wrong(error.what, expected=error.do) from error
+
+    return PlainValidator(validate, json_schema_input_type=str)
+
+
+def _wavelength_m(info: ValidationInfo) -> float | None:
+    context: dict[str, Any] = info.context or {}
+    return context.get(WAVELENGTH)
+
+
+def _check_sign(value: float, text: str, *, sign: Sign, kind: str) -> None:
+    """Refuse a quantity of the wrong sign."""
+    if (sign == "positive" and not value > 0) or (sign == "not negative" and value < 0):
+        what = f"{quoted(text)} is {'not above zero' if sign == 'positive' else 'negative'}"
+        raise wrong(what, expected=f"such as {KINDS[kind].example}")
+
+
+def quantity(kind: str, *, sign: Sign = "any") -> PlainValidator:
+    """A quantity of a kind, read into its base unit."""
+
+    def read(text: str, info: ValidationInfo) -> float:
+        value = parse_quantity(text, kind, wavelength_m=_wavelength_m(info))
+        _check_sign(value, text, sign=sign, kind=kind)
+        return value
+
+    return _leaf(read, f"such as {KINDS[kind].example}")
+
+
+def measured(kind: str, *, sign: Sign = "any") -> PlainValidator:
+    """A quantity of a kind with its standard uncertainty, read into its base unit."""
+
+    def read(text: str, info: ValidationInfo) -> Measured:
+        value = parse_measured(text, kind, wavelength_m=_wavelength_m(info))
+        _check_sign(value.value, text, sign=sign, kind=kind)
+        return value
+
+    return _leaf(read, f"such as {KINDS[kind].example}")
+
+
+def span(kind: str) -> PlainValidator:
+    """Two ends of a kind, the lower first."""
+    return _leaf(lambda text, _: parse_span(text, kind), f"such as 0 to {KINDS[kind].example}")
+
+
+def choice(*words: str) -> PlainValidator:
+    """One of a few words."""
+
+    def read(text: str, _: ValidationInfo) -> str:
+        if text not in words:
+            nearest = nearest_word(text, words)
+            raise wrong(f"{quoted(text)} is not among the choices", expected=either(words), nearest=nearest)
+        return text
+
+    return _leaf(read, either(words))
+
+
+def shown(example: str) -> WithJsonSchema:
+    """Describe a text in the JSON Schema of its file."""
+    return WithJsonSchema({"type": "string", "examples": [example]})
+
+
+def read_name(text: str) -> str:
+    """Return a name of an element, role or step; refuse characters that would end an address or a path."""
+    if not re.fullmatch(r"[^\W\d_][\w -]*", text) or len(text) > LONGEST_NAME or text != text.strip():
+        raise wrong(f"{quoted(text)} is no name", expected=NAME)
+    return text
+
+
+def is_label(text: str) -> bool:
+    """Whether a text may name a role or a step: with `_` for spaces it becomes a name in the run file."""
+    return (
+        re.fullmatch(r"[A-Za-z][A-Za-z0-9_ ]*", text) is not None
+        and len(text) <= LONGEST_NAME
+        and text[-1] != " "
+    )
+
+
+def _read_title(text: str, _: ValidationInfo) -> str:
+    if not text.strip() or len(text) > LONGEST_TITLE:
+        raise wrong("the title is empty or too long", expected=f"1 to {LONGEST_TITLE} characters")
+    return " ".join(text.split())
+
+
+def _read_switch(text: str, _: ValidationInfo) -> bool:
+    values = {"true": True, "yes": True, "false": False, "no": False}
+    if text not in values:
+        nearest = nearest_word(text, values)
+        raise wrong(f"{quoted(text)} is neither true nor false", expected="true or false", nearest=nearest)
+    return values[text]
+
+
+def _read_date(text: str, _: ValidationInfo) -> date:
+    try:
+        return date.fromisoformat(text)
+    except ValueError as error:
+        raise wrong(f"{quoted(text)} is no date", expected="year-month-day, such as 2027-03-01") from error
+
+
+def read_whole_number(text: str) -> int:
+    """Return a whole number written in plain digits."""
+    if not re.fullmatch(r"[+-]?[0-9]{1,18}", text):
+        raise wrong(f"{quoted(text)} is no whole number", expected="such as 7")
+    return int(text)
+
+
+def exactly_one(names: Sequence[str], given: Sequence[str], *, key: str = "") -> None:
+    """Refuse a mapping that holds none or several of keys of which it must hold one."""
+    if len(given) != 1:
+        what = (
+            f"{' and '.join(map(quoted, given))} exclude each other" if given else "something is missing here"
+        )
+        raise wrong(what, expected=f"exactly one of {either(map(quoted, names))}", key=key)
+
+
+NameText = Annotated[str, _leaf(lambda text, _: read_name(text), "a name"), shown("entry polarizer")]
+TitleText = Annotated[str, _leaf(_read_title, "a title"), shown("quarter-wave plate")]
+SwitchText = Annotated[bool, _leaf(_read_switch, "true or false"), shown("true")]
+DateText = Annotated[date, _leaf(_read_date, "a date"), shown("2027-03-01")]
+WholeText = Annotated[int, _leaf(lambda text, _: read_whole_number(text), "a whole number"), shown("7")]
+WordText = Annotated[str, _leaf(lambda text, _: text, "a word"), shown("part")]

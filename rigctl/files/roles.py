@@ -1,0 +1,85 @@
+"""The roles of a recipe, as far as they can be read, and whether a part that names one may.
+
+It owns the check of one mention of a role; who mentions roles is the business of others.
+"""
+
+from collections.abc import Collection
+from dataclasses import dataclass, field
+
+from rigctl.files.leaves import LABEL, is_label
+from rigctl.files.mistakes import nearest_word, quoted
+from rigctl.files.part import Part
+from rigctl.files.recipe import BY_HAND
+
+RESERVED_ROLES = (BY_HAND, "source")
+"""Words that mean something else where a role may stand."""
+
+
+@dataclass(slots=True)
+class Roles:
+    """The part of a recipe that declares its roles; `used` gathers those that something needs."""
+
+    part: Part
+    used: set[str] = field(default_factory=set)
+
+    def kind(self, name: str) -> str | None:
+        """Return the kind of a role; None where it is not declared or cannot be read."""
+        role = self.part.at(name)
+        return role.text if role.text is not None else role.at("is").text
+
+    def use(
+        self, part: Part, kind: str, *, name: str | None = None, may_be_optional: bool = False
+    ) -> str | None:
+        """Check that a part names a role of a kind, and return the role where it is declared.
+
+        The name is the part's text, or `name` where the role is the part's key.
+        """
+        wanted = part.text if name is None else name
+        complain = part.wrong if name is None else part.wrong_key
+        if wanted is None:
+            return None
+        names = self.part.items()
+        if wanted not in names:
+            near = nearest_word(wanted, [n for n in names if self.kind(n) == kind]) or nearest_word(
+                wanted, names
+            )
+            complain(f"no role is called {quoted(wanted)}", expected=self._declared(kind), nearest=near)
+            return None
+        self.used.add(wanted)
+        found = self.kind(wanted)
+        if found is not None and found != kind:
+            complain(f"the role {quoted(wanted)} is a {found}", expected=f"a role that is a {kind}")
+        elif not may_be_optional:
+            self._refuse_optional(wanted)
+        return wanted
+
+    def check(self) -> None:
+        """Check the names of all roles."""
+        seen: dict[str, str] = {}
+        for name, part in self.part.items().items():
+            twin = seen.setdefault(name.replace(" ", "_"), name)
+            if not is_label(name):
+                part.wrong_key(f"{quoted(name)} is no name of a role", expected=LABEL)
+            elif name in RESERVED_ROLES:
+                part.wrong_key(f"the word {quoted(name)} has a meaning of its own", expected="another name")
+            elif twin != name:
+                part.wrong_key(f"the roles {quoted(twin)} and {quoted(name)} differ only by '_'")
+
+    def check_used(self, kinds: Collection[str]) -> None:
+        """Refuse roles of some kinds that nothing uses: most likely a name was mistaken."""
+        for name, part in self.part.items().items():
+            if name not in self.used and self.kind(name) in kinds:
+                what = f"the role {quoted(name)} is a {self.kind(name)} that nothing in the recipe uses"
+                part.wrong_key(what, expected="a detector or an element that names it")
+
+    def _declared(self, kind: str) -> str:
+        names = [quoted(name) for name in self.part.items() if self.kind(name) == kind]
+        return f"a role that is a {kind}" + (f", here {' or '.join(names)}" if names else ", under 'roles'")
+
+    def _refuse_optional(self, name: str) -> None:
+        """Refuse that a role may be left out without which the recipe measures nothing."""
+        optional = self.part.at(name).at("optional")
+        if optional.text in ("true", "yes"):
+            optional.wrong(
+                f"the role {quoted(name)} cannot be optional: the recipe needs it", expected="false"
+            )
