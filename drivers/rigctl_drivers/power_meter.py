@@ -12,6 +12,7 @@ from collections.abc import Mapping
 from rigctl.errors import LimitError
 from rigctl.interfaces import Begun, Driver, Dwell, Flag, Identity, MeterCapabilities, Option, Options
 from rigctl.links.link import Link
+from rigctl_drivers.reading import reading
 from rigctl_drivers.scpi_codec import (
     format_number,
     is_same_number,
@@ -21,7 +22,7 @@ from rigctl_drivers.scpi_codec import (
     parse_readings,
 )
 from rigctl_drivers.scpi_family import SCPI
-from rigctl_drivers.scpi_shell import ask, identify, not_taken, reading, set_number, set_word
+from rigctl_drivers.scpi_shell import ask, identify, not_taken, set_number, set_word
 
 RANGE = "SENSE:POWER:RANGE:UPPER"
 AUTO_RANGE = "SENSE:POWER:RANGE:AUTO"

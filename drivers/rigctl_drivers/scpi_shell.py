@@ -3,12 +3,10 @@
 It owns how a refusal is found and told. It knows no instrument, never repeats a command and never waits.
 """
 
-from collections.abc import Iterator
-from contextlib import contextmanager
-
 from rigctl.errors import FramingError, RefusedError, WrongInstrumentError
 from rigctl.interfaces import Identity
 from rigctl.links.link import Link
+from rigctl_drivers.reading import reading
 from rigctl_drivers.scpi_codec import (
     ERROR_QUERY,
     Complaint,
@@ -112,16 +110,6 @@ def not_taken(link: Link, header: str, *, asked: str, answer: str) -> RefusedErr
         text=answer,
         do="ask for a setting that the instrument has, or see whether somebody else sets it",
     )
-
-
-@contextmanager
-def reading(link: Link) -> Iterator[str]:
-    """Parse within this: what is no reply puts the link out of step. Yields the address, for the parsers."""
-    try:
-        yield link.address
-    except FramingError:
-        link.mark_out_of_step()
-        raise
 
 
 def _drain(link: Link) -> None:

@@ -7,9 +7,10 @@ from collections.abc import Mapping
 
 from rigctl.interfaces import Begun, Driver, Identity, Option, Options, ShutterCapabilities
 from rigctl.links.link import Link
+from rigctl_drivers.reading import reading
 from rigctl_drivers.scpi_codec import parse_bool
 from rigctl_drivers.scpi_family import SCPI
-from rigctl_drivers.scpi_shell import ask, identify, not_taken, reading
+from rigctl_drivers.scpi_shell import ask, identify, not_taken
 
 OPEN, CLOSED = "open", "closed"
 
