@@ -4,7 +4,7 @@ It owns how one text becomes one value, and its JSON Schema; a text that will no
 """
 
 import re
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Collection, Sequence
 from datetime import date
 from typing import Annotated, Any, Literal
 
@@ -13,6 +13,7 @@ from pydantic_core import PydanticCustomError
 
 from rigctl.errors import PlanError, QuantityError
 from rigctl.files.mistakes import either, nearest_word, quoted
+from rigctl.links.addresses import parse_address
 from rigctl.quantities import KINDS, Measured, parse_measured, parse_quantity, parse_span
 
 Sign = Literal["any", "positive", "not negative"]
@@ -93,19 +94,12 @@ def span(kind: str) -> PlainValidator:
 
 def choice(*words: str) -> PlainValidator:
     """One of a few words."""
-
-    def read(text: str, _: ValidationInfo) -> str:
-        if text not in words:
-            nearest = nearest_word(text, words)
-            raise wrong(f"{quoted(text)} is not among the choices", expected=either(words), nearest=nearest)
-        return text
-
-    return _leaf(read, either(words))
+    return _leaf(lambda text, _: read_choice(text, words), either(words))
 
 
 def shown(example: str) -> WithJsonSchema:
-    """Describe a text in the JSON Schema of its file."""
-    return WithJsonSchema({"type": "string", "examples": [example]})
+    """Describe a text in the JSON Schema of its file; other readers see a number or a truth value in some."""
+    return WithJsonSchema({"type": ["string", "number", "boolean"], "examples": [example]})
 
 
 def read_name(text: str) -> str:
@@ -148,8 +142,25 @@ def _read_date(text: str, _: ValidationInfo) -> date:
 def read_whole_number(text: str) -> int:
     """Return a whole number written in plain digits."""
     if not re.fullmatch(r"[+-]?[0-9]{1,18}", text):
-        raise wrong(f"{quoted(text)} is no whole number", expected="such as 7")
+        raise QuantityError(f"{quoted(text)} is no whole number", expected="such as 7")
     return int(text)
+
+
+def read_choice(text: str, words: Collection[str]) -> str:
+    """Return one of a few words."""
+    if text not in words:
+        nearest = nearest_word(text, words)
+        raise QuantityError(
+            f"{quoted(text)} is not among the choices", expected=either(words), nearest=nearest
+        )
+    return text
+
+
+def read_text(text: str) -> str:
+    """Return a text that is not empty."""
+    if not text.strip():
+        raise QuantityError("nothing is written here", expected="a word")
+    return text
 
 
 def exactly_one(names: Sequence[str], given: Sequence[str], *, key: str = "") -> None:
@@ -166,4 +177,7 @@ TitleText = Annotated[str, _leaf(_read_title, "a title"), shown("quarter-wave pl
 SwitchText = Annotated[bool, _leaf(_read_switch, "true or false"), shown("true")]
 DateText = Annotated[date, _leaf(_read_date, "a date"), shown("2027-03-01")]
 WholeText = Annotated[int, _leaf(lambda text, _: read_whole_number(text), "a whole number"), shown("7")]
-WordText = Annotated[str, _leaf(lambda text, _: text, "a word"), shown("part")]
+WordText = Annotated[str, _leaf(lambda text, _: read_text(text), "a word"), shown("part")]
+AddressText = Annotated[
+    str, _leaf(lambda text, _: str(parse_address(text)), "an address"), shown("tcp://10.0.0.7:5025")
+]

@@ -27,6 +27,10 @@ class Places:
             return self.keys[keys]
         return self._nearest(self.values, keys)
 
+    def has(self, *keys: str | int) -> bool:
+        """Whether the file has a value under these keys."""
+        return keys in self.values
+
     @staticmethod
     def _nearest(places: Mapping[Keys, Place], keys: Keys) -> Place:
         for end in range(len(keys), -1, -1):

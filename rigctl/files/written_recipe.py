@@ -6,7 +6,7 @@ checked in `rigctl.files.references`.
 
 from typing import Annotated, get_args
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import BeforeValidator, Field, model_validator
 
 from rigctl.files.angles import angles_of
 from rigctl.files.leaves import (
@@ -23,6 +23,7 @@ from rigctl.files.leaves import (
     wrong,
 )
 from rigctl.files.recipe import Approach, ElementKind
+from rigctl.files.written import Written
 from rigctl.interfaces import RoleKind
 from rigctl.quantities import Measured
 
@@ -54,14 +55,6 @@ def _words(value: object) -> object:
 
 
 Words = Annotated[list[WordText], BeforeValidator(_words, json_schema_input_type=WordText | list[WordText])]
-
-
-class Written(BaseModel):
-    """A mapping of a written file; its keys are the names of its fields, with spaces."""
-
-    model_config = ConfigDict(
-        frozen=True, extra="forbid", alias_generator=lambda name: name.replace("_", " ")
-    )
 
 
 class WrittenRole(Written):

@@ -1,0 +1,127 @@
+"""What one part of a rig file means for another, and for the drivers that are installed.
+
+It owns the checks of instruments against drivers, of roles against instruments, and of shared addresses; it
+passes over what is missing.
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from rigctl.errors import PlanError
+from rigctl.files.mistakes import either, nearest_word, quoted
+from rigctl.files.options import read_options
+from rigctl.files.part import Part
+from rigctl.interfaces import BenchFactory, Driver
+from rigctl.links.addresses import parse_address
+
+SHARED_KEYS = ("driver", "at", "limits", "calibration")
+"""Keys of an instrument whatever its driver."""
+
+
+@dataclass(frozen=True, slots=True)
+class Extras:
+    """What drivers and the simulated bench read from a rig file beyond the keys that all have."""
+
+    options: Mapping[str, Mapping[str, Any]]
+    bench: Mapping[str, Any]
+    twins: Mapping[str, Mapping[str, Any]]
+
+
+def read_extras(rig: Part, drivers: Mapping[str, Driver], bench: BenchFactory | None) -> Extras:
+    """Gather every mistake between the parts of a rig file, and read what its plugins add."""
+    instruments = rig.at("instruments")
+    found = {name: _driver(part, drivers) for name, part in instruments.items().items()}
+    known = {name: driver for name, driver in found.items() if driver is not None}
+    options = {name: _options(instruments.at(name), driver) for name, driver in known.items()}
+    _check_addresses(instruments, known, options)
+    _check_roles(rig.at("roles"), instruments)
+    if bench is None:
+        return Extras(options, {}, {})
+    return Extras(options, *_simulated(rig.at("simulated"), known, bench))
+
+
+def _driver(instrument: Part, drivers: Mapping[str, Driver]) -> Driver | None:
+    """Return the driver of an instrument; None where it is not installed or not written."""
+    part = instrument.at("driver")
+    if part.text is None or part.text in drivers:
+        return drivers.get(part.text or "")
+    expected = (
+        f"one that is installed: {either(sorted(drivers))}"
+        if drivers
+        else "an installed driver; there is none"
+    )
+    nearest = nearest_word(part.text, drivers)
+    part.wrong(f"no driver is called {quoted(part.text)}", expected=expected, nearest=nearest)
+    return None
+
+
+def _options(instrument: Part, driver: Driver) -> dict[str, Any]:
+    """Read an instrument's keys by its driver's table."""
+    limits = instrument.at("limits")
+    if limits.is_there and driver.kind != "power meter":
+        limits.wrong_key(f"a {driver.kind} has no limits here", expected="limits at a power meter alone")
+    return read_options(instrument, driver.options, others=SHARED_KEYS, whose=f"the driver {driver.name}")
+
+
+def _check_addresses(
+    instruments: Part, drivers: Mapping[str, Driver], options: Mapping[str, Mapping[str, Any]]
+) -> None:
+    """Refuse one address for two languages, and one instrument written twice."""
+    seen: dict[str, str] = {}
+    for name, driver in drivers.items():
+        at = instruments.at(name).at("at")
+        address = _canonical(at.text)
+        if address is None:
+            continue
+        first = seen.setdefault(address, name)
+        if first == name:
+            continue
+        if drivers[first].family.name != driver.family.name:
+            what = f"{quoted(name)} and {quoted(first)} share an address but not a language"
+            at.wrong(what, expected="an address for each, or drivers of one family")
+        elif drivers[first] is driver and options[first] == options[name]:
+            at.wrong(f"{quoted(name)} is the same as {quoted(first)}", expected="another address or channel")
+
+
+def _canonical(text: str | None) -> str | None:
+    """One spelling for each address; None where it is none."""
+    try:
+        return None if text is None else str(parse_address(text))
+    except PlanError:
+        return None
+
+
+def _check_roles(roles: Part, instruments: Part) -> None:
+    """Refuse roles filled by nothing, and an instrument that fills two."""
+    names = instruments.items()
+    filled: dict[str, str] = {}
+    for role, part in roles.items().items():
+        name = part.text
+        if name is None:
+            continue
+        if name not in names:
+            expected = f"one of {either(map(quoted, names))}" if names else "an entry of 'instruments'"
+            what = f"no instrument is called {quoted(name)}"
+            part.wrong(what, expected=expected, nearest=nearest_word(name, names))
+        elif name in filled:
+            part.wrong(
+                f"{quoted(name)} fills the role {quoted(filled[name])} already", expected="one role each"
+            )
+        filled[name] = role
+
+
+def _simulated(
+    simulated: Part, drivers: Mapping[str, Driver], bench: BenchFactory
+) -> tuple[Mapping[str, Any], Mapping[str, Mapping[str, Any]]]:
+    """Read what is said of the simulated bench and of each twin; defaults stand for what is not written."""
+    others = ("seed", *drivers)
+    world = read_options(simulated, bench.bench_options(), others=others, whose="the simulated bench")
+    twins = {}
+    for name, driver in drivers.items():
+        part = simulated.at(name)
+        if part.is_there and not isinstance(part.value, dict):
+            part.wrong("no keys stand here", expected="a mapping")
+        table = bench.twin_options(driver.name)
+        twins[name] = read_options(part, table, others=(), whose=f"a simulated {driver.name}")
+    return world, twins
