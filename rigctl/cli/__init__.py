@@ -12,7 +12,7 @@ import typer
 from rigctl import __version__
 from rigctl.cli import check, fit, rehearse, run, simulate, verify
 from rigctl.cli.console import complain
-from rigctl.errors import PolrigError
+from rigctl.errors import PolrigError, UsageError
 
 BUG = 70
 """Exit code of a bug in polrig (EX_SOFTWARE of sysexits.h)."""
@@ -48,13 +48,11 @@ for _command in (check, rehearse, run, simulate, fit, verify):
 
 def run_command(arguments: Sequence[str] | None = None) -> int:
     """Run one command line and return its exit code; an expected error is told without a traceback."""
-    import click
-
     try:
         code = app(args=arguments, standalone_mode=False)
-    except click.ClickException as error:
-        error.show()
-        return 2
+    except typer.TyperException as error:
+        complain(f"polrig: {error.format_message()}\n  `polrig COMMAND --help` tells what a command takes.")
+        return UsageError.exit_code
     except PolrigError as error:
         complain(str(error))
         return error.exit_code

@@ -6,7 +6,7 @@ NAME = "fit"
 
 
 def command(file: RunPath, as_json: AsJson = False) -> int:
-    """Estimate what the recipe calls unknown, with standard uncertainties."""
+    """Estimate the unknowns from a run file."""
     from rigctl.cli.console import complain, say, say_json
     from rigctl.cli.show import fit_as_dict, fit_lines
     from rigctl.errors import UndecidedError

@@ -24,7 +24,10 @@ def command(
     trace: Trace = None,
     as_json: AsJson = False,
 ) -> int:
-    """Rehearse a recipe on the simulated bench and fit what it recorded."""
+    """Do the whole run on a simulated bench.
+
+    Virtual time: a night takes seconds. The fit of what was recorded follows, beside the hidden truth.
+    """
     from rigctl.cli.console import progress_for_stream
     from rigctl.cli.ending import tell_outcome
     from rigctl.cli.loading import free_path, load

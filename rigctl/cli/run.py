@@ -20,7 +20,7 @@ def command(
     trace: Trace = None,
     as_json: AsJson = False,
 ) -> int:
-    """Run a recipe on the instruments of a rig, then fit what was recorded."""
+    """Do the real run, then fit what it recorded."""
     from rigctl.cli.console import progress_for_stream
     from rigctl.cli.ending import tell_outcome
     from rigctl.cli.loading import free_path, load

@@ -5,7 +5,6 @@ from typing import Annotated
 
 import typer
 
-from rigctl.cli.options import RecipePath
 from rigctl.errors import UsageError
 
 NAME = "simulate"
@@ -13,16 +12,20 @@ NAME = "simulate"
 
 def command(
     rig: Annotated[Path, typer.Argument(metavar="RIG", help="The rig whose instruments are simulated.")],
-    recipe: Annotated[RecipePath, typer.Option(help="The recipe whose optics stand on the bench.")],
+    recipe: Annotated[Path, typer.Option(help="The recipe whose optics stand on the bench.")],
     write: Annotated[Path, typer.Option(help="The rig file to write: the same, with the twins' addresses.")],
     seed: Annotated[int | None, typer.Option(min=0, help="Which bench and which noise.")] = None,
 ) -> int:
-    """Serve the simulated instruments of a rig on this computer until stopped (Ctrl-C)."""
+    """Serve a rig's simulated instruments here.
+
+    Each address of the rig gets a port of this computer, in real time, until stopped (Ctrl-C). The rig file that
+    is written differs from the given one in its addresses only.
+    """
     from rigctl.cli.console import say
     from rigctl.cli.loading import load
     from rigctl.cli.rehearse import DEFAULT_SEED
     from rigctl.cli.signals import stopping_on_signals
-    from rigctl.links.serve import serve_twins
+    from rigctl.links.serve import TwinServer
     from rigctl.runner.simulation import rig_text_with_addresses
     from rigctl.timeline import StopRequest, WallTimeline
 
@@ -33,7 +36,7 @@ def command(
     stop = StopRequest()
     with stopping_on_signals(stop):
         twins = {address: bench.twin(address) for address in sorted(addresses)}
-        with serve_twins(twins, WallTimeline(stop)) as server:
+        with TwinServer(twins, WallTimeline(stop)) as server:
             _write_new(write, rig_text_with_addresses(loaded.rig, server.addresses))
             say(f"ready: {len(twins)} simulated instruments; their rig file is {write}")
             server.serve()

@@ -27,7 +27,7 @@ from rigctl.runner.person import Person
 from rigctl.runner.plan import Visit, aperture_s, count_visits, duration_s, step_visits
 from rigctl.runner.polling import complete
 from rigctl.runner.progress import Level, Progress
-from rigctl.runner.ranging import expected_peak_w
+from rigctl.runner.prospect import expected_peak_w
 from rigctl.runner.safe import SafeStep, is_beam_blocked, make_safe
 from rigctl.runner.visiting import Record, Visiting, is_overloaded
 from rigctl.timeline import Timeline
@@ -225,7 +225,7 @@ class _Run:
         # the plan's own pace counts as ten visits, so that the first few do not make the forecast jump
         pace_s = (elapsed_s + 10 * planned_s) / (self.done + 10)
         self.job.progress.visit(self.done, self.total, pace_s * (self.total - self.done))
-        self.writer.view_if_due()
+        self.writer.view_if_due(self.timeline)
 
     def _tell_safe(self, steps: tuple[SafeStep, ...]) -> None:
         """Record what was made safe; a disk that fails here has told so already, or tells when the file closes."""
