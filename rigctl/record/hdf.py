@@ -13,7 +13,8 @@ import h5py
 import numpy as np
 
 from rigctl.record.names import free_names, plain_text
-from rigctl.record.table import Table, Variable
+from rigctl.record.table import Table
+from rigctl.record.variables import Variable
 
 _COMPRESS_FROM = 4096
 """Bytes from which an array is stored in compressed chunks; below, a chunk's index outweighs the saving."""
@@ -33,7 +34,8 @@ def put_text(parent: Any, name: str, text: str) -> None:
     plain = plain_text(text)
     dataset = parent.create_dataset(name, data=np.bytes_(plain))
     if plain != text:
-        dataset.attrs["text"] = text.encode("utf-8", "replace").decode()
+        # an attribute's text ends at the first NUL, and lone surrogates are no UTF-8
+        dataset.attrs["text"] = text.replace("\0", "?").encode("utf-8", "replace").decode()
 
 
 def put_note(parent: Any, name: str, data: bytes, **texts: str) -> None:
@@ -65,7 +67,6 @@ def put_values(parent: Any, name: str, values: Mapping[str, Any]) -> Any:
 def put_table(parent: Any, name: str, table: Table) -> Any:
     """Write a table as NXdata whose dimensions are named."""
     group = put_group(parent, name, "NXdata")
-    put_text(group, "title", table.title)
     group.attrs["signal"] = table.signals[0]
     if table.signals[1:]:
         group.attrs["auxiliary_signals"] = np.array(table.signals[1:], h5py.string_dtype())

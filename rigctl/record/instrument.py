@@ -31,6 +31,7 @@ def _put_role(parent: Any, run: Run, role: str, name: str) -> None:
     put_text(group, "description", f"{role}: {instrument}" if instrument else role)
     if identities:
         _put_fabrication(group, identities[-1]["identity"])
+        put_values(group, "identity", identities[-1]["identity"])
     for kind in ("settings", "calibration"):
         values = _values(run, kind, instrument)
         if values:
@@ -41,7 +42,6 @@ def _put_fabrication(parent: Any, identity: Mapping[str, str]) -> None:
     fabrication = put_group(parent, "fabrication", "NXfabrication")
     for item, key in (("vendor", "maker"), ("model", "model"), ("serial_number", "serial")):
         put_text(fabrication, item, identity[key])
-    put_text(parent, "firmware", identity["firmware"])
 
 
 def _values(run: Run, kind: str, instrument: str) -> Mapping[str, Any]:

@@ -132,6 +132,7 @@ class Journal:
         if self._fd >= 0:
             os.close(self._fd)
             self._fd = -1
+            self._failure = RecordError("this run is closed", where=str(self.path))
 
     def _write(self, line: bytes) -> None:
         # a disk that fills up takes a part first and gives its reason at the next call

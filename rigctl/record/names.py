@@ -18,10 +18,11 @@ AXIS_SUFFIXES = ("", "_readback")
 
 
 def plain_text(text: str) -> str:
-    """Return text in ASCII: letters lose their accents, the rest becomes `?`."""
+    """Return text in ASCII: letters lose their accents, the rest becomes `?`, controls a space."""
     decomposed = unicodedata.normalize("NFKD", text)
     bare = "".join(letter for letter in decomposed if not unicodedata.combining(letter))
-    return bare.encode("ascii", "replace").decode()
+    plain = bare.encode("ascii", "replace").decode()
+    return "".join(letter if letter.isprintable() else " " for letter in plain)
 
 
 def clean_name(text: str) -> str:

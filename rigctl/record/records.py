@@ -13,7 +13,17 @@ from rigctl.errors import RecordError
 from rigctl.interfaces import Dwell, Flag
 from rigctl.record.layout import Header
 
-KINDS = ("header", "identity", "settings", "calibration", "event", "visit", "dark", "end")
+KEYS = {
+    "header": ("uuid", "start"),
+    "identity": ("instrument", "role", "identity"),
+    "settings": ("instrument", "values"),
+    "calibration": ("instrument", "values"),
+    "event": ("t", "text", "level"),
+    "visit": ("step", "visit", "index", "attempt", "start", "t_begin", "t_end", "asked", "status"),
+    "dark": ("step", "when", "how", "t_begin", "t_end", "detectors"),
+    "end": ("t", "status", "code", "why"),
+}
+"""The kinds of record, and what each must say."""
 VISIT_STATUSES = ("ok", "saturated", "failed")
 END_STATUSES = ("complete", "stopped", "failed")
 DARK_WHEN = ("before", "after")
@@ -115,6 +125,17 @@ def check_dark(dark: Dark, header: Header) -> None:
     require_word(dark.when, DARK_WHEN)
     require_word(dark.how, DARK_HOW)
     _require_detectors(dark.dwells, header)
+
+
+def check_keys(record: Mapping[str, Any]) -> None:
+    """Raise `RecordError` for a record of unknown kind, or one that leaves out what its kind must say."""
+    kind = record["kind"]
+    require_word(kind, tuple(KEYS))
+    missing = [key for key in KEYS[kind] if key not in record]
+    if missing:
+        raise RecordError(f"a record of kind '{kind}' lacks {', '.join(missing)}")
+    if kind == "end":
+        require_word(record["status"], END_STATUSES)
 
 
 def require_word(value: str, words: tuple[str, ...]) -> None:

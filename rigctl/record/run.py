@@ -8,15 +8,14 @@ from typing import Any
 
 from rigctl.record.layout import Header
 from rigctl.record.records import (
-    END_STATUSES,
-    KINDS,
+    KEYS,
     Dark,
     Visit,
     check_dark,
+    check_keys,
     check_visit,
     parse_dark,
     parse_visit,
-    require_word,
 )
 
 
@@ -32,12 +31,12 @@ class Run:
         self.records: list[Mapping[str, Any]] = []
         self.attempts: list[Visit] = []
         self.darks: list[Dark] = []
-        self._by_kind: dict[str, list[Mapping[str, Any]]] = {kind: [] for kind in KINDS}
+        self._by_kind: dict[str, list[Mapping[str, Any]]] = {kind: [] for kind in KEYS}
 
     def parse(self, record: Mapping[str, Any]) -> Visit | Dark | None:
         """Check a record against the header and return what it holds; `RecordError` when it does not fit."""
+        check_keys(record)
         kind = record["kind"]
-        require_word(kind, KINDS)
         if kind == "visit":
             visit = parse_visit(record)
             check_visit(visit, self.header)
@@ -46,8 +45,6 @@ class Run:
             dark = parse_dark(record)
             check_dark(dark, self.header)
             return dark
-        if kind == "end":
-            require_word(record["status"], END_STATUSES)
         return None
 
     def keep(self, record: Mapping[str, Any], parsed: Visit | Dark | None) -> None:

@@ -76,10 +76,10 @@ def _put_root(file: Any, run: Run) -> None:
     file.attrs["NX_class"] = "NXroot"
     file.attrs["default"] = "entry"
     file.attrs["file_time"] = _instant(run, run.duration_s)
-    file.attrs["creator"] = PROGRAM
+    # NXroot allows no attribute of ours, and its `creator` is what a reader looks at first
+    file.attrs["creator"] = f"{PROGRAM} (simulated bench)" if run.header.is_simulated else PROGRAM
     file.attrs["HDF5_Version"] = h5py.version.hdf5_version
     file.attrs["h5py_version"] = h5py.version.version
-    file.attrs["simulated"] = int(run.header.is_simulated)
 
 
 def _put_entry(entry: Any, run: Run) -> None:
@@ -127,6 +127,7 @@ def _put_acquisition(entry: Any, run: Run, journal: bytes, tail: bytes) -> None:
 def _put_environment(entry: Any, run: Run) -> None:
     end: Mapping[str, Any] = run.end or {}
     facts = {
+        "simulated": run.header.is_simulated,
         "run_status": run.status,
         "exit_code": end.get("code"),
         "why": end.get("why", ""),
