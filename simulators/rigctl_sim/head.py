@@ -1,0 +1,72 @@
+"""A detector head in the light: what it shows, averaged over a reading.
+
+It owns the lag and the stray light. Noise, ranges and overload belong to the instrument that reads the head.
+"""
+
+from typing import Protocol
+
+from rigctl_sim.lag import FORGOTTEN, respond
+from rigctl_sim.world import World
+
+
+class Head(Protocol):
+    """What a power meter reads."""
+
+    def mean_w(self, begin_s: float, end_s: float, *, time_constant_s: float) -> float:
+        """Mean of what the head shows over a stretch of the past, W; end after begin."""
+
+
+class HeadBesideBeam:
+    """A head that lies in the dark, as one that no role needs does."""
+
+    def mean_w(self, begin_s: float, end_s: float, *, time_constant_s: float) -> float:  # noqa: ARG002
+        """Show nothing."""
+        return 0.0
+
+
+class HeadInBeam:
+    """A head with a first-order lag.
+
+    Parameters
+    ----------
+    detector
+        Its number among the detectors of the world.
+    stray_w
+        Light that reaches it whatever stands in the beam, W.
+    """
+
+    def __init__(self, world: World, detector: int, *, stray_w: float) -> None:
+        self._world, self._detector, self._stray_w = world, detector, stray_w
+        self._shown_at_s, self._shown_w = float("-inf"), 0.0
+
+    def mean_w(self, begin_s: float, end_s: float, *, time_constant_s: float) -> float:
+        """Mean of what the head shows over a stretch of the past, W; end after begin.
+
+        Source
+        ------
+        First-order lag; a ramp (the source's drift) is shown late by one time constant.
+        """
+        remembers_from_s = begin_s - FORGOTTEN * time_constant_s
+        if self._world.rests_from_s() <= remembers_from_s:
+            middle_s = 0.5 * (begin_s + end_s)
+            return self._world.light_at_rest_w(middle_s - time_constant_s, self._detector) + self._stray_w
+        if not remembers_from_s <= self._shown_at_s <= begin_s:
+            self._shown_at_s = remembers_from_s
+            self._shown_w = self._world.light_w(remembers_from_s)[self._detector]
+        if self._shown_at_s < begin_s:
+            self._follow(begin_s, time_constant_s)
+        return self._follow(end_s, time_constant_s) / (end_s - begin_s) + self._stray_w
+
+    def _follow(self, end_s: float, time_constant_s: float) -> float:
+        """Go on to an instant; return the integral of what was shown on the way, J."""
+        light_w, detector, total = self._world.light_w, self._detector, 0.0
+        end_w = light_w(self._shown_at_s)[detector]
+        for begin, end in self._world.pieces(self._shown_at_s, end_s):
+            begin_w, end_w = end_w, light_w(end)[detector]
+            light = (begin_w, light_w(0.5 * (begin + end))[detector], end_w)
+            self._shown_w, energy = respond(
+                self._shown_w, light, duration_s=end - begin, time_constant_s=time_constant_s
+            )
+            total += energy
+        self._shown_at_s = end_s
+        return total
