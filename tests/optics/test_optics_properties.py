@@ -126,9 +126,7 @@ def test_the_scalar_reader_gives_light_only() -> None:
 
 def test_a_quantity_without_a_value_is_refused_by_name() -> None:
     with pytest.raises(PlanError, match=r"'part\.axis' has no value; 'part\.extinction ratio' has no value"):
-        Train(
-            (Element("part", "polarizer"),), (), assemble().quantities | {}, (1.0, 0.0, 0.0, 0.0)
-        ).rewritten()
+        Train((Element("part", "polarizer"),), (Detector("signal"),), assemble().quantities)
 
 
 def test_a_quantity_of_nothing_is_refused_by_name() -> None:

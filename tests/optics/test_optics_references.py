@@ -107,7 +107,7 @@ def test_a_retarder_between_perfect_polarizers_gives_the_golden_numbers(
     exit_axis_deg: float, expected: float
 ) -> None:
     # Four independent routes agree on these (Jones, Mueller, py_pol, pypolar): plate at 37 deg of 0.31
-    # waves, horizontal light of unit power; shared notes on polarimetry, section 1 (b).
+    # waves, horizontal light of unit power.
     train = assemble(
         retarder("plate", waves=0.31, axis_deg=37.0),
         polarizer("exit", axis_deg=exit_axis_deg),
@@ -118,7 +118,7 @@ def test_a_retarder_between_perfect_polarizers_gives_the_golden_numbers(
 
 
 def test_a_turned_retarder_between_parallel_polarizers_has_the_golden_harmonics() -> None:
-    # Shared notes on polarimetry, section 1 (b): A and B4 at exit axis 0 for 0.31 waves.
+    # A = 1 - s/2, B4 = s/2 of half the light, s = sin^2(delta/2), at 0.31 waves; four routes agree.
     train = assemble(
         retarder("plate", waves=0.31, mount="part mount"), polarizer("exit"), source=(1.0, 1.0, 0.0, 0.0)
     )
@@ -132,7 +132,9 @@ def test_a_turned_retarder_between_parallel_polarizers_has_the_golden_harmonics(
 
 
 def test_a_turned_retarder_before_a_polarizer_gives_the_golden_stokes_harmonics() -> None:
-    # Shared notes on polarimetry, section 1 (c): S = (0.880, 0.3123, -0.4410, 0.5950), 0.2437 waves.
+    # I = 1/2 [S0 + (1+cos d)/2 S1 + (1-cos d)/2 (S1 cos4t + S2 sin4t) - S3 sin d sin2t], evaluated for
+    # S = (0.880, 0.3123, -0.4410, 0.5950) and 0.2437 waves; the form of Berry, Gabrielse and Livingston,
+    # Appl. Opt. 16, 3200 (1977), citation from memory.
     train = assemble(
         retarder("plate", waves=0.2437, mount="part mount"),
         polarizer("exit"),
@@ -150,7 +152,7 @@ def test_a_turned_retarder_before_a_polarizer_gives_the_golden_stokes_harmonics(
 
 def test_two_like_polarizers_transmit_as_the_textbook_says() -> None:
     # T parallel = (k1^2 + k2^2)/2, T crossed = k1 k2 for unpolarized light (Handbook of Optics, vol. I,
-    # "Polarizers", as quoted in the shared notes on polarimetry, section 1 (a)).
+    # "Polarizers", as quoted by others).
     ratio = 0.02
     train = assemble(polarizer("entry", ratio=ratio), polarizer("exit", ratio=ratio, mount="part mount"))
 
