@@ -50,8 +50,8 @@ class ScpiSwitch:
         header = "ROUTE:CLOSE" if is_closed else "ROUTE:OPEN"
         (text,) = ask(self._link, f"{header} {self._channels};:ROUTE:CLOSE? {self._channels}")
         if self._relay_state(text) != is_closed:
-            command = f"the relay {self._channels}"
-            raise not_taken(self._link, command, asked=header.lower(), answer=text)
+            asked, answer = (CLOSED, OPEN) if is_closed else (OPEN, CLOSED)
+            raise not_taken(self._link, f"the relay {self._channels}", asked=asked, answer=answer)
         due_s = began_s + self.capabilities.moves_in_s
         return Begun(due_s=due_s, poll=self.is_open, again_s=0.05, give_up_s=due_s + SCPI.longest_s)
 
