@@ -106,7 +106,7 @@ def _visits(rows: Sequence[_Row], train: "Train") -> "Visits":
     mounts = {element.mount for element in train.elements if element.mount is not None}
     return Visits(
         angle_deg={mount: np.array([row.angle_deg.get(mount, 0.0) for row in rows]) for mount in sorted(mounts)},
-        is_open=np.array([float(row.is_open) for row in rows]),
+        is_open=np.array([row.is_open for row in rows]),
         time_h=np.array([row.middle_s / SECONDS_PER_HOUR for row in rows]),
     )
 

@@ -28,14 +28,12 @@ def planned_visits(recipe: Recipe, train: "Train", *, duration_s: float) -> "Vis
     before, after = (
         (0, 0) if recipe.dark is None else (DARK_DWELLS * recipe.dark.before, DARK_DWELLS * recipe.dark.after)
     )
-    rows = [{}] * before + asked + [{}] * after
+    rows: list[Mapping[str, float]] = [{}] * before + asked + [{}] * after
     mounts = sorted({element.mount for element in train.elements if element.mount is not None})
-    is_open = np.ones(len(rows))
-    is_open[:before] = 0.0
-    is_open[len(rows) - after :] = 0.0
+    place = np.arange(len(rows))
     return Visits(
         angle_deg={mount: np.array([row.get(mount, 0.0) for row in rows]) for mount in mounts},
-        is_open=is_open,
+        is_open=(place >= before) & (place < len(rows) - after),
         time_h=np.linspace(0.0, duration_s / SECONDS_PER_HOUR, len(rows)),
     )
 
