@@ -1,77 +1,22 @@
 """Quantities as people write them: number, space, unit, from a table of our own.
 
-It owns the kinds, their units and how a value is read and written; it never guesses. Every value inside the
-project is in its kind's base unit, the first of its row in `KINDS`. A general units parser is not used: such
+It owns how a value is read and written; it never guesses. Every value inside the project is in its kind's
+base unit, the first of its row in `rigctl.kinds`. A general units parser is not used: such
 parsers read `5,0 mA` as 50 mA.
 """
 
 import difflib
 import math
 import re
-from collections.abc import Collection, Mapping
-from dataclasses import dataclass, field
+from collections.abc import Collection
+from dataclasses import dataclass
+from decimal import Decimal
 
 from rigctl.errors import QuantityError
+from rigctl.kinds import KINDS, Kind
 
 LONGEST_TEXT = 200
 """Characters; a quantity is shorter, and a longer text is not searched for one."""
-
-
-@dataclass(frozen=True, slots=True)
-class Kind:
-    """One kind of quantity.
-
-    `units` maps each unit to its size in the base unit; `shown` are the units that `format_quantity` picks
-    from, ascending; `per_wavelength` maps units of length in which a kind may be given once the wavelength is
-    known; `needs_unit` tells whether a bare number is refused.
-    """
-
-    name: str
-    units: Mapping[str, float]
-    shown: tuple[str, ...]
-    example: str
-    per_wavelength: Mapping[str, float] = field(default_factory=dict)
-    needs_unit: bool = True
-
-    @property
-    def unit_names(self) -> tuple[str, ...]:
-        """Every unit that may be written."""
-        return (*self.units, *self.per_wavelength)
-
-
-def _micro(unit: str, size: float) -> dict[str, float]:
-    """Three ways of writing micro: the letter u, the micro sign and the Greek letter."""
-    return {f"{prefix}{unit}": size for prefix in ("u", "\u00b5", "\u03bc")}
-
-
-DEG_PER_RAD = 180.0 / math.pi
-_LENGTHS = {"nm": 1e-9, **_micro("m", 1e-6)}
-_ANGLES = {"deg": 1.0, "°": 1.0, "rad": DEG_PER_RAD, "mrad": DEG_PER_RAD / 1e3}
-_ARCS = {"arcmin": 1 / 60, "arcsec": 1 / 3600}
-_WAVES = {"waves": 1.0, "wave": 1.0, "deg": 1 / 360, "°": 1 / 360, "rad": DEG_PER_RAD / 360}
-_POWERS = {"W": 1.0, "mW": 1e-3, **_micro("W", 1e-6), "nW": 1e-9, "pW": 1e-12}
-_TIMES = {"s": 1.0, "ms": 1e-3, **_micro("s", 1e-6), "min": 60.0, "h": 3600.0, "d": 86400.0}
-_DRIFTS = {"1/h": 1.0, "%/h": 1e-2, "ppm/h": 1e-6, "1/d": 1 / 24, "%/d": 1e-2 / 24}
-_SPEEDS = {"deg/s": 1.0, "°/s": 1.0, "rad/s": DEG_PER_RAD, "rpm": 6.0}
-_ACCELERATIONS = {"deg/s2": 1.0, "deg/s^2": 1.0, "deg/s²": 1.0, "°/s2": 1.0, "rad/s2": DEG_PER_RAD}
-
-KINDS: Mapping[str, Kind] = {
-    kind.name: kind
-    for kind in (
-        Kind("angle", _ANGLES | _ARCS, ("deg",), "22.5 deg"),
-        Kind("retardance", _WAVES, ("waves",), "0.25 waves", per_wavelength=_LENGTHS),
-        Kind("ratio", {"%": 1e-2, "dB": math.nan}, (), "1000:1", needs_unit=False),
-        Kind("power", _POWERS, ("pW", "nW", "uW", "mW", "W"), "2 mW"),
-        Kind("time", _TIMES, ("us", "ms", "s", "min", "h"), "400 ms"),
-        Kind("length", {"m": 1.0, "mm": 1e-3, **_LENGTHS}, ("nm", "um", "mm", "m"), "785.2 nm"),
-        Kind("drift", _DRIFTS, ("%/h",), "0.5 %/h"),
-        Kind("frequency", {"Hz": 1.0, "kHz": 1e3}, ("Hz", "kHz"), "50 Hz"),
-        Kind("angular speed", _SPEEDS, ("deg/s",), "20 deg/s"),
-        Kind("angular acceleration", _ACCELERATIONS, ("deg/s2",), "100 deg/s2"),
-        Kind("count", {"readings": 1.0, "reading": 1.0}, (), "4 readings", needs_unit=False),
-        Kind("number", {}, (), "2", needs_unit=False),
-    )
-}
 
 
 @dataclass(frozen=True, slots=True)
@@ -207,12 +152,22 @@ def _proportion(text: str, over: float, under: float) -> _Written:
 
 def _value(written: _Written, row: Kind, wavelength_m: float | None) -> float:
     """Turn a written number into the base unit and check it against what its kind allows."""
-    value = written.number * _size(written, row, wavelength_m)
+    value = _times(written.number, _size(written, row, wavelength_m))
     if row.name == "ratio":
         return _ratio(written, value)
+    if not math.isfinite(value):
+        raise _wrong(f"{written.number:g} {written.unit} is too large", row)
+    if (row.sign == "positive" and not value > 0) or (row.sign == "not negative" and value < 0):
+        what = "is not above zero" if row.sign == "positive" else "is negative"
+        raise _wrong(f"{row.noun} of {written.number:g} {written.unit} {what}", row)
     if row.name == "count" and not (value >= 1 and value.is_integer()):
         raise _wrong(f"{written.number:g} is not a whole number above zero", row)
     return value
+
+
+def _times(number: float, size: float) -> float:
+    """Multiply in decimal, so that 20 uW is the float 2e-5 and nothing beside it."""
+    return float(Decimal(repr(number)) * Decimal(repr(size)))
 
 
 def _size(written: _Written, row: Kind, wavelength_m: float | None) -> float:
@@ -222,7 +177,7 @@ def _size(written: _Written, row: Kind, wavelength_m: float | None) -> float:
     if written.unit in row.per_wavelength:
         if wavelength_m is None:
             others = _choice_of_units(row, without=row.per_wavelength)
-            raise _wrong(f"a {row.name} in {written.unit} needs the wavelength of the light", row, others)
+            raise _wrong(f"{row.noun} in {written.unit} needs the wavelength of the light", row, others)
         return row.per_wavelength[written.unit] / wavelength_m
     return 1.0
 
@@ -266,15 +221,12 @@ def _tolerance(text: str, row: Kind, wavelength_m: float | None, *, value: float
         raise _wrong(f"'+- {text}' is no uncertainty of a ratio", row, "a percentage, for example +- 20 %")
     if written.unit == "dB":
         return value * math.log(10.0) / 10.0 * written.number
-    return written.number * _size(written, row, wavelength_m)
+    return _times(written.number, _size(written, row, wavelength_m))
 
 
 def _wrong(what: str, row: Kind, expected: str = "", *, nearest: str = "") -> QuantityError:
     """Make the error of a kind; without `expected` it shows an example."""
-    article = "an" if row.name[0] in "aeiou" else "a"
-    return QuantityError(
-        what, expected=expected or f"{article} {row.name} such as {row.example}", nearest=nearest
-    )
+    return QuantityError(what, expected=expected or row.phrase, nearest=nearest)
 
 
 def _not_a_quantity(text: str, row: Kind) -> QuantityError:
@@ -297,10 +249,7 @@ def _unknown_unit(text: str, unit: str, row: Kind) -> QuantityError:
     folded = {name.casefold(): name for name in reversed(row.unit_names)}
     near = difflib.get_close_matches(unit.casefold(), folded, n=1)
     nearest = text.removesuffix(unit) + folded[near[0]] if near else ""
-    article = "an" if row.name[0] in "aeiou" else "a"
-    return _wrong(
-        f"'{unit}' is not a unit of {article} {row.name}", row, _choice_of_units(row), nearest=nearest
-    )
+    return _wrong(f"'{unit}' is not a unit of {row.noun}", row, _choice_of_units(row), nearest=nearest)
 
 
 def _usual(row: Kind) -> str:

@@ -40,7 +40,7 @@ def angles_of(
             raise wrong("'step' goes with 'turn' or 'range', not with 'values'", key="step")
         return tuple(values)
     if step is None:
-        raise wrong("the key 'step' is missing", expected="such as 5 deg")
+        raise wrong("the key 'step' is missing", expected="a step such as 5 deg")
     if span is not None:
         return _ladder(span[0], _steps(span[1] - span[0], step, what="range") + 1, step)
     return _ladder(start or 0.0, _steps(360.0 * (turn or 0.0), step, what="turn"), step)
@@ -57,12 +57,15 @@ def _steps(length: float, step: float, *, what: str) -> int:
     if not step > 0:
         raise wrong(f"a step of {written} leads nowhere", expected="a step above zero", key="step")
     if length / step > MOST_ANGLES:
-        raise wrong(f"{length / step:.6g} angles are too many", expected=f"at most {MOST_ANGLES}", key="step")
+        what = f"steps of {written} make more than {MOST_ANGLES} angles"
+        raise wrong(what, expected="larger steps", key="step")
     count = round(length / step)
     if count < 1 or abs(count * step - length) > FINEST_DEG * count:
         near = " or ".join(format_quantity(s, "angle") for s in nearest_steps(length, step))
         whole = format_quantity(length, "angle")
-        raise wrong(f"steps of {written} do not divide the {what} of {whole}", expected=near, key="step")
+        raise wrong(
+            f"steps of {written} do not divide the {what} of {whole}", expected=f"steps of {near}", key="step"
+        )
     return count
 
 

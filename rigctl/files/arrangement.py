@@ -28,12 +28,12 @@ def train_of(recipe: Recipe) -> Train:
 
 
 def _source_quantities(recipe: Recipe) -> list[Quantity]:
-    """Power and drift: a stated power says where to look and is no prior, since it is the scale of everything."""
+    """Power and drift; a stated power only says where to look, as it is the scale of everything."""
     power = recipe.source.power or Measured(POWER_UNSTATED_W)
-    drift = recipe.source.drift
+    drift = recipe.source.drift or ZERO
     return [
         Quantity("source.power", "power", power.value, is_free=True),
-        Quantity("source.drift", "drift", (drift or ZERO).value, (drift or ZERO).u, is_free=drift is None),
+        Quantity("source.drift", "drift", drift.value, drift.u, is_free=drift.u is None),
     ]
 
 
@@ -54,6 +54,6 @@ def _quantity(part: OpticalElement, name: str, kind: str, measured: Measured) ->
 
 
 def _stray_light(part: OpticalElement) -> Quantity:
-    stray = part.stray_light
-    name, value, u = f"{part.name}.stray light", (stray or ZERO).value, (stray or ZERO).u
-    return Quantity(name, "power", value, u, is_unknown="stray light" in part.unknown, is_free=stray is None)
+    stray, is_unknown = part.stray_light or ZERO, "stray light" in part.unknown
+    name = f"{part.name}.stray light"
+    return Quantity(name, "power", stray.value, stray.u, is_unknown=is_unknown, is_free=stray.u is None)

@@ -107,7 +107,13 @@ def _events(text: str, mistakes: Mistakes) -> Iterator[yaml.Event]:
     except yaml.MarkedYAMLError as error:
         mark = error.problem_mark or error.context_mark
         place = (mark.line + 1, mark.column + 1) if mark else (1, 1)
-        context = f" {error.context}" if error.context else ""
-        mistakes.stop(place, "", f"not readable{context}: {error.problem}")
+        mistakes.stop(place, "", f"not readable{_context(error)}: {error.problem}")
     except yaml.reader.ReaderError as error:
         mistakes.stop(_place_at(text, error.position), "", f"not readable: {error.reason}")
+
+
+def _context(error: yaml.MarkedYAMLError) -> str:
+    """Say in what the parser was when it tripped, and where that began."""
+    if not error.context or error.context_mark is None:
+        return ""
+    return f" {error.context} that begins in line {error.context_mark.line + 1}"

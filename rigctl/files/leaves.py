@@ -6,17 +6,16 @@ It owns how one text becomes one value, and its JSON Schema; a text that will no
 import re
 from collections.abc import Callable, Collection, Sequence
 from datetime import date
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any
 
 from pydantic import PlainValidator, ValidationInfo, WithJsonSchema
 from pydantic_core import PydanticCustomError
 
 from rigctl.errors import PlanError, QuantityError
 from rigctl.files.mistakes import either, nearest_word, quoted
+from rigctl.kinds import KINDS
 from rigctl.links.addresses import parse_address
-from rigctl.quantities import KINDS, Measured, parse_measured, parse_quantity, parse_span
-
-Sign = Literal["any", "positive", "not negative"]
+from rigctl.quantities import Measured, parse_measured, parse_quantity, parse_span
 
 LONGEST_NAME = 40
 """Characters of a name; names become parts of the run file and columns of tables."""
@@ -47,8 +46,6 @@ def _leaf(read: Callable[[str, ValidationInfo], object], expected: str) -> Plain
             return read(text, info)
         except QuantityError as error:
             raise wrong(error.what, expected=error.expected, nearest=error.nearest) from error
-        except PlanError as error:
-            raise wrong(error.what, expected=error.do) from error
 
     return PlainValidator(validate, json_schema_input_type=str)
 
@@ -58,38 +55,37 @@ def _wavelength_m(info: ValidationInfo) -> float | None:
     return context.get(WAVELENGTH)
 
 
-def _check_sign(value: float, text: str, *, sign: Sign, kind: str) -> None:
-    """Refuse a quantity of the wrong sign."""
-    if (sign == "positive" and not value > 0) or (sign == "not negative" and value < 0):
-        what = f"{quoted(text)} is {'not above zero' if sign == 'positive' else 'negative'}"
-        raise wrong(what, expected=f"such as {KINDS[kind].example}")
+def _check_sign(value: float, text: str, *, must_be_positive: bool, kind: str) -> None:
+    """Refuse zero and less where a key needs more than its kind does."""
+    if must_be_positive and not value > 0:
+        raise wrong(f"{quoted(text)} is not above zero", expected=KINDS[kind].phrase)
 
 
-def quantity(kind: str, *, sign: Sign = "any") -> PlainValidator:
+def quantity(kind: str, *, is_positive: bool = False) -> PlainValidator:
     """A quantity of a kind, read into its base unit."""
 
     def read(text: str, info: ValidationInfo) -> float:
         value = parse_quantity(text, kind, wavelength_m=_wavelength_m(info))
-        _check_sign(value, text, sign=sign, kind=kind)
+        _check_sign(value, text, must_be_positive=is_positive, kind=kind)
         return value
 
-    return _leaf(read, f"such as {KINDS[kind].example}")
+    return _leaf(read, KINDS[kind].phrase)
 
 
-def measured(kind: str, *, sign: Sign = "any") -> PlainValidator:
+def measured(kind: str, *, is_positive: bool = False) -> PlainValidator:
     """A quantity of a kind with its standard uncertainty, read into its base unit."""
 
     def read(text: str, info: ValidationInfo) -> Measured:
         value = parse_measured(text, kind, wavelength_m=_wavelength_m(info))
-        _check_sign(value.value, text, sign=sign, kind=kind)
+        _check_sign(value.value, text, must_be_positive=is_positive, kind=kind)
         return value
 
-    return _leaf(read, f"such as {KINDS[kind].example}")
+    return _leaf(read, KINDS[kind].phrase)
 
 
 def span(kind: str) -> PlainValidator:
     """Two ends of a kind, the lower first."""
-    return _leaf(lambda text, _: parse_span(text, kind), f"such as 0 to {KINDS[kind].example}")
+    return _leaf(lambda text, _: parse_span(text, kind), f"a span such as 0 to {KINDS[kind].example}")
 
 
 def choice(*words: str) -> PlainValidator:
@@ -136,13 +132,15 @@ def _read_date(text: str, _: ValidationInfo) -> date:
     try:
         return date.fromisoformat(text)
     except ValueError as error:
-        raise wrong(f"{quoted(text)} is no date", expected="year-month-day, such as 2027-03-01") from error
+        raise wrong(
+            f"{quoted(text)} is no date", expected="year, month and day such as 2027-03-01"
+        ) from error
 
 
 def read_whole_number(text: str) -> int:
     """Return a whole number written in plain digits."""
     if not re.fullmatch(r"[+-]?[0-9]{1,18}", text):
-        raise QuantityError(f"{quoted(text)} is no whole number", expected="such as 7")
+        raise QuantityError(f"{quoted(text)} is no whole number", expected="a number such as 7")
     return int(text)
 
 
@@ -163,6 +161,21 @@ def read_text(text: str) -> str:
     return text
 
 
+def read_address(text: str) -> str:
+    """Return an address; each has one spelling, so that two mentions of one are seen to be the same."""
+    try:
+        plain = str(parse_address(text))
+    except PlanError as error:
+        raise QuantityError(error.what, expected="tcp://host:port, the port from 1 to 65535") from error
+    if plain != text:
+        raise QuantityError(
+            f"{quoted(text)} is an unusual spelling",
+            expected="small letters and no leading zeros",
+            nearest=plain,
+        )
+    return text
+
+
 def exactly_one(names: Sequence[str], given: Sequence[str], *, key: str = "") -> None:
     """Refuse a mapping that holds none or several of keys of which it must hold one."""
     if len(given) != 1:
@@ -179,5 +192,5 @@ DateText = Annotated[date, _leaf(_read_date, "a date"), shown("2027-03-01")]
 WholeText = Annotated[int, _leaf(lambda text, _: read_whole_number(text), "a whole number"), shown("7")]
 WordText = Annotated[str, _leaf(lambda text, _: read_text(text), "a word"), shown("part")]
 AddressText = Annotated[
-    str, _leaf(lambda text, _: str(parse_address(text)), "an address"), shown("tcp://10.0.0.7:5025")
+    str, _leaf(lambda text, _: read_address(text), "an address"), shown("tcp://10.0.0.7:5025")
 ]

@@ -73,10 +73,8 @@ def _beyond(axis: Axis, stage: StageCapabilities) -> str:
     high = max(axis.angles_deg) + (past if axis.approach == "from above" else 0.0)
     if low >= stage.travel_deg[0] and high <= stage.travel_deg[1]:
         return ""
-    furthest = format_quantity(low if low < stage.travel_deg[0] else high, "angle")
-    overshoot = (
-        ""
-        if axis.approach == "either" or past == 0
-        else f", with the overshoot of its approach {axis.approach}"
-    )
-    return f"the mount {quoted(axis.role)} would have to go to {furthest}{overshoot}"
+    is_low = low < stage.travel_deg[0]
+    furthest = format_quantity(low if is_low else high, "angle")
+    is_overshoot = past > 0 and axis.approach == ("from below" if is_low else "from above")
+    note = f", as its approach {axis.approach} goes past the angle and back" if is_overshoot else ""
+    return f"the mount {quoted(axis.role)} would have to go to {furthest}{note}"

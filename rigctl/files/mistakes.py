@@ -42,9 +42,27 @@ class Mistakes:
     def __init__(self, path: str) -> None:
         self.path = path
         self._found: list[Mistake] = []
+        self._told: set[Place] = set()
+
+    @property
+    def is_empty(self) -> bool:
+        """Whether no mistake was found so far."""
+        return not self._found
 
     def add(self, place: Place, key: str, what: str, *, expected: str = "", nearest: str = "") -> None:
-        """Note a mistake; raises `FileError` once there are too many."""
+        """Note a mistake, unless one is known at this place already: a later one is most likely its echo.
+
+        Raises `FileError` once there are too many.
+        """
+        if place not in self._told:
+            self._told.add(place)
+            self._note(place, key, what, expected=expected, nearest=nearest)
+
+    def add_missing(self, place: Place, key: str, what: str, *, expected: str = "") -> None:
+        """Note that something is missing; several things may be, at one place."""
+        self._note(place, key, what, expected=expected, nearest="")
+
+    def _note(self, place: Place, key: str, what: str, *, expected: str, nearest: str) -> None:
         line, column = place
         self._found.append(Mistake(self.path, line, column, key, what, expected=expected, nearest=nearest))
         if len(self._found) >= MOST:
@@ -57,7 +75,8 @@ class Mistakes:
         self._raise(STOPPED)
 
     def refuse(self, what: str, *, expected: str = "") -> NoReturn:
-        """Raise what is wrong with the file as a whole."""
+        """Raise what is wrong with the file as a whole, or what was found before."""
+        self.raise_if_any()
         raise FileError([Mistake(self.path, 0, 0, "", what, expected=expected)])
 
     def raise_if_any(self) -> None:
@@ -66,4 +85,4 @@ class Mistakes:
             self._raise("")
 
     def _raise(self, note: str) -> NoReturn:
-        raise FileError(sorted(set(self._found), key=lambda m: (m.line, m.column)), note=note) from None
+        raise FileError(sorted(self._found, key=lambda m: (m.line, m.column)), note=note) from None

@@ -15,6 +15,8 @@ from rigctl.files.places import Keys, Place, Places
 DEEPEST = 12
 """Levels of keys and lists; recipes and rig files need six."""
 
+_YAML_TAG = "tag:yaml.org,2002:"
+
 Data: TypeAlias = Union[str, "list[Data]", "dict[str, Data]"]
 
 
@@ -73,7 +75,12 @@ class Nodes:
             )
         tag = getattr(event, "tag", None)
         if tag is not None:
-            self._mistakes.add(place, "", f"the tag {quoted(tag)} is not allowed", expected="the value alone")
+            self._mistakes.add(
+                place,
+                "",
+                f"the tag {quoted(tag.replace(_YAML_TAG, '!!'))} is not allowed",
+                expected="the value alone",
+            )
 
     def _start(self, event: yaml.CollectionStartEvent, place: Place) -> None:
         """Open a mapping or a list."""

@@ -91,15 +91,15 @@ def _check_mount(part: Part, roles: Roles) -> None:
         what = "an element that no mount turns has no dial offset"
         part.at("dial offset").wrong_key(what, expected="'turned by', or 'axis' instead")
     if not part.at("axis").is_there and part.items():
-        part.wrong_key("an element that no mount turns needs its 'axis'", expected="such as axis: 0 deg")
+        part.missing("an element that no mount turns needs its 'axis'", expected="a key such as axis: 0 deg")
 
 
 def _check_end(optics: Part, elements: list[tuple[str, Part]]) -> None:
     """Check that the light ends on a detector."""
     kinds = [kind for kind, _ in elements]
     if "detector" not in kinds:
-        if optics.entries():
-            optics.wrong_key(
+        if len(elements) == len(optics.entries()) > 0:
+            optics.missing(
                 "the light ends on no detector", expected="a last entry such as detector: {role: signal}"
             )
         return

@@ -34,7 +34,7 @@ def read_options(
 
 
 def _known(known: Collection[str], whose: str) -> str:
-    return either(map(quoted, known)) if known else f"no key, as {whose} has none"
+    return either(map(quoted, known)) if known else f"none: {whose} has no keys"
 
 
 def _value(part: Part, option: Option) -> Any:

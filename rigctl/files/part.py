@@ -63,6 +63,10 @@ class Part:
         """Note a mistake at the value."""
         self.mistakes.add(self.places.of(*self.keys), self.key, what, expected=expected, nearest=nearest)
 
+    def missing(self, what: str, *, expected: str = "") -> None:
+        """Note that something is missing in this part."""
+        self.mistakes.add_missing(self.places.of_key(*self.keys), self.key, what, expected=expected)
+
     def wrong_key(self, what: str, *, expected: str = "", nearest: str = "") -> None:
         """Note a mistake at the key."""
         self.mistakes.add(self.places.of_key(*self.keys), self.key, what, expected=expected, nearest=nearest)

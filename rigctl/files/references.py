@@ -26,11 +26,15 @@ def check_references(document: Document, mistakes: Mistakes) -> None:
     check_optics(recipe.at("optics"), roles)
     mounts = mounts_of(recipe.at("optics"))
     _check_steps(recipe)
-    for owner in (recipe, *recipe.at("steps").entries()):
-        if owner.at("sweep").entries():
-            _check_sweep(owner.at("sweep"), roles, mounts)
+    sweeps = [owner.at("sweep") for owner in (recipe, *recipe.at("steps").entries())]
+    for sweep in sweeps:
+        if sweep.entries():
+            _check_sweep(sweep, roles, mounts)
     _check_dark(recipe.at("dark"), roles)
-    if recipe.at("optics").entries():
+    if mistakes.is_empty:
+        # what is idle is most often the echo of a name that is mistaken elsewhere
+        for sweep in sweeps:
+            _check_idle(sweep, mounts)
         roles.check_used(("rotation stage", "power meter"))
 
 
@@ -40,7 +44,7 @@ def _check_steps(recipe: Part) -> None:
     if sweep.is_there and steps.is_there:
         steps.wrong_key("'sweep' and 'steps' exclude each other", expected="one of them")
     elif not sweep.is_there and not steps.is_there and not _is_meant(recipe, ("sweep", "steps")):
-        recipe.wrong_key("nothing is swept", expected="a key 'sweep', or 'steps'")
+        recipe.missing("nothing is swept", expected="a key 'sweep', or 'steps'")
     seen: dict[str, str] = {}
     for step in steps.entries():
         _check_step_name(step.at("name"), seen)
@@ -67,31 +71,33 @@ def _check_step_name(part: Part, seen: dict[str, str]) -> None:
 
 
 def _check_sweep(sweep: Part, roles: Roles, mounts: Collection[str]) -> None:
-    """Check which mounts a sweep turns."""
-    swept: set[str] = set()
+    """Check which mounts a sweep turns, and that it leaves out none that an element needs."""
+    swept: set[str | None] = set()
     for entry in sweep.entries():
         axes = entry.items()
         if len(axes) != 1 and isinstance(entry.value, dict):
-            entry.wrong(
-                f"{len(axes)} mounts in one entry", expected="one mount in an entry: the first turns slowest"
-            )
+            what = f"{len(axes) or 'no'} mounts stand in one entry"
+            entry.wrong(what, expected="one mount in an entry: the first turns slowest")
         for name, axis in axes.items():
             if name in swept:
                 axis.wrong_key(
                     f"the mount {quoted(name)} is swept twice in one step", expected="each mount once"
                 )
-            swept.add(name)
-            if roles.use(axis, "rotation stage", name=name) and name not in mounts:
-                axis.wrong_key(f"the mount {quoted(name)} turns no element", expected=_turning(mounts))
+            swept.add(roles.use(axis, "rotation stage", name=name))
     for name in mounts:
-        if name not in swept and roles.kind(name) == "rotation stage":
-            what = f"the element turned by {quoted(name)} has no angle: the sweep leaves its mount out"
-            sweep.wrong_key(what, expected=f"an entry such as {name}: {{turn: 1, step: 5 deg}}")
+        if not swept & {name, None} and roles.kind(name) == "rotation stage":
+            what = f"the sweep leaves out {quoted(name)}, so what it turns has no angle"
+            sweep.missing(what, expected=f"an entry such as {name}: {{turn: 1, step: 5 deg}}")
 
 
-def _turning(mounts: Collection[str]) -> str:
-    others = f", or {' or '.join(map(quoted, mounts))}" if mounts else ""
-    return f"a mount that some element is turned by{others}"
+def _check_idle(sweep: Part, mounts: Collection[str]) -> None:
+    """Refuse to sweep a mount that turns nothing: most likely an element lacks its mount."""
+    for entry in sweep.entries():
+        for name, axis in entry.items().items():
+            if name not in mounts:
+                axis.wrong_key(
+                    f"the mount {quoted(name)} turns no element", expected="an element turned by it"
+                )
 
 
 def _check_dark(dark: Part, roles: Roles) -> None:

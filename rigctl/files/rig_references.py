@@ -8,12 +8,10 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from rigctl.errors import PlanError
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.options import read_options
 from rigctl.files.part import Part
 from rigctl.interfaces import BenchFactory, Driver
-from rigctl.links.addresses import parse_address
 
 SHARED_KEYS = ("driver", "at", "limits", "calibration")
 """Keys of an instrument whatever its driver."""
@@ -35,10 +33,11 @@ def read_extras(rig: Part, drivers: Mapping[str, Driver], bench: BenchFactory | 
     known = {name: driver for name, driver in found.items() if driver is not None}
     options = {name: _options(instruments.at(name), driver) for name, driver in known.items()}
     _check_addresses(instruments, known, options)
-    _check_roles(rig.at("roles"), instruments)
+    if instruments.items():
+        _check_roles(rig.at("roles"), instruments)
     if bench is None:
         return Extras(options, {}, {})
-    return Extras(options, *_simulated(rig.at("simulated"), known, bench))
+    return Extras(options, *_simulated(rig, known, bench))
 
 
 def _driver(instrument: Part, drivers: Mapping[str, Driver]) -> Driver | None:
@@ -71,10 +70,7 @@ def _check_addresses(
     seen: dict[str, str] = {}
     for name, driver in drivers.items():
         at = instruments.at(name).at("at")
-        address = _canonical(at.text)
-        if address is None:
-            continue
-        first = seen.setdefault(address, name)
+        first = seen.setdefault(at.text or name, name)
         if first == name:
             continue
         if drivers[first].family.name != driver.family.name:
@@ -82,14 +78,6 @@ def _check_addresses(
             at.wrong(what, expected="an address for each, or drivers of one family")
         elif drivers[first] is driver and options[first] == options[name]:
             at.wrong(f"{quoted(name)} is the same as {quoted(first)}", expected="another address or channel")
-
-
-def _canonical(text: str | None) -> str | None:
-    """One spelling for each address; None where it is none."""
-    try:
-        return None if text is None else str(parse_address(text))
-    except PlanError:
-        return None
 
 
 def _check_roles(roles: Part, instruments: Part) -> None:
@@ -101,9 +89,8 @@ def _check_roles(roles: Part, instruments: Part) -> None:
         if name is None:
             continue
         if name not in names:
-            expected = f"one of {either(map(quoted, names))}" if names else "an entry of 'instruments'"
-            what = f"no instrument is called {quoted(name)}"
-            part.wrong(what, expected=expected, nearest=nearest_word(name, names))
+            what, known = f"no instrument is called {quoted(name)}", either(map(quoted, names))
+            part.wrong(what, expected=f"one of {known}", nearest=nearest_word(name, names))
         elif name in filled:
             part.wrong(
                 f"{quoted(name)} fills the role {quoted(filled[name])} already", expected="one role each"
@@ -112,10 +99,11 @@ def _check_roles(roles: Part, instruments: Part) -> None:
 
 
 def _simulated(
-    simulated: Part, drivers: Mapping[str, Driver], bench: BenchFactory
+    rig: Part, drivers: Mapping[str, Driver], bench: BenchFactory
 ) -> tuple[Mapping[str, Any], Mapping[str, Mapping[str, Any]]]:
     """Read what is said of the simulated bench and of each twin; defaults stand for what is not written."""
-    others = ("seed", *drivers)
+    simulated, instruments = rig.at("simulated"), rig.at("instruments")
+    others = ("seed", *instruments.items())
     world = read_options(simulated, bench.bench_options(), others=others, whose="the simulated bench")
     twins = {}
     for name, driver in drivers.items():

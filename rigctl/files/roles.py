@@ -5,11 +5,13 @@ It owns the check of one mention of a role; who mentions roles is the business o
 
 from collections.abc import Collection
 from dataclasses import dataclass, field
+from typing import get_args
 
 from rigctl.files.leaves import LABEL, is_label
 from rigctl.files.mistakes import nearest_word, quoted
 from rigctl.files.part import Part
 from rigctl.files.recipe import BY_HAND
+from rigctl.interfaces import RoleKind
 
 RESERVED_ROLES = (BY_HAND, "source")
 """Words that mean something else where a role may stand."""
@@ -36,7 +38,7 @@ class Roles:
         """
         wanted = part.text if name is None else name
         complain = part.wrong if name is None else part.wrong_key
-        if wanted is None:
+        if wanted is None or not isinstance(self.part.value, dict):
             return None
         names = self.part.items()
         if wanted not in names:
@@ -47,7 +49,7 @@ class Roles:
             return None
         self.used.add(wanted)
         found = self.kind(wanted)
-        if found is not None and found != kind:
+        if found in get_args(RoleKind) and found != kind:
             complain(f"the role {quoted(wanted)} is a {found}", expected=f"a role that is a {kind}")
         elif not may_be_optional:
             self._refuse_optional(wanted)

@@ -39,7 +39,7 @@ class _Gatherer:
             keys = detail["loc"]
             match detail["type"]:
                 case "extra_forbidden":
-                    self._unknown_key(keys)
+                    self._unknown_key(keys, detail["input"])
                 case "missing":
                     self._missing_key(keys)
                 case "mistake":
@@ -47,12 +47,14 @@ class _Gatherer:
                 case _:
                     self._wrong_shape(keys, detail)
 
-    def _unknown_key(self, keys: Keys) -> None:
+    def _unknown_key(self, keys: Keys, value: object) -> None:
         key = str(keys[-1])
         known = keys_of(annotation_at(self._model, keys[:-1]))
         near = nearest_word(key, known)
         self._meant.add((*keys[:-1], near))
-        expected = "" if near else either(known)
+        expected = "" if near else either(map(quoted, known))
+        if key[0].isdigit() and value == "":
+            expected = "a decimal point: a comma ends a value here"
         place = self._places.of_key(*keys)
         self._mistakes.add(place, key, f"unknown key {quoted(key)}", expected=expected, nearest=near)
 
@@ -61,7 +63,8 @@ class _Gatherer:
             return
         key = str(keys[-1])
         owner = next((f" of {quoted(k)}" for k in reversed(keys[:-1]) if isinstance(k, str)), "")
-        self._mistakes.add(self._places.of_key(*keys[:-1]), key, f"the key {quoted(key)}{owner} is missing")
+        place = self._places.of_key(*keys[:-1])
+        self._mistakes.add_missing(place, key, f"the key {quoted(key)}{owner} is missing")
 
     def _leaf(self, keys: Keys, context: Mapping[str, str]) -> None:
         below = (context["key"],) if context["key"] else ()

@@ -6,7 +6,7 @@ checked in `rigctl.files.references`.
 
 from typing import Annotated, get_args
 
-from pydantic import BeforeValidator, Field, model_validator
+from pydantic import AfterValidator, BeforeValidator, Field, model_validator
 
 from rigctl.files.angles import angles_of
 from rigctl.files.leaves import (
@@ -27,17 +27,28 @@ from rigctl.files.written import Written
 from rigctl.interfaces import RoleKind
 from rigctl.quantities import Measured
 
+FEWEST_READINGS = 2
+"""One reading has no spread, and without a spread there is no uncertainty."""
+
+
+def _readings(count: float) -> float:
+    """Refuse so few readings that their spread is not known."""
+    if count < FEWEST_READINGS:
+        raise wrong("one reading has no spread", expected=f"at least {FEWEST_READINGS} readings")
+    return count
+
+
 Angle = Annotated[float, quantity("angle"), shown("5 deg")]
-Duration = Annotated[float, quantity("time", sign="not negative"), shown("150 ms")]
-Time = Annotated[float, quantity("time", sign="positive"), shown("400 ms")]
-Count = Annotated[float, quantity("count"), shown("4 readings")]
-Number = Annotated[float, quantity("number", sign="positive"), shown("1")]
+Duration = Annotated[float, quantity("time"), shown("150 ms")]
+Time = Annotated[float, quantity("time", is_positive=True), shown("400 ms")]
+Readings = Annotated[float, quantity("count"), AfterValidator(_readings), shown("4 readings")]
+Number = Annotated[float, quantity("number", is_positive=True), shown("1")]
 AngleSpan = Annotated[tuple[float, float], span("angle"), shown("0 deg to 90 deg")]
 MeasuredAngle = Annotated[Measured, measured("angle"), shown("0 deg +- 5 deg")]
 MeasuredRatio = Annotated[Measured, measured("ratio"), shown("1000:1 +- 30 %")]
 MeasuredRetardance = Annotated[Measured, measured("retardance"), shown("0.25 waves")]
-MeasuredLength = Annotated[Measured, measured("length", sign="positive"), shown("785.2 nm +- 0.3 nm")]
-MeasuredPower = Annotated[Measured, measured("power", sign="positive"), shown("2 mW +- 30 %")]
+MeasuredLength = Annotated[Measured, measured("length"), shown("785.2 nm +- 0.3 nm")]
+MeasuredPower = Annotated[Measured, measured("power", is_positive=True), shown("2 mW +- 30 %")]
 MeasuredStray = Annotated[Measured, measured("power"), shown("20 nW")]
 MeasuredDrift = Annotated[Measured, measured("drift"), shown("0 %/h +- 0.5 %/h")]
 KindText = Annotated[str, choice(*get_args(RoleKind)), shown("rotation stage")]
@@ -167,7 +178,7 @@ class WrittenDwell(Written):
     """How long to average."""
 
     time: Time
-    at_least: Count
+    at_least: Readings
 
 
 class WrittenDark(Written):

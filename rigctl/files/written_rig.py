@@ -11,9 +11,9 @@ from pydantic import ConfigDict, Field
 from rigctl.files.leaves import AddressText, DateText, TitleText, WholeText, WordText, quantity, shown
 from rigctl.files.written import Written
 
-Power = Annotated[float, quantity("power", sign="positive"), shown("5 mW")]
-Ratio = Annotated[float, quantity("ratio", sign="positive"), shown("3 %")]
-Number = Annotated[float, quantity("number", sign="positive"), shown("2")]
+Power = Annotated[float, quantity("power", is_positive=True), shown("5 mW")]
+Ratio = Annotated[float, quantity("ratio", is_positive=True), shown("3 %")]
+Number = Annotated[float, quantity("number", is_positive=True), shown("2")]
 
 
 class WrittenLimits(Written):

@@ -1,0 +1,81 @@
+"""Kinds of quantities and their units: the one table of what people may write.
+
+It owns names and sizes; it reads no text.
+"""
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Literal
+
+Sign = Literal["any", "positive", "not negative"]
+
+
+@dataclass(frozen=True, slots=True)
+class Kind:
+    """One kind of quantity.
+
+    `units` maps each unit to its size in the base unit; `shown` are the units that `format_quantity` picks
+    from, ascending; `per_wavelength` maps units of length in which a kind may be given once the wavelength is
+    known; `needs_unit` tells whether a bare number is refused, `sign` what the kind's nature allows.
+    """
+
+    name: str
+    units: Mapping[str, float]
+    shown: tuple[str, ...]
+    example: str
+    per_wavelength: Mapping[str, float] = field(default_factory=dict)
+    needs_unit: bool = True
+    sign: Sign = "any"
+
+    @property
+    def noun(self) -> str:
+        """The kind with its article."""
+        return f"{'an' if self.name[0] in 'aeiou' else 'a'} {self.name}"
+
+    @property
+    def phrase(self) -> str:
+        """The kind and an example of it, for messages."""
+        return f"{self.noun} such as {self.example}"
+
+    @property
+    def unit_names(self) -> tuple[str, ...]:
+        """Every unit that may be written."""
+        return (*self.units, *self.per_wavelength)
+
+
+def _micro(unit: str, size: float) -> dict[str, float]:
+    """Three ways of writing micro: the letter u, the micro sign and the Greek letter."""
+    return {f"{prefix}{unit}": size for prefix in ("u", "\u00b5", "\u03bc")}
+
+
+DEG_PER_RAD = 180.0 / math.pi
+_LENGTHS = {"nm": 1e-9, **_micro("m", 1e-6)}
+_ANGLES = {"deg": 1.0, "°": 1.0, "rad": DEG_PER_RAD, "mrad": DEG_PER_RAD / 1e3}
+_ARCS = {"arcmin": 1 / 60, "arcsec": 1 / 3600}
+_WAVES = {"waves": 1.0, "wave": 1.0, "deg": 1 / 360, "°": 1 / 360, "rad": DEG_PER_RAD / 360}
+_POWERS = {"W": 1.0, "mW": 1e-3, **_micro("W", 1e-6), "nW": 1e-9, "pW": 1e-12}
+_TIMES = {"s": 1.0, "ms": 1e-3, **_micro("s", 1e-6), "min": 60.0, "h": 3600.0, "d": 86400.0}
+_DRIFTS = {"1/h": 1.0, "%/h": 1e-2, "ppm/h": 1e-6, "1/d": 1 / 24, "%/d": 1e-2 / 24}
+_SPEEDS = {"deg/s": 1.0, "°/s": 1.0, "rad/s": DEG_PER_RAD, "rpm": 6.0}
+_ACCELERATIONS = {"deg/s2": 1.0, "deg/s^2": 1.0, "deg/s²": 1.0, "°/s2": 1.0, "rad/s2": DEG_PER_RAD}
+
+KINDS: Mapping[str, Kind] = {
+    kind.name: kind
+    for kind in (
+        Kind("angle", _ANGLES | _ARCS, ("deg",), "22.5 deg"),
+        Kind("retardance", _WAVES, ("waves",), "0.25 waves", per_wavelength=_LENGTHS),
+        Kind("ratio", {"%": 1e-2, "dB": math.nan}, (), "1000:1", needs_unit=False),
+        Kind("power", _POWERS, ("pW", "nW", "uW", "mW", "W"), "2 mW"),
+        Kind("time", _TIMES, ("us", "ms", "s", "min", "h"), "400 ms", sign="not negative"),
+        Kind(
+            "length", {"m": 1.0, "mm": 1e-3, **_LENGTHS}, ("nm", "um", "mm", "m"), "785.2 nm", sign="positive"
+        ),
+        Kind("drift", _DRIFTS, ("%/h",), "0.5 %/h"),
+        Kind("frequency", {"Hz": 1.0, "kHz": 1e3}, ("Hz", "kHz"), "50 Hz", sign="positive"),
+        Kind("angular speed", _SPEEDS, ("deg/s",), "20 deg/s", sign="positive"),
+        Kind("angular acceleration", _ACCELERATIONS, ("deg/s2",), "100 deg/s2", sign="positive"),
+        Kind("count", {"readings": 1.0, "reading": 1.0}, (), "4 readings", needs_unit=False),
+        Kind("number", {}, (), "2", needs_unit=False),
+    )
+}
