@@ -6,10 +6,9 @@ It owns what stands where. The factory at the end is what the rest of polrig fin
 from collections.abc import Mapping
 from typing import Any
 
-from rigctl.files.arrangement import train_of
-
 from rigctl import __version__
 from rigctl.errors import PlanError
+from rigctl.files.arrangement import train_of
 from rigctl.files.recipe import Recipe
 from rigctl.files.rig import InstrumentEntry, Rig
 from rigctl.interfaces import BenchFactory, Option, RoleKind
@@ -80,7 +79,9 @@ class _Assembly:
         self._role_of = {name: role for role, name in rig.roles.items() if role in recipe.roles}
         self._axes = {entry.name: self._axis(entry) for entry in self._entries(MOUNT)}
         self._shutters = {entry.name: _shutter(entry) for entry in self._entries(SWITCH)}
-        self.truth = draw_truth(self._train, seed, self._given())
+        power = recipe.source.power
+        power_u_w = None if power is None else power.u
+        self.truth = draw_truth(self._train, seed, given=self._given(), power_u_w=power_u_w)
         self.world = self._make_world()
 
     def twins(self) -> dict[str, Twin]:

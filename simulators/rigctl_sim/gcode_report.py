@@ -41,7 +41,7 @@ def build_lines(name: str) -> list[str]:
 
 
 def setting_lines(machine: Machine) -> list[str]:
-    """Write the answer to `$$`: steps per degree, top speed in deg/min, acceleration and travel of each axis."""
+    """Write the answer to `$$`: steps per deg, top speed in deg/min, acceleration and travel of each axis."""
     lines = ["$10=1", "$20=1", "$22=1"]
     for letter, axis in machine.axes.items():
         make, number = axis.make, ORDER.index(letter)

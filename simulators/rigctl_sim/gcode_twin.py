@@ -69,9 +69,8 @@ class GcodeTwin:
                 _REAL_TIME[byte](self, now_s)
             elif byte in b"\r\n":
                 self._end_line(byte, now_s)
-            elif byte < 0x80:
+            elif byte < 0x80 and len(self._arriving) <= LONGEST_LINE:
                 self._arriving.append(byte)
-        self._advance(now_s)
 
     def next_ready_s(self) -> float | None:
         """Return the instant of the next answer, or at which the line under way goes on."""
@@ -95,6 +94,7 @@ class GcodeTwin:
             self._lines.append((now_s, line))
         self._arriving.clear()
         self._had_return = byte == 0x0D
+        self._advance(now_s)
 
     def _advance(self, now_s: float) -> None:
         """Work off lines up to now, each at its own instant."""
@@ -201,6 +201,8 @@ class GcodeTwin:
         self._ok(at_s)
 
     def _unlock(self, at_s: float) -> None:
+        if self._machine.is_turning(at_s):
+            raise LineError(NOT_IDLE)
         if self._is_locked:
             self._is_locked = False
             self._machine.abandon(at_s)

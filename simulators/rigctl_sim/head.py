@@ -49,10 +49,10 @@ class HeadInBeam:
         remembers_from_s = begin_s - FORGOTTEN * time_constant_s
         if self._world.rests_from_s() <= remembers_from_s:
             middle_s = 0.5 * (begin_s + end_s)
-            return self._world.light_at_rest_w(middle_s - time_constant_s, self._detector) + self._stray_w
+            return self._world.light_w(middle_s - time_constant_s, self._detector) + self._stray_w
         if not remembers_from_s <= self._shown_at_s <= begin_s:
             self._shown_at_s = remembers_from_s
-            self._shown_w = self._world.light_w(remembers_from_s)[self._detector]
+            self._shown_w = self._world.light_w(remembers_from_s, self._detector)
         if self._shown_at_s < begin_s:
             self._follow(begin_s, time_constant_s)
         return self._follow(end_s, time_constant_s) / (end_s - begin_s) + self._stray_w
@@ -60,10 +60,10 @@ class HeadInBeam:
     def _follow(self, end_s: float, time_constant_s: float) -> float:
         """Go on to an instant; return the integral of what was shown on the way, J."""
         light_w, detector, total = self._world.light_w, self._detector, 0.0
-        end_w = light_w(self._shown_at_s)[detector]
+        end_w = light_w(self._shown_at_s, detector)
         for begin, end in self._world.pieces(self._shown_at_s, end_s):
-            begin_w, end_w = end_w, light_w(end)[detector]
-            light = (begin_w, light_w(0.5 * (begin + end))[detector], end_w)
+            begin_w, end_w = end_w, light_w(end, detector)
+            light = (begin_w, light_w(0.5 * (begin + end), detector), end_w)
             self._shown_w, energy = respond(
                 self._shown_w, light, duration_s=end - begin, time_constant_s=time_constant_s
             )

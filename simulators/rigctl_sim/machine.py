@@ -67,7 +67,9 @@ class Axis:
 
     def home(self, now_s: float) -> float:
         """Seek the switch and count from there; return the instant at which the axis is homed."""
-        there = self.move(now_s, self.lost_deg, _SEEK * self.make.speed_deg_per_s)
+        there = self.move(
+            max(now_s, self.dial.rests_from_s), self.lost_deg, _SEEK * self.make.speed_deg_per_s
+        )
         self.lost_deg = 0.0
         return there + LOCATES_IN_S
 

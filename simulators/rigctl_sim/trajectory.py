@@ -38,7 +38,7 @@ class Trajectory:
     """
 
     def __init__(self, place: float) -> None:
-        self._pieces = [Piece(-math.inf, place)]
+        self._pieces = [Piece(0.0, place)]
         self._starts = [-math.inf]
         self.rests_from_s = -math.inf
         self.rests_at = place

@@ -6,6 +6,7 @@ the recipe leaves the others as they were.
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 
 from rigctl.optics import Quantity, Train
 from rigctl_sim.noise import generator
@@ -21,7 +22,9 @@ _POWER, _DRIFT, _STRAY, _OFFSET = "source.power", "source.drift", ".stray light"
 _POSITIVE = ("ratio", "power")
 
 
-def draw_truth(train: Train, seed: int, given: Mapping[str, float]) -> dict[str, float]:
+def draw_truth(
+    train: Train, seed: int, *, given: Mapping[str, float], power_u_w: float | None = None
+) -> dict[str, float]:
     """Draw the truth.
 
     Parameters
@@ -30,6 +33,8 @@ def draw_truth(train: Train, seed: int, given: Mapping[str, float]) -> dict[str,
         Nominal values with their tolerances.
     given
         Values that are not to be drawn, by address.
+    power_u_w
+        Standard uncertainty of the source's nominal power, W; None: nobody states one.
 
     Returns
     -------
@@ -37,6 +42,7 @@ def draw_truth(train: Train, seed: int, given: Mapping[str, float]) -> dict[str,
     """
     truth: dict[str, float] = {}
     power = train.quantities[_POWER]
+    power = replace(power, u=power_u_w or POWER_SPREAD * power.value)
     for quantity in (power, *train.quantities.values()):
         if quantity.name not in truth:
             chosen = given.get(quantity.name)
@@ -63,15 +69,11 @@ def _centre(quantity: Quantity, truth: Mapping[str, float]) -> tuple[float, floa
     name, value = quantity.name, quantity.value
     if quantity.u:
         return value, quantity.u
-    if name == _POWER:
-        return value, POWER_SPREAD * value
-    # a drift or stray light without a tolerance is 0 in the train unless the recipe states it
-    if name == _DRIFT and value == 0.0:
-        return 0.0, DRIFT_PER_H
-    if name.endswith(_STRAY) and value == 0.0:
-        middle = STRAY_PART * truth[_POWER]
-        return middle, STRAY_SPREAD * middle
-    if not quantity.is_unknown:
+    if not quantity.is_fitted:
         return value, 0.0
-    unknown = {"retardance": RETARDANCE_WAVES, "ratio": EXTINCTION_SPREAD, "angle": None}
-    return value, unknown.get(quantity.kind, 0.0)
+    if name == _DRIFT:
+        return value, DRIFT_PER_H
+    if name.endswith(_STRAY):
+        middle = value or STRAY_PART * truth[_POWER]
+        return middle, STRAY_SPREAD * middle
+    return value, {"retardance": RETARDANCE_WAVES, "ratio": EXTINCTION_SPREAD, "angle": None}[quantity.kind]

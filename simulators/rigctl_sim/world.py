@@ -67,21 +67,20 @@ class World:
         """Return the instant from which nothing moves, as far as is known."""
         return max([moving.rests_from_s for moving in self._moving])
 
-    def light_w(self, instant_s: float) -> Sequence[float]:
-        """Light on each detector at an instant, W, stray light left out."""
-        angles = {name: mount.sense * mount.dial(instant_s) for name, mount in self._mounts.items()}
-        opening = math.prod(opening(instant_s) for opening in self._openings)
-        return self._reader(angles, opening * self._source.power_at(instant_s))
-
-    def light_at_rest_w(self, instant_s: float, detector: int) -> float:
-        """Light on one detector at an instant from which on nothing moves, W."""
+    def light_w(self, instant_s: float, detector: int) -> float:
+        """Light on one detector at an instant, W, stray light left out."""
         since = self.rests_from_s()
+        if instant_s < since:
+            return self._parts(instant_s)[detector] * self._source.power_at(instant_s)
+        # nothing moves any more: what arrives is worked out once, until something does
         if self._at_rest[0] != since:
-            # the power of the source is a factor: one watt gives the part that arrives
-            angles = {name: mount.sense * mount.dial.rests_at for name, mount in self._mounts.items()}
-            opening = math.prod(opening.rests_at for opening in self._openings)
-            self._at_rest = (since, self._reader(angles, opening))
+            self._at_rest = (since, self._parts(instant_s))
         return self._at_rest[1][detector] * self._source.power_at(instant_s)
+
+    def _parts(self, instant_s: float) -> Sequence[float]:
+        """Part of the source's power that arrives at each detector."""
+        angles = {name: mount.sense * mount.dial(instant_s) for name, mount in self._mounts.items()}
+        return self._reader(angles, math.prod([opening(instant_s) for opening in self._openings]))
 
     def pieces(self, begin_s: float, end_s: float) -> Iterator[tuple[float, float]]:
         """Cut a stretch of time into pieces short enough for a parabola through the light."""
