@@ -36,12 +36,12 @@ class GcodeFamily:
         """
         stale: list[bytes] = []
         try:
-            first = _next(channel, deadline_s, ask=REPORT, is_wanted=_is_report, stale=stale)
+            _, first = _next(channel, deadline_s, ask=REPORT, is_wanted=_is_report, stale=stale)
             if isinstance(first, Report) and first.state == "Home":
                 raise LinkTimeoutError(
                     "it is searching its zero and takes no line until that ends", address=channel.address
                 )
-            _next(channel, deadline_s, ask=CLEAR, is_wanted=_is_ok, stale=stale)
+            _clear(channel, deadline_s, stale)
             before = -1
             while before != len(stale):
                 before = len(stale)
@@ -58,20 +58,29 @@ def _is_report(line: Line) -> bool:
     return isinstance(line, Report)
 
 
-def _is_ok(line: Line) -> bool:
-    return line == Ack()
+def _is_ack(line: Line) -> bool:
+    return isinstance(line, Ack)
+
+
+def _clear(channel: Channel, deadline_s: float, stale: list[bytes]) -> None:
+    """Send empty lines until one gives `ok`; the first may end a line that was sent in part."""
+    while True:
+        raw, answer = _next(channel, deadline_s, ask=CLEAR, is_wanted=_is_ack, stale=stale)
+        if answer == Ack():
+            return
+        stale.append(raw)
 
 
 def _next(
     channel: Channel, deadline_s: float, *, ask: bytes, is_wanted: Callable[[Line], bool], stale: list[bytes]
-) -> Line:
-    """Ask, and read up to what is wanted; lines before it are stale."""
+) -> tuple[bytes, Line]:
+    """Ask, and read up to what is wanted; lines before it are stale. Returns it as it came and as read."""
     channel.write(ask, deadline_s)
     while len(stale) < MOST_STALE_LINES:
         raw = channel.readline(deadline_s)
         line = _line(raw, channel.address)
         if is_wanted(line):
-            return line
+            return raw, line
         stale.append(raw)
     raise FramingError(
         "the controller sends lines without end",

@@ -55,10 +55,22 @@ def test_what_is_already_here_is_stale_too(gcode: Bench) -> None:
     assert gcode.link.resync().stale == (b"ok\r\n",)
 
 
-def test_an_error_that_sticks_is_cleared_by_the_empty_line_and_told(gcode: Bench) -> None:
-    expect_resync(gcode, clear=b"error:20\r\nok\r\n")
+@pytest.mark.parametrize("refused", [b"error:20\r\n", b"[MSG:x]\r\nerror:20\r\n"])
+def test_a_half_sent_line_is_ended_by_one_empty_line_and_its_refusal_cleared_by_the_next(
+    gcode: Bench, refused: bytes
+) -> None:
+    gcode.twin.expect(b"?", IDLE)
+    gcode.twin.expect(b"\n", refused)
+    gcode.twin.expect(b"\n", b"ok\r\n")
+    gcode.twin.expect(b"?", IDLE)
 
     assert gcode.link.resync().complaints == ((20, "an unsupported command"),)
+
+
+def test_a_refusal_among_the_stale_lines_is_told(gcode: Bench) -> None:
+    expect_resync(gcode, first=b"error:2\r\n" + IDLE)
+
+    assert gcode.link.resync().complaints == ((2, "a bad number"),)
 
 
 def test_an_alarm_among_the_stale_lines_is_told_as_one(gcode: Bench) -> None:
