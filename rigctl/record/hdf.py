@@ -34,8 +34,7 @@ def put_text(parent: Any, name: str, text: str) -> None:
     plain = plain_text(text)
     dataset = parent.create_dataset(name, data=np.bytes_(plain))
     if plain != text:
-        # an attribute's text ends at the first NUL, and lone surrogates are no UTF-8
-        dataset.attrs["text"] = text.replace("\0", "?").encode("utf-8", "replace").decode()
+        dataset.attrs["text"] = _attribute(text)
 
 
 def put_note(parent: Any, name: str, data: bytes, **texts: str) -> None:
@@ -60,7 +59,7 @@ def put_values(parent: Any, name: str, values: Mapping[str, Any]) -> Any:
         elif value is not None:
             group.create_dataset(item, data=np.int8(value) if isinstance(value, bool) else value)
         if item in group and item != key:
-            group[item].attrs["name"] = key
+            group[item].attrs["name"] = _attribute(key)
     return group
 
 
@@ -87,10 +86,15 @@ def _put_variable(group: Any, variable: Variable) -> Any:
     is_real = values.dtype.kind == "f"
     fill = {"fillvalue": np.nan} if is_real else {}
     dataset = group.create_dataset(variable.name, data=values, **fill, **_storage(values))
-    dataset.attrs.update(variable.attributes)
+    dataset.attrs.update({key: _attribute(value) for key, value in variable.attributes.items()})
     if is_real and len(variable.dims) and variable.dims != (variable.name,):
         dataset.attrs["_FillValue"] = np.array([np.nan])
     return dataset
+
+
+def _attribute(value: Any) -> Any:
+    """Return an attribute's value; a text of HDF5 ends at a NUL, and lone surrogates are no UTF-8."""
+    return value.replace("\0", "?").encode("utf-8", "replace").decode() if isinstance(value, str) else value
 
 
 def _storage(values: np.ndarray[Any, Any]) -> dict[str, Any]:

@@ -37,8 +37,9 @@ def _publish(path: Path, run: Run, journal: bytes, *, tail: bytes, is_final: boo
             require_intact(new)
         replace_durably(new, path)
     except OSError as error:
-        new.unlink(missing_ok=True)
         raise _refused(path, error) from error
+    finally:
+        new.unlink(missing_ok=True)
 
 
 def _refused(path: Path, error: OSError) -> RecordError:

@@ -1,5 +1,6 @@
 """Is a run file whole, and are its data what they were when it was closed?"""
 
+import io
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -80,11 +81,14 @@ def refuse_another_run(path: Path, uuid: str) -> None:
 
 
 def open_view(path: Path) -> Any:
-    """Open a run file for reading; `DamagedFileError` when it is none."""
+    """Open a copy of a run file in memory; `DamagedFileError` when it is none.
+
+    So no lock is asked for or held, whoever else reads the file or puts the next view in its place.
+    """
     import h5py
 
     try:
-        return h5py.File(path, "r", locking=False)
+        return h5py.File(io.BytesIO(path.read_bytes()), "r")
     except OSError as error:
         raise DamagedFileError(f"cannot be read as a run file: {error}", where=str(path)) from error
 
