@@ -36,6 +36,7 @@ class Visits:
     time_h: Array
 
     def __post_init__(self) -> None:
+        object.__setattr__(self, "is_open", np.asarray(self.is_open, dtype=bool))  # 0 and 1 will do as well
         if {np.shape(column) for column in self.angle_deg.values()} | {np.shape(self.is_open)} != {
             (self.count,)
         }:

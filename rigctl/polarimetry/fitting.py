@@ -5,6 +5,7 @@ solutions is told. It never draws on anything but the train as written and the r
 """
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -18,16 +19,18 @@ from rigctl.polarimetry.descent import Descent, covariance, descend
 from rigctl.polarimetry.knowledge import guarded, refusals
 from rigctl.polarimetry.problem import Problem
 from rigctl.polarimetry.results import Estimate, Fit, Observed
+from rigctl.polarimetry.scatter import Scatter, scatter
 from rigctl.polarimetry.split import split_chi2
 from rigctl.polarimetry.start import starts
 from rigctl.polarimetry.symmetry import Symmetries, symmetries
 from rigctl.polarimetry.variance import pooled_noise
 
 REWEIGHTINGS = 2  # the weights follow the fitted power, and settle in two rounds
-SCOUT_STEPS = 20  # enough to tell a good basin from a bad one
+GUESS, SILENCE = 1e-3, 1e-9  # relative noise of dwells without scatter: at first, and at least
+SCOUT_STEPS = 8  # enough to tell a good basin from a bad one
+HOPELESS = 10.0  # times the best chi-squared of all scouts
 BY_NOISE = 6.0  # standard uncertainties
 NEARLY_AS_WELL = 9.0  # rise of chi-squared that three standard uncertainties make
-Z995 = 2.5758293035489004  # two-sided 99 % quantile of the normal distribution
 
 
 def fit(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Fit:
@@ -59,13 +62,16 @@ def fit(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Fit:
         best = descend(problem, best.z)
     chosen = moves.nearest(_people(problem, best.z))
     best = descend(problem, _fit_numbers(problem, best.z, chosen))
-    return _result(problem, best, chosen, (*moves.sentences(), *rivals), notes=_scatterless(levels))
+    verdict = scatter(best.chi2, problem.dof, {d.name: levels[d.name] for d in train.detectors})
+    return _result(problem, best, chosen, (*moves.sentences(), *rivals), verdict=verdict)
 
 
 def _problem(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Problem:
     names = [d.name for d in train.detectors]
     level_w = {name: np.where(_counts(levels[name]), levels[name].power_w, 0.0) for name in names}
-    weight = {name: _weight(levels[name], level_w[name]) for name in names}
+    weight = {
+        name: _weight(levels[name], w, GUESS * float(np.max(np.abs(w)) or 1.0)) for name, w in level_w.items()
+    }
     problem = Problem(train, in_fit_forms(train, visits), visits, level_w, weight)
     if not problem.row_count:
         raise UndecidedError("there is no reading to fit", do="Run the recipe, or resume the run.")
@@ -76,32 +82,38 @@ def _counts(observed: Observed) -> Flags:
     return np.isfinite(observed.power_w) & (observed.n >= 1)
 
 
-def _weight(observed: Observed, mean_w: Array) -> Array:
-    """1 over the standard uncertainty of each mean; 0 where nothing was read."""
-    noise = pooled_noise(observed, mean_w)
-    variance = np.ones_like(mean_w) if noise is None else noise.variance_w2(mean_w)
-    counts = _counts(observed)
-    return np.where(counts, np.sqrt(np.where(counts, observed.n, 1.0) / variance), 0.0)
+def _weight(observed: Observed, mean_w: Array, silent_w: float) -> Array:
+    """1 over the standard uncertainty of each mean; 0 where nothing was read.
+
+    Without any scatter within the dwells each mean is taken to be uncertain by `silent_w`.
+    """
+    noise, counts = pooled_noise(observed, mean_w), _counts(observed)
+    if noise is None:
+        return np.where(counts, 1.0 / silent_w, 0.0)
+    return np.where(counts, np.sqrt(np.where(counts, observed.n, 1.0) / noise.variance_w2(mean_w)), 0.0)
+
+
+def _silent_w(misses_w: Array, level_w: Array) -> float:
+    brightest_w = float(np.max(np.abs(level_w), initial=0.0)) or 1.0
+    return max(float(np.sqrt(np.mean(np.square(misses_w)))), SILENCE * brightest_w)
 
 
 def _reweighted(problem: Problem, levels: Mapping[str, Observed], z: Array) -> Problem:
-    fitted_w = readings(problem.train, problem.visits, problem.values(z))
-    weight = {name: _weight(levels[name], level) for name, level in fitted_w.items()}
-    return Problem(problem.asked, problem.train, problem.visits, problem.level_w, weight, problem.held)
-
-
-def _scatterless(levels: Mapping[str, Observed]) -> tuple[str, ...]:
-    silent = [name for name, observed in levels.items() if pooled_noise(observed, observed.power_w) is None]
-    return tuple(
-        f"the readings of {n} show no scatter within a dwell: weighed by the fit's own" for n in silent
-    )
+    weight = {}
+    for name, fitted_w in readings(problem.train, problem.visits, problem.values(z)).items():
+        level_w = problem.level_w[name]
+        misses_w = (level_w - fitted_w)[problem.weight[name] > 0.0]
+        weight[name] = _weight(levels[name], fitted_w, _silent_w(misses_w, level_w))
+    return replace(problem, weight=weight)
 
 
 def _search(problem: Problem, moves: Symmetries) -> tuple[Descent, tuple[str, ...]]:
     """The best of all basins, and sentences about others nearly as good and not merely its image."""
     points = _distinct(problem, moves, starts(problem))
     held = guarded(problem, points[0])
-    walked = (descend(held, z, most_steps=SCOUT_STEPS) for z in points)
+    scouts = [descend(held, z, most_steps=SCOUT_STEPS) for z in points]
+    hope = HOPELESS * min(scout.chi2 for scout in scouts)
+    walked = (descend(held, scout.z) for scout in scouts if scout.chi2 <= hope)
     found = sorted(walked, key=lambda descent: (_is_impossible(held, descent), descent.chi2))
     rivals = [d.z for d in found if d.chi2 < found[0].chi2 + NEARLY_AS_WELL and not _is_impossible(held, d)]
     homes = _distinct(held, moves, [found[0].z, *rivals], near=1e-2)
@@ -156,22 +168,20 @@ def _result(
     chosen: Mapping[str, float],
     equivalents: tuple[str, ...],
     *,
-    notes: tuple[str, ...],
+    verdict: Scatter,
 ) -> Fit:
-    growth = _growth(best.chi2, problem.dof, is_scaled=bool(notes))
-    matrix = covariance(best.slopes) * growth**2
+    matrix = covariance(best.slopes) * verdict.growth**2
     told = [k for k, name in enumerate(problem.names) if name not in problem.held]
     slopes = np.array([to_people(q.kind, float(v))[1] for q, v in zip(problem.fitted, best.z, strict=True)])
-    in_people = matrix * np.outer(slopes, slopes)
     return Fit(
         estimates=tuple(estimates(problem, best.z, matrix, chosen)),
-        covariance=in_people[np.ix_(told, told)],
+        covariance=(matrix * np.outer(slopes, slopes))[np.ix_(told, told)],
         chi2=best.chi2,
         dof=problem.dof,
         split=split_chi2(problem, best.chi2),
         equivalents=equivalents,
         refusals=refusals(problem, best.z),
-        notes=(*notes, *_scatter_notes(best.chi2, problem.dof, growth, is_scaled=bool(notes))),
+        notes=verdict.notes(),
         fitted_w=readings(problem.train, problem.visits, problem.values(best.z)),
         u_w={
             n: np.divide(1.0, w, out=np.full_like(w, np.inf), where=w > 0.0)
@@ -189,46 +199,3 @@ def estimates(problem: Problem, z: Array, matrix: Array, chosen: Mapping[str, fl
         for k, q in enumerate(problem.fitted)
         if q.name not in problem.held
     ]
-
-
-def _growth(chi2: float, dof: int, *, is_scaled: bool) -> float:
-    """Factor on all standard uncertainties: 1 while chi-squared is within its 99 % band.
-
-    Source
-    ------
-    R. T. Birge, Phys. Rev. 40, 207 (1932), citation from memory: the square root of chi-squared per
-    degree of freedom.
-    """
-    if dof and (is_scaled or chi2 > chi2_band(dof)[1]):
-        return float(np.sqrt(chi2 / dof))
-    return 1.0
-
-
-def chi2_band(dof: int) -> tuple[float, float]:
-    """The middle 99 % of chi-squared.
-
-    Source
-    ------
-    E. B. Wilson, M. M. Hilferty, Proc. Natl. Acad. Sci. 17, 684 (1931), citation from memory: its cube
-    root is nearly normal.
-    """
-    part = 2.0 / (9.0 * dof)
-    low, high = (dof * max(0.0, 1.0 - part + z * np.sqrt(part)) ** 3 for z in (-Z995, Z995))
-    return float(low), float(high)
-
-
-def _scatter_notes(chi2: float, dof: int, growth: float, *, is_scaled: bool) -> tuple[str, ...]:
-    if not dof:
-        return ("as many quantities as readings: nothing is left to judge the fit by",)
-    if is_scaled:
-        return ()
-    if growth > 1.0:
-        return (
-            f"the readings miss the fit by {growth:.2f} times their scatter within a dwell: "
-            "all standard uncertainties are multiplied by that",
-        )
-    if chi2 < chi2_band(dof)[0]:
-        return (
-            "the readings fit better than their scatter within a dwell allows: is it drift or filtering?",
-        )
-    return ()

@@ -115,7 +115,7 @@ def _remedies(problem: Problem, z: Array, others: Sequence[str]) -> Iterator[_Re
                 yield _Remedy(sentence, problem.extended(_shifted(visits, mount, angle_deg)))
     widths = dict(zip(problem.names, problem.widths(z), strict=True))
     for name in others:
-        sentence = f"Or measure {name} apart and state it with its tolerance in the recipe."
+        sentence = f"Measure {name} apart and state it with its tolerance in the recipe."
         yield _Remedy(sentence, problem.told(name, KNOWN_WELL * widths[name]))
 
 

@@ -4,7 +4,7 @@ It owns the rows of the problem; it never decides where to start nor what to rep
 """
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -36,6 +36,8 @@ class Problem:
     held
         Quantities that the data do not determine: held near their nominal values by a wide prior, so
         that the uncertainty of the others stays honest.
+    fitted
+        Follows from the train: the quantities in the forms of the fit, in the order of the columns.
     """
 
     asked: Train
@@ -44,11 +46,10 @@ class Problem:
     level_w: Mapping[str, Array]
     weight: Mapping[str, Array]
     held: tuple[str, ...] = ()
+    fitted: tuple[Quantity, ...] = field(init=False)
 
-    @property
-    def fitted(self) -> tuple[Quantity, ...]:
-        """The quantities of the problem in the forms of the fit, in the order of its columns."""
-        return self.train.fitted
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "fitted", self.train.fitted)  # asked for at every step
 
     @property
     def names(self) -> tuple[str, ...]:

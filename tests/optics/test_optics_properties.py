@@ -173,3 +173,10 @@ def test_rows_keep_only_what_is_marked() -> None:
 
     assert np.array_equal(kept.angle_deg["part mount"], [0.0, 20.0])
     assert not kept.has_dark
+
+
+def test_blocked_and_open_may_be_written_as_0_and_1() -> None:
+    visits = Visits({}, np.array([0, 1]), np.zeros(2))  # type: ignore[arg-type]  # what a file may hold
+
+    assert visits.is_open.dtype == bool
+    assert visits.has_dark

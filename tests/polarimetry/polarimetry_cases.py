@@ -1,7 +1,6 @@
 """Arrangements as a recipe would give them, and readings as a good bench would."""
 
 from collections.abc import Mapping
-from dataclasses import replace
 
 import numpy as np
 
@@ -86,15 +85,17 @@ def sweep(*, step_deg: float = 5.0, darks: int = 10, hours: float = 0.25) -> Vis
     return Visits({"part mount": angles}, is_open, np.linspace(0.0, hours, count))
 
 
-def truth_of(train: Train, rng: np.random.Generator, **unknowns: float) -> dict[str, float]:
+def truth_of(train: Train, rng: np.random.Generator) -> dict[str, float]:
     """A hidden truth: nuisances from their tolerances, power, drift and stray light from the bench."""
-    drawn = {q.name: q.value + q.prior_u * rng.standard_normal() for q in train.fitted if q.prior_u is not None}
+    drawn = {
+        q.name: q.value + q.prior_u * rng.standard_normal() for q in train.fitted if q.prior_u is not None
+    }
     bench = {
         "source.power": FULL_SCALE_W * rng.uniform(0.5, 1.5),
         "source.drift": 0.02 * rng.standard_normal(),
         "signal.stray light": FULL_SCALE_W * rng.uniform(0.0, 2e-3),
     }
-    return {**drawn, **bench, **{name.replace("_", " ").replace("part ", "part."): v for name, v in unknowns.items()}}
+    return {**bench, **drawn}
 
 
 def observe(
@@ -105,20 +106,10 @@ def observe(
     for name, level in readings(train, visits, truth).items():
         sd = np.hypot(2e-7, 1e-3 * level)
         drawn = level[:, None] + sd[:, None] * rng.standard_normal((level.size, per_dwell))
-        seen[name] = Observed(drawn.mean(axis=1), drawn.std(axis=1, ddof=1), np.full(level.size, float(per_dwell)))
+        seen[name] = Observed(
+            drawn.mean(axis=1), drawn.std(axis=1, ddof=1), np.full(level.size, float(per_dwell))
+        )
     return seen
-
-
-def without(train: Train, **changes: object) -> Train:
-    """The train with every quantity changed alike."""
-    return train.rewritten(*(replace(q, **changes) for q in train.quantities.values()))  # type: ignore[arg-type]
-
-
-def pull(value: float, u: float, truth: float, *, period: float | None = None) -> float:
-    difference = value - truth
-    if period is not None:
-        difference -= period * round(difference / period)
-    return difference / u
 
 
 def variances(visits: Visits, u_w: float = 1e-7) -> dict[str, Array]:
