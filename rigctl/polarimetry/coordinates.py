@@ -5,6 +5,7 @@ the leaked amplitude of a polarizer when the sweep can see it. In these forms th
 (nearly) linear up to and beyond the edges, so an estimate at 0 or half a wave is not biased.
 """
 
+import math
 from collections.abc import Mapping
 from dataclasses import replace
 from statistics import NormalDist
@@ -125,7 +126,7 @@ def _retardance(quantity: Quantity, *, value: float, cosine: float, u: float) ->
     low, high = cosine - Z95 * u, cosine + Z95 * u
     if low > -1.0 and high < 1.0:
         return Estimate(
-            quantity.name, quantity.kind, value, u / (TURN * np.sqrt(1.0 - cosine**2)), quantity.is_unknown
+            quantity.name, quantity.kind, value, u / (TURN * math.sqrt(1.0 - cosine**2)), quantity.is_unknown
         )
     sign = -1.0 if np.sin(TURN * value) < -UNSEEN else 1.0
     whole = value - sign * to_people("cosine", cosine)[0]

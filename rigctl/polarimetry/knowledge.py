@@ -11,7 +11,7 @@ import numpy as np
 
 from rigctl.optics.kernel import Array
 from rigctl.optics.visits import Visits
-from rigctl.polarimetry.coordinates import to_people
+from rigctl.polarimetry.coordinates import estimate_of, to_people
 from rigctl.polarimetry.descent import covariance
 from rigctl.polarimetry.problem import Problem
 from rigctl.polarimetry.results import Coupling, Refusal
@@ -143,19 +143,26 @@ def _u_by_name(problem: Problem, z: Array, names: Sequence[str]) -> dict[str, fl
     _, slopes = guarded(problem, z).rows(z)
     u = np.sqrt(np.diag(covariance(slopes)))
     return {
-        q.name: float(u[k]) * abs(to_people(q.kind, float(z[k]))[1])
-        for k, q in enumerate(problem.fitted)
-        if q.name in names
+        n: _readable_u(problem, z, problem.names.index(n), float(u[problem.names.index(n)])) for n in names
     }
 
 
-def couplings(problem: Problem, slopes: Array) -> tuple[Coupling, ...]:
+def _readable_u(problem: Problem, z: Array, k: int, u: float) -> float:
+    form, fitted = problem.fitted[k].kind, float(z[k])
+    value, _ = to_people(form, fitted)
+    return estimate_of(problem.asked.quantities[problem.names[k]], form, value=value, fitted=fitted, u=u).u
+
+
+def couplings(problem: Problem, z: Array, slopes: Array) -> tuple[Coupling, ...]:
     """The unknowns that are found, but far worse than if the others were known."""
     matrix = covariance(slopes)
     u, lengths = np.sqrt(np.diag(matrix)), np.linalg.norm(slopes, axis=0)
     correlation = np.abs(matrix) / np.outer(u, u) - np.eye(u.size)
-    return tuple(
-        Coupling(q.name, float(u[k]), 1.0 / float(lengths[k]), problem.names[int(np.argmax(correlation[k]))])
-        for k, q in enumerate(problem.fitted)
-        if q.is_unknown and q.name not in problem.held and u[k] * lengths[k] > BLURRED
-    )
+    found = []
+    for k, quantity in enumerate(problem.fitted):
+        blur = float(u[k] * lengths[k])
+        if quantity.is_unknown and quantity.name not in problem.held and blur > BLURRED:
+            readable_u = _readable_u(problem, z, k, float(u[k]))
+            other = problem.names[int(np.argmax(correlation[k]))]
+            found.append(Coupling(quantity.name, readable_u, readable_u / blur, other))
+    return tuple(found)

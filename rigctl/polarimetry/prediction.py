@@ -47,7 +47,7 @@ def predict(train: Train, visits: Visits, var_w2: Mapping[str, Array]) -> Predic
     nominal = {q.name: train.quantities[q.name].value for q in bare.fitted}
     return Prediction(
         estimates=tuple(estimates(problem, bare.nominal, covariance(slopes), nominal)),
-        couplings=couplings(problem, slopes),
+        couplings=couplings(problem, bare.nominal, slopes),
         equivalents=symmetries(train, visits).sentences(),
         refusals=refusals(problem, bare.nominal),
     )
