@@ -192,6 +192,8 @@ class GcodeTwin:
         self._ok(at_s)
 
     def _home(self, at_s: float) -> None:
+        self._refuse_while_turning(at_s)
+        self._machine.abandon(at_s)
         ends_s = self._machine.home(at_s)
         self._is_homing, self._is_locked = True, False
         self._pending = Pending(lambda: ends_s, self._homed)
@@ -201,12 +203,15 @@ class GcodeTwin:
         self._ok(at_s)
 
     def _unlock(self, at_s: float) -> None:
-        if self._machine.is_turning(at_s):
-            raise LineError(NOT_IDLE)
+        self._refuse_while_turning(at_s)
         if self._is_locked:
             self._is_locked = False
             self._machine.abandon(at_s)
             self._answer("[MSG:Caution: Unlocked]", at_s)
+
+    def _refuse_while_turning(self, at_s: float) -> None:
+        if self._machine.is_turning(at_s):
+            raise LineError(NOT_IDLE)
 
     def _reset(self, now_s: float) -> None:
         """Forget all lines and moves; a reset while something turns loses the place."""
