@@ -1,7 +1,7 @@
 """Peers that misbehave on purpose, the same over a real socket and over the loopback, and a family to match.
 
 An act is what the peer does about one question: pieces of bytes, `HOLD` (what follows leaves only when more
-bytes arrive, or when the test lets it), `CLOSE`, `PAUSE`, or a complaint for the error queue.
+bytes arrive, or when the test lets it), `CLOSE`, `DEAF`, a pause, or a complaint for the error queue.
 """
 
 import contextlib
@@ -28,9 +28,10 @@ START = datetime(2026, 3, 1, 12, 0, tzinfo=UTC)
 class Deed(Enum):
     HOLD = "hold the rest back"
     CLOSE = "close the connection"
+    DEAF = "answer nothing from now on"
 
 
-HOLD, CLOSE = Deed.HOLD, Deed.CLOSE
+HOLD, CLOSE, DEAF = Deed.HOLD, Deed.CLOSE, Deed.DEAF
 
 
 @dataclass(frozen=True)
@@ -59,6 +60,7 @@ class ActingTwin:
         self._held: list[Piece] = []
         self._queue: deque[tuple[float, bytes | Deed]] = deque()
         self._ese = 0
+        self._is_deaf = False
 
     def receive(self, data: bytes, now_s: float) -> None:
         self.release(now_s)
@@ -78,15 +80,21 @@ class ActingTwin:
     def take(self, now_s: float) -> bytes:
         taken = b""
         while self._queue and self._queue[0][0] <= now_s:
-            _, piece = self._queue.popleft()
-            if isinstance(piece, Deed):
-                raise DisconnectedError("the twin closed the connection", address="twin", partial=taken)
-            taken += piece
+            _, piece = self._queue[0]
+            if isinstance(piece, bytes):
+                taken += piece
+            elif taken:
+                break
+            self._queue.popleft()
+            if not isinstance(piece, bytes):
+                raise DisconnectedError("the twin closed the connection", address="twin")
         return taken
 
     def _obey(self, line: bytes, now_s: float) -> None:
         if line:
             self.heard.append(line)
+        if self._is_deaf:
+            return
         if line.startswith(b"*ESE"):
             self._event_status_enable(line, now_s)
         elif line == b"SYST:ERR?":
@@ -110,7 +118,9 @@ class ActingTwin:
             if piece is HOLD:
                 self._held = list(act[index + 1 :])
                 return
-            if isinstance(piece, Pause):
+            if piece is DEAF:
+                self._is_deaf = True
+            elif isinstance(piece, Pause):
                 at_s += piece.s
             elif isinstance(piece, Complaint):
                 self.errors.append(piece)

@@ -1,8 +1,8 @@
 """A peer that does its worst, drawn at random: what a link returns is the answer to what was just asked.
 
 Every question carries a number of its own and the true answer echoes it, so a stale, torn or doubled reply
-can be told from the answer. The peer may delay, cut, double, truncate or swallow its replies; a copy follows its
-original at once.
+can be told from the answer. The peer may delay, cut, double, truncate or swallow its replies; a copy follows
+its original at once.
 """
 
 import itertools

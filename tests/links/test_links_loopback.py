@@ -1,9 +1,9 @@
 """The loopback in virtual time: reading moves the clock, and a late reply stays on the line."""
 
 import pytest
-from link_peers import ActingTwin, Pause, Wire, open_loopback_wire
+from link_peers import CLOSE, ActingTwin, Pause, Wire, open_loopback_wire
 
-from rigctl.errors import LinkTimeoutError, StopRequestedError
+from rigctl.errors import DisconnectedError, LinkTimeoutError, StopRequestedError
 from rigctl.links.loopback import LoopbackChannel
 from rigctl.timeline import VirtualTimeline
 
@@ -141,3 +141,21 @@ def test_the_same_exchanges_take_the_same_time_again() -> None:
             instants.append(wire.timeline.now())
 
     assert instants == [pytest.approx(0.8)] * 2
+
+
+def test_a_connection_that_ends_right_after_an_answer_leaves_no_step_to_trust(loopback_wire: Wire) -> None:
+    loopback_wire.twin.acts.append([b"1.5\n", CLOSE])
+
+    answer = loopback_wire.link.exchange(b"READ?\n")
+
+    assert answer == (b"1.5",)
+    assert not loopback_wire.link.is_in_step
+
+
+def test_an_interrupt_into_a_lost_connection_is_told(loopback_wire: Wire) -> None:
+    loopback_wire.twin.acts.append([CLOSE])
+    with pytest.raises(DisconnectedError):
+        loopback_wire.link.exchange(b"READ?\n")
+
+    with pytest.raises(DisconnectedError, match="has not been opened again"):
+        loopback_wire.link.interrupt(b"!")

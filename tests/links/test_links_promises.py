@@ -7,7 +7,7 @@ the machine can turn the late into the early.
 import time
 
 import pytest
-from link_peers import CLOSE, HOLD, Act, Complaint, Wire
+from link_peers import CLOSE, DEAF, HOLD, Act, Complaint, Wire
 
 from rigctl.errors import (
     DisconnectedError,
@@ -17,6 +17,7 @@ from rigctl.errors import (
     RefusedError,
     StopRequestedError,
 )
+from rigctl.links.link import LONGEST_DISCARDED_BYTES
 
 SHORT_S = 0.03
 
@@ -128,16 +129,25 @@ def test_unread_bytes_without_an_end_make_the_link_resync_too(ready: Wire) -> No
 
 
 def test_when_the_resync_fails_nothing_passes(ready: Wire) -> None:
-    ready.twin.acts.append([])
     ready.family.longest_s = SHORT_S
-    ready.twin.receive = lambda data, now_s: ready.twin.heard.append(data)  # type: ignore[method-assign] # deaf now
+    ready.twin.acts.append([b"1.2", DEAF])
 
     for _ in range(2):
         with pytest.raises(LinkTimeoutError):
             ready.link.exchange(b"READ?\n", timeout_s=SHORT_S)
 
     assert not ready.link.is_in_step
-    assert ready.twin.heard.count(b"READ?\n") == 1
+    assert ready.twin.heard.count(b"READ?") == 1
+
+
+def test_when_the_resync_fails_the_timeout_itself_is_told_with_its_bytes(ready: Wire) -> None:
+    ready.family.longest_s = SHORT_S
+    ready.twin.acts.append([b"1.2", DEAF])
+
+    with pytest.raises(LinkTimeoutError) as caught:
+        ready.link.exchange(b"READ?\n", timeout_s=SHORT_S)
+
+    assert caught.value.partial == b"1.2"
 
 
 def test_a_refused_question_is_told_with_the_instruments_own_words(ready: Wire) -> None:
@@ -193,7 +203,7 @@ def test_a_lost_connection_stays_lost_until_it_is_opened_again(ready: Wire) -> N
 
 
 def test_a_whole_answer_before_the_close_is_still_an_answer(ready: Wire) -> None:
-    ready.twin.acts.append([b"1.5\n", HOLD, CLOSE])
+    ready.twin.acts.append([b"1.5\n", CLOSE])
     answer = ready.link.exchange(b"READ?\n")
     with pytest.raises(DisconnectedError):
         echo(ready, "gone")
@@ -327,3 +337,43 @@ def test_a_closed_link_opens_again_at_its_next_use_and_resyncs(ready: Wire) -> N
 
     assert echo(ready, "again") == "again"
     assert ready.twin.heard[0].startswith(b"*ESE ")
+
+
+def test_what_was_said_unasked_or_too_late_can_be_looked_at_once(ready: Wire) -> None:
+    ready.twin.acts.append([b"1.5\n", HOLD, b"ALARM:1\n"])
+    ready.link.exchange(b"READ?\n")
+    ready.release()
+    echo(ready, "next")
+
+    assert b"ALARM:1" in ready.link.take_discarded()
+    assert ready.link.take_discarded() == b""
+
+
+def test_of_a_torrent_thrown_away_only_its_end_is_kept(ready: Wire) -> None:
+    ready.twin.acts.append([b"1.5\n", HOLD, b"x" * 50_000 + b"\nALARM:1\n"])
+    ready.link.exchange(b"READ?\n")
+    ready.release()
+    echo(ready, "next")
+
+    discarded = ready.link.take_discarded()
+
+    assert len(discarded) <= LONGEST_DISCARDED_BYTES
+    assert b"ALARM:1" in discarded
+
+
+def test_an_interrupt_is_sent_although_the_link_is_out_of_step(ready: Wire) -> None:
+    ready.link.mark_out_of_step()
+
+    ready.link.interrupt(b"!\n")
+
+    assert not ready.link.is_in_step
+    assert echo(ready, "next") == "next"
+    assert ready.twin.heard[0] == b"!"
+
+
+def test_an_interrupt_leaves_a_link_in_step_in_step(ready: Wire) -> None:
+    ready.link.interrupt(b"!\n")
+
+    echo(ready, "next")
+
+    assert ready.twin.heard == [b"!", b"ECHO? next"]

@@ -13,9 +13,10 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
-from link_peers import HOLD, Pause, Wire
+from link_peers import HOLD, NonceFamily, Pause, Wire
 
 from rigctl.errors import BusyError, DisconnectedError, LinkTimeoutError, PlanError, StopRequestedError
+from rigctl.links.link import Link
 from rigctl.links.tcp import TcpChannel
 from rigctl.timeline import WallTimeline
 
@@ -123,6 +124,7 @@ def test_a_closed_channel_leaves_its_address_to_the_next(channel: TcpChannel, wa
 
 HOLDER = """
 import sys, time
+from rigctl.links.link import Link
 from rigctl.links.tcp import TcpChannel
 from rigctl.timeline import WallTimeline
 channel = TcpChannel(sys.argv[1], WallTimeline())
@@ -333,3 +335,31 @@ def test_two_threads_on_one_link_get_each_their_own_answers(tcp_wire: Wire) -> N
         thread.join()
 
     assert wrong == []
+
+
+def test_an_interrupt_that_nobody_takes_leaves_the_link_out_of_step(
+    listener: socket.socket, wall: WallTimeline
+) -> None:
+    address = address_of(listener)
+    link = Link(address, lambda: TcpChannel(address, wall), NonceFamily(reply_timeout_s=0.05), wall)
+    with contextlib.closing(link):
+        link.open()
+        link.is_in_step = True
+
+        with pytest.raises(LinkTimeoutError):
+            link.interrupt(b"x" * 2**26)
+
+        assert not link.is_in_step
+
+
+def test_an_interrupt_into_a_reset_connection_loses_it(listener: socket.socket, wall: WallTimeline) -> None:
+    address = address_of(listener)
+    link = Link(address, lambda: TcpChannel(address, wall), NonceFamily(), wall)
+    link.open()
+    peer, _ = listener.accept()
+    peer.setsockopt(socket.SOL_SOCKET, socket.SO_LINGER, b"\1\0\0\0\0\0\0\0")
+    peer.close()
+
+    for words in ("closed the connection", "has not been opened again"):
+        with pytest.raises(DisconnectedError, match=words):
+            link.interrupt(b"x" * 2**26)
