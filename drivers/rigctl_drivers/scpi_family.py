@@ -18,6 +18,9 @@ MOST_STALE_LINES = 10_000
 MOST_COMPLAINTS = 50
 """Longer than the error queues of instruments, so that one which never empties cannot hold a run."""
 
+EMPTY_LINE = -102
+"""What a parser that knows no empty message calls one, though IEEE 488.2-1992 allows it; met in practice."""
+
 
 @dataclass(frozen=True, slots=True)
 class ScpiFamily:
@@ -82,7 +85,10 @@ def _tail(lines: list[bytes]) -> tuple[int, ...]:
 
 
 def _drain(channel: Channel, deadline_s: float) -> tuple[tuple[int, str], ...]:
-    """Empty the error queue. Query errors (-400 to -499) tell of the resync itself and are left out."""
+    """Empty the error queue; what the resync itself causes is left out.
+
+    That is query errors (-400 to -499), and the syntax error that the LF at its start is to some parsers.
+    """
     complaints: list[tuple[int, str]] = []
     for _ in range(MOST_COMPLAINTS):
         channel.write(f"{ERROR_QUERY}\n".encode(), deadline_s)
@@ -90,6 +96,6 @@ def _drain(channel: Channel, deadline_s: float) -> tuple[tuple[int, str], ...]:
         entry = parse_complaint(parse_text(line, address=channel.address), address=channel.address)
         if entry.code == 0:
             break
-        if not -499 <= entry.code <= -400:
+        if entry.code != EMPTY_LINE and not -499 <= entry.code <= -400:
             complaints.append((entry.code, entry.text))
     return tuple(complaints)

@@ -245,6 +245,7 @@ def test_a_search_for_the_zero_can_be_stopped_and_the_place_is_lost_then(transpo
         assert not mount.is_homed()
         with pytest.raises(MotionError, match="alarm 6: homing failed"):
             mount.angle_deg()
+        at.timeline.wait_until(at.timeline.now() + 1.0)  # it coasts after the reset
         assert at.wait_for(mount.begin_home()) == 0.0
 
 

@@ -94,9 +94,10 @@ def test_the_error_queue_is_emptied_into_the_complaints_oldest_first(scpi: Bench
     assert complaints == ((-113, "Undefined header"), (-222, "Data out of range"))
 
 
-def test_query_errors_tell_of_the_resync_itself_and_are_left_out(scpi: Bench) -> None:
+@pytest.mark.parametrize("own", [b'-410,"Query INTERRUPTED"\n', b'-440,"x"\n', b'-102,"Syntax error"\n'])
+def test_what_the_resync_itself_causes_is_left_out_of_the_complaints(scpi: Bench, own: bytes) -> None:
     expect_resync(scpi)
-    scpi.twin.expect(QUEUE, b'-410,"Query INTERRUPTED"\n')
+    scpi.twin.expect(QUEUE, own)
     scpi.twin.expect(QUEUE, b'-230,"Data corrupt or stale"\n')
     scpi.twin.expect(QUEUE, NO_ERROR)
 
