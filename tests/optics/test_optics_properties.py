@@ -176,7 +176,7 @@ def test_rows_keep_only_what_is_marked() -> None:
 
 
 def test_blocked_and_open_may_be_written_as_0_and_1() -> None:
-    visits = Visits({}, np.array([0, 1]), np.zeros(2))  # type: ignore[arg-type]  # what a file may hold
+    visits = Visits({}, np.array([0, 1]), np.zeros(2))
 
     assert visits.is_open.dtype == bool
     assert visits.has_dark
