@@ -67,11 +67,13 @@ class Axis:
 
     def home(self, now_s: float) -> float:
         """Seek the switch and count from there; return the instant at which the axis is homed."""
-        there = self.move(
-            max(now_s, self.dial.rests_from_s), self.lost_deg, _SEEK * self.make.speed_deg_per_s
-        )
         self.lost_deg = 0.0
-        return there + LOCATES_IN_S
+        starts_s = max(now_s, self.dial.rests_from_s)
+        make = self.make
+        there_s = self.dial.move(
+            starts_s, 0.0, speed=_SEEK * make.speed_deg_per_s, acceleration=make.acceleration_deg_per_s2
+        )
+        return there_s + LOCATES_IN_S
 
 
 @dataclass(frozen=True, slots=True)

@@ -84,6 +84,9 @@ class World:
 
     def pieces(self, begin_s: float, end_s: float) -> Iterator[tuple[float, float]]:
         """Cut a stretch of time into pieces short enough for a parabola through the light."""
+        if begin_s >= self.rests_from_s():
+            yield begin_s, end_s
+            return
         cuts = {knot for moving in self._moving for knot in moving.knots(begin_s, end_s)}
         here = begin_s
         for cut in [*sorted(cuts), end_s]:

@@ -1,4 +1,4 @@
-"""The simulated mount on its wire: acknowledgements, real-time bytes, sticky errors, alarms, homing, reset."""
+"""The simulated mount on its wire: acknowledgements, real-time bytes, sticky errors, alarms, homing."""
 
 import re
 
