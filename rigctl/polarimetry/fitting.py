@@ -112,7 +112,7 @@ def _search(problem: Problem, moves: Symmetries) -> tuple[Descent, tuple[str, ..
     points = _distinct(problem, moves, starts(problem))
     held = guarded(problem, points[0])
     scouts = [descend(held, z, most_steps=SCOUT_STEPS) for z in points]
-    hope = HOPELESS * min(scout.chi2 for scout in scouts)
+    hope = NEARLY_AS_WELL + HOPELESS * min(scout.chi2 for scout in scouts)
     walked = (descend(held, scout.z) for scout in scouts if scout.chi2 <= hope)
     found = sorted(walked, key=lambda descent: (_is_impossible(held, descent), descent.chi2))
     rivals = [d.z for d in found if d.chi2 < found[0].chi2 + NEARLY_AS_WELL and not _is_impossible(held, d)]

@@ -70,6 +70,18 @@ def test_a_half_wave_plate_without_noise_is_found_exactly(offset: float, waves: 
         assert found(result, name).value == pytest.approx(value, abs=1e-6), name
 
 
+@settings(deadline=None, max_examples=40)
+@given(offset=st.floats(-40.0, 40.0), waves=st.floats(0.06, 0.44))
+def test_a_plate_without_noise_is_found_exactly(offset: float, waves: float) -> None:
+    train, visits = plate_case(), sweep()
+    truth = {"part.dial offset": offset, "part.retardance": waves}
+
+    result = fit(train, visits, noiseless(train, visits, truth))
+
+    for name, value in truth.items():
+        assert found(result, name).value == pytest.approx(value, abs=1e-6), name
+
+
 @pytest.mark.parametrize("waves", [0.49, 0.51])
 @pytest.mark.parametrize("offset_deg", [-8.0, 5.0])
 def test_a_little_less_and_more_than_half_a_wave_are_told_apart(waves: float, offset_deg: float) -> None:
