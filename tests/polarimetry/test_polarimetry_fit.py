@@ -374,8 +374,8 @@ def test_a_fit_takes_less_than_a_glance(train: Train) -> None:
     levels = observe(train, visits, truth_of(train, rng), rng)
 
     for _ in range(5):
-        begin = time.perf_counter()
+        begin = time.process_time()
         fit(train, visits, levels)
-        spans.append(time.perf_counter() - begin)
+        spans.append(time.process_time() - begin)
 
     assert min(spans) < 0.05
