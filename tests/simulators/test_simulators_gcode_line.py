@@ -1,7 +1,7 @@
 """Lines of G-code taken apart: words, modal groups, and the numbers of their errors."""
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigctl_sim.gcode_line import Block, LineError, Modes, parse_line
@@ -67,11 +67,13 @@ def test_each_mistake_has_its_number(line: str, number: int) -> None:
     assert number_of(line) == number
 
 
+@settings(deadline=None)
 @given(st.text(alphabet="GAFPNX0149.-+ ();=", max_size=24))
 def test_no_line_is_too_strange(line: str) -> None:
     assert 0 <= number_of(line) <= 36
 
 
+@settings(deadline=None)
 @given(st.floats(-3600, 3600).map(lambda value: round(value, 3)))
 def test_every_angle_that_a_driver_writes_is_read_back(angle_deg: float) -> None:
     assert parse_line(f"G0 A{angle_deg:.3f}", "A").axes == {"A": angle_deg}

@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from itertools import pairwise
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigctl_sim.head import HeadBesideBeam, HeadInBeam
@@ -173,6 +173,7 @@ def test_drift_is_the_same_whether_something_moved_lately_or_not() -> None:
     assert means[0] == pytest.approx(means[1], rel=1e-7)
 
 
+@settings(deadline=None)
 @given(begin=st.floats(0.0, 5.0), reading=st.floats(1e-3, 1.0), target=st.floats(-180.0, 180.0))
 def test_what_is_shown_never_leaves_the_span_of_the_light(
     begin: float, reading: float, target: float

@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.integrate import solve_ivp
 
@@ -42,6 +42,7 @@ def test_a_ramp_from_rest_has_its_closed_form() -> None:
     assert energy == pytest.approx(duration + late, abs=1e-14)
 
 
+@settings(deadline=None)
 @given(shown=powers, begin=powers, middle=powers, end=powers, duration=st.floats(1e-3, 1.0))
 def test_a_parabola_agrees_with_an_integration_step_by_step(
     shown: float, begin: float, middle: float, end: float, duration: float
@@ -61,6 +62,7 @@ def test_a_parabola_agrees_with_an_integration_step_by_step(
     assert expected == pytest.approx((solved.y[0, -1], solved.y[1, -1]), abs=1e-8)
 
 
+@settings(deadline=None)
 @given(shown=powers, begin=powers, middle=powers, end=powers)
 def test_two_halves_give_what_the_whole_gives(shown: float, begin: float, middle: float, end: float) -> None:
     def light(part: float) -> float:
@@ -82,6 +84,7 @@ def test_without_a_lag_the_light_itself_is_shown() -> None:
     assert energy == pytest.approx(1.0)
 
 
+@settings(deadline=None)
 @given(shown=powers, level=powers, duration=st.floats(1e-4, 10.0))
 def test_what_is_shown_lies_between_the_old_level_and_the_new(
     shown: float, level: float, duration: float

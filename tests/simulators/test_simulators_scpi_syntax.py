@@ -4,7 +4,7 @@ import itertools
 import re
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigctl_sim.scpi.complaint import Complaint
@@ -89,6 +89,7 @@ def test_nothing_between_the_short_and_the_long_form_is_understood(header: str) 
     assert complaints(header) == [-113]
 
 
+@settings(deadline=None)
 @given(length=st.integers(1, 8))
 def test_only_whole_forms_of_a_word_are_understood(length: int) -> None:
     word = "INITIATE"[:length]
@@ -348,6 +349,7 @@ def test_many_different_messages_do_not_pile_up() -> None:
     assert len(kept._kept) <= Grammar._MOST_KEPT
 
 
+@settings(deadline=None)
 @given(st.binary(max_size=60))
 def test_no_message_is_too_strange(message: bytes) -> None:
     units = grammar().parse(message.replace(b"\n", b" "))
@@ -355,6 +357,7 @@ def test_no_message_is_too_strange(message: bytes) -> None:
     assert all(isinstance(unit, Unit) for unit in units)
 
 
+@settings(deadline=None)
 @given(st.text(alphabet="SENPOWRAG:;?*#()@\"', 019.E", max_size=40))
 def test_no_message_of_the_right_letters_is_too_strange(text: str) -> None:
     units = grammar().parse(text.encode())

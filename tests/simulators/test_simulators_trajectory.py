@@ -3,7 +3,7 @@
 import math
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigctl.interfaces import StageCapabilities
@@ -81,6 +81,7 @@ def test_moves_follow_one_another_without_a_jump() -> None:
     assert trajectory(trajectory.rests_from_s) == -30.0
 
 
+@settings(deadline=None)
 @given(distance=distances, speed=rates, acceleration=rates)
 def test_the_duration_is_what_a_driver_expects_of_such_a_mount(
     distance: float, speed: float, acceleration: float
@@ -93,6 +94,7 @@ def test_the_duration_is_what_a_driver_expects_of_such_a_mount(
     assert ended_s == pytest.approx(able.travel_time_s(distance), rel=1e-9)
 
 
+@settings(deadline=None)
 @given(distance=distances, speed=rates, acceleration=rates, part=st.floats(0.0, 1.0))
 def test_place_and_speed_are_continuous_and_bounded(
     distance: float, speed: float, acceleration: float, part: float
@@ -108,6 +110,7 @@ def test_place_and_speed_are_continuous_and_bounded(
         assert abs(jump) <= 3e-12 * knot * speed + 1e-9 * abs(distance)
 
 
+@settings(deadline=None)
 @given(distance=distances, part=st.floats(0.0, 1.0))
 def test_a_move_is_the_same_backwards_in_time(distance: float, part: float) -> None:
     trajectory = moved(distance)
