@@ -139,13 +139,14 @@ def test_a_coarse_mount_arrives_within_its_own_resolution(gcode: Bench) -> None:
     assert begun.poll() == 45.0
 
 
-def test_a_mount_that_rests_elsewhere_twice_has_stalled(gcode: Bench) -> None:
+@pytest.mark.parametrize("stands", ["12.500", "45.002", "44.998", "405.000"])
+def test_a_mount_that_rests_elsewhere_twice_has_stalled(gcode: Bench, stands: str) -> None:
     begun = begin(gcode, make_mount(gcode), 45.0, b"G90 G53 G0 A45.000\n")
-    gcode.twin.expect(b"?", report("Idle", "12.500"))
-    gcode.twin.expect(b"?", report("Idle", "12.500"))
+    gcode.twin.expect(b"?", report("Idle", stands))
+    gcode.twin.expect(b"?", report("Idle", stands))
 
     assert begun.poll() is None
-    with pytest.raises(MotionError, match=r"stands at 12\.500 deg instead of 45\.000 deg"):
+    with pytest.raises(MotionError, match=f"stands at {stands} deg instead of 45.000 deg"):
         begun.poll()
 
 
@@ -202,6 +203,19 @@ def test_an_alarm_whose_number_stands_in_the_state_is_told_by_it(gcode: Bench) -
 
     with pytest.raises(MotionError, match="alarm 9: homing failed"):
         make_mount(gcode).angle_deg()
+
+
+def test_an_alarm_that_has_passed_does_not_give_its_number_to_the_next(gcode: Bench) -> None:
+    mount = make_mount(gcode)
+    gcode.twin.expect(b"?", report("Alarm:3"))
+    gcode.twin.expect(b"?", report("Idle"))
+    gcode.twin.expect(b"?", report("Alarm"))
+    with pytest.raises(MotionError, match="alarm 3"):
+        mount.angle_deg()
+    mount.angle_deg()
+
+    with pytest.raises(MotionError, match="an alarm whose number it does not tell"):
+        mount.angle_deg()
 
 
 def test_an_alarm_in_place_of_the_acknowledgement_is_told_and_the_link_resyncs(gcode: Bench) -> None:
@@ -341,6 +355,7 @@ def test_homing_is_polled_by_resyncs_until_its_acknowledgement_is_past(gcode: Be
     mount = make_mount(gcode, homing=AT_START)
     gcode.twin.expect(b"$H\n", OK, after_s=2.5)
     begun = mount.begin_home()
+    assert not gcode.link.is_in_step
     gcode.timeline.wait_until(begun.due_s)
     gcode.twin.expect(b"?", report("Home"))
     assert begun.poll() is None
@@ -456,6 +471,24 @@ def test_stop_resets_a_controller_that_does_not_answer_the_hold(gcode: Bench) ->
     make_mount(gcode).stop()
 
     assert gcode.twin.heard[2] == b"\x18"
+
+
+def test_a_controller_that_had_to_be_reset_lost_its_place_even_if_it_does_not_say_so(gcode: Bench) -> None:
+    mount = make_mount(gcode, homing=AT_START)
+    gcode.twin.expect(b"$H\n", OK)
+    begun = mount.begin_home()
+    for data, answer in ((b"?", report("Idle")), (b"\n", OK), (b"?", report("Idle")), (b"?", report("Idle"))):
+        gcode.twin.expect(data, answer)
+    assert begun.poll() == 0.0
+    gcode.twin.expect(b"!")
+    for data, answer in ((b"?", b""), (b"?", b""), (b"\x18", GREETING), (b"?", report("Idle")), (b"\n", OK)):
+        gcode.twin.expect(data, answer)
+    for _ in range(3):
+        gcode.twin.expect(b"?", report("Idle"))
+
+    mount.stop()
+
+    assert not mount.is_homed()
 
 
 def test_a_mount_that_does_not_stop_is_told(gcode: Bench) -> None:

@@ -119,6 +119,7 @@ def test_no_noise_breaks_a_parser(noise: bytes) -> None:
         b"<Idle|MPos:0.000",
         b"<Idle|MPos:0.0<Idle|MPos:0.000>",
         b"<Idle|MPos:1.0>ok",
+        b"<Idle|FS:0<Run|MPos:45.000>",  # a torn report that the next one ran into
     ],
 )
 def test_a_report_without_one_sound_position_is_refused(line: bytes) -> None:

@@ -123,6 +123,7 @@ def test_another_wavelength_read_back_is_refused_with_both_values(scpi: Bench, a
     [
         (1.5e-3, b"0.002", 2e-3),
         (2e-3, b"0.002", 2e-3),
+        (2e-3 * (1 + 1e-9), b"0.002", 2e-3),  # a range that went through arithmetic is still itself
         (2.001e-3, b"0.02", 2e-2),
         (0.0, b"2E-06", 2e-6),
         (2e-5, b"2E-05", 2e-5),

@@ -153,7 +153,9 @@ def test_an_overload_is_no_number_of_a_setting() -> None:
         parse_number("9.9E37", address=ADDRESS)
 
 
-@pytest.mark.parametrize(("text", "unit_m"), [("785.2", 1e-9), ("7.852E-07", 1.0), ("1.55E+03", 1e-9)])
+@pytest.mark.parametrize(
+    ("text", "unit_m"), [("785.2", 1e-9), ("7.852E-07", 1.0), ("1.06E-05", 1.0), ("1.55E+03", 1e-9)]
+)
 def test_a_wavelength_above_a_thousandth_can_only_be_in_nm(text: str, unit_m: float) -> None:
     assert parse_length_unit_m(text, address=ADDRESS) == unit_m
 
