@@ -57,7 +57,8 @@ def _fit(run: Any, code: int) -> tuple[Any, int]:
     try:
         return fit_run(run), code
     except UndecidedError as error:
-        complain(f"no fit: {error}")
+        if code == 0:
+            complain(f"no fit: {error}")
         return None, code or error.exit_code
     except PolrigError as error:
         complain(f"no fit: {error}")

@@ -35,7 +35,9 @@ def command(
     from rigctl.timeline import StopRequest
 
     loaded = load(recipe, rig)
-    has_shutter = any(loaded.recipe.roles[role].kind == "shutter" for role in filled_roles(loaded.recipe, loaded.rig))
+    has_shutter = any(
+        loaded.recipe.roles[role].kind == "shutter" for role in filled_roles(loaded.recipe, loaded.rig)
+    )
     if is_dark_by_hand(loaded.recipe, has_shutter) and not is_somebody_there():
         raise PlanError(
             "its darks are taken by hand, and nobody can be asked: this is no terminal",

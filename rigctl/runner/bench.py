@@ -29,6 +29,8 @@ class OpenBench:
     meters: dict[str, PowerMeter] = field(default_factory=dict)
     shutter: Shutter | None = None
     shutter_role: str = ""
+    has_let_light_in: bool = False
+    """Whether this run ever told the shutter to open."""
     links: dict[str, Link] = field(default_factory=dict)
 
     def instruments(self) -> Iterator[tuple[str, Instrument]]:
@@ -58,7 +60,9 @@ def filled_roles(recipe: Recipe, rig: Rig) -> Mapping[str, InstrumentEntry]:
     return {role: entry for role, entry in found.items() if entry is not None}
 
 
-def declared_capabilities(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Mapping[str, Capabilities]:
+def declared_capabilities(
+    recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]
+) -> Mapping[str, Capabilities]:
     """Return what the instrument in each filled role can do, from the rig file alone."""
     entries = filled_roles(recipe, rig)
     return {role: drivers[entry.driver].capabilities(entry.options) for role, entry in entries.items()}

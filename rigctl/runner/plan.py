@@ -77,7 +77,9 @@ def duration_s(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> floa
     slowest_s = max((tau for meter in meters for tau in meter.time_constant_s), default=0.0)
     total = sum(_step_duration_s(step, recipe, stages, slowest_s=slowest_s) for step in recipe.steps)
     if recipe.dark is not None:
-        one = DARK_DWELLS * recipe.dwell.time_s + 2 * 9.21 * slowest_s + 2 * sum(c.moves_in_s for c in shutters)
+        one = (
+            DARK_DWELLS * recipe.dwell.time_s + 2 * 9.21 * slowest_s + 2 * sum(c.moves_in_s for c in shutters)
+        )
         total += (recipe.dark.before + recipe.dark.after) * one
     return total
 

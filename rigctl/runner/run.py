@@ -29,7 +29,7 @@ from rigctl.runner.polling import complete
 from rigctl.runner.progress import Level, Progress
 from rigctl.runner.prospect import expected_peak_w
 from rigctl.runner.safe import SafeStep, is_beam_blocked, make_safe
-from rigctl.runner.visiting import Record, Visiting, is_overloaded
+from rigctl.runner.visiting import Visiting, is_overloaded
 from rigctl.timeline import Timeline
 
 ATTEMPTS = 3
@@ -108,6 +108,7 @@ class _Run:
     def outcome(self) -> Outcome:
         """Measure, and make safe whatever happened."""
         safe_steps: tuple[SafeStep, ...] = ()
+        is_lit = False
         with ExitStack() as stack:
             try:
                 bench = stack.enter_context(self._opened())
@@ -117,12 +118,13 @@ class _Run:
                 finally:
                     self.job.progress.phase("making safe")
                     safe_steps = make_safe(bench, self.timeline)
+                    is_lit = bench.has_let_light_in and not is_beam_blocked(safe_steps)
             except PolrigError as error:
                 ending = _ended_by(error)
             except Exception as error:  # noqa: BLE001  # a bug: shown with its traceback once the file is closed
                 ending = Outcome("failed", 70, f"{type(error).__name__}: {error}", bug=error)
         self._tell_safe(safe_steps)
-        code = ending.exit_code if is_beam_blocked(safe_steps) else NotSafeError.exit_code
+        code = NotSafeError.exit_code if is_lit else ending.exit_code
         return Outcome(ending.status, code, ending.why, safe_steps, ending.bug)
 
     def _opened(self) -> AbstractContextManager[OpenBench]:
@@ -234,7 +236,9 @@ class _Run:
                 if step.is_confirmed:
                     self._event(f"'{step.role}' {step.wanted}", "info")
                 else:
-                    self._event(f"'{step.role}' could not be confirmed {step.wanted}: {step.trouble}", "error")
+                    self._event(
+                        f"'{step.role}' could not be confirmed {step.wanted}: {step.trouble}", "error"
+                    )
             except RecordError:
                 continue
 

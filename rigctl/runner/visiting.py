@@ -38,7 +38,11 @@ class Visiting:
 
     def raise_range(self, role: str) -> bool:
         """Go to a meter's next larger range; False when it is on its largest."""
-        larger = [full for full in self.bench.meters[role].capabilities.ranges_w if full > self._ranges_w[role] * 1.01]
+        larger = [
+            full
+            for full in self.bench.meters[role].capabilities.ranges_w
+            if full > self._ranges_w[role] * 1.01
+        ]
         if larger:
             self.use_range(role, larger[0])
         return bool(larger)
@@ -74,7 +78,9 @@ class Visiting:
             began_s = self.timeline.now()
             detectors = {role: dwell_record(dwell) for role, dwell in self._dwell().items()}
             times = {"t_begin": began_s, "t_end": self.timeline.now()}
-            records.append({"kind": "dark", "step": step, "when": when, "how": how, **times, "detectors": detectors})
+            records.append(
+                {"kind": "dark", "step": step, "when": when, "how": how, **times, "detectors": detectors}
+            )
         return records
 
     def open_beam(self) -> None:
@@ -87,6 +93,7 @@ class Visiting:
     def set_shutter(self, *, is_open: bool) -> None:
         """Open or close the shutter, where there is one."""
         if self.bench.shutter is not None:
+            self.bench.has_let_light_in |= is_open
             complete(self.timeline, {self.bench.shutter_role: self.bench.shutter.begin_set(is_open)})
 
     def _block(self) -> str:
@@ -131,8 +138,11 @@ class Visiting:
         slowest = 0.0
         for role, meter in self.bench.meters.items():
             able = meter.capabilities
-            on_range = [tau for full, tau in zip(able.ranges_w, able.time_constant_s, strict=True)
-                        if full >= self._ranges_w[role] * 0.99]
+            on_range = [
+                tau
+                for full, tau in zip(able.ranges_w, able.time_constant_s, strict=True)
+                if full >= self._ranges_w[role] * 0.99
+            ]
             slowest = max(slowest, on_range[0])
         return slowest
 
