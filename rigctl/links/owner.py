@@ -1,9 +1,10 @@
 """One owner for each address, on this computer.
 
-It owns the lock files. They are advisory: they keep polrig from polrig, not from other programs. The kernel
-lets go of a dead owner's lock, so a file that was left behind never refuses anybody.
+It owns the lock files. They are advisory: they keep polrig from polrig, not from other programs. An owner
+takes its file away; one that died leaves it, but the kernel has let go of its lock, so it refuses nobody.
 """
 
+import contextlib
 import fcntl
 import os
 import tempfile
@@ -20,19 +21,15 @@ class Ownership:
 
     def __init__(self, address: str, *, place: str) -> None:
         name = "".join(c if c.isalnum() else "-" for c in place)
-        path = Path(tempfile.gettempdir()) / f"polrig-{name}.lock"
+        self._path = Path(tempfile.gettempdir()) / f"polrig-{name}.lock"
         try:
-            self._fd = _open_for_all(path)
+            self._fd = _locked(self._path)
+        except BlockingIOError as error:
+            what, do = f"process {_owner_of(self._path)} is using it", "let that run end, or stop it"
+            raise BusyError(what, address=address, do=f"{do}; the lock is {self._path}") from error
         except OSError as error:
-            what, do = f"its lock cannot be opened ({error.strerror})", f"see who may write {path}"
+            what, do = f"its lock cannot be opened ({error.strerror})", f"see who may write {self._path}"
             raise BusyError(what, address=address, do=do) from error
-        try:
-            fcntl.flock(self._fd, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError as error:
-            owner = os.pread(self._fd, 20, 0).decode("ascii", "replace").strip()
-            self.close()
-            what, do = f"process {owner or '?'} is using it", "let that run end, or stop it"
-            raise BusyError(what, address=address, do=f"{do}; the lock is {path}") from error
         os.ftruncate(self._fd, 0)
         os.pwrite(self._fd, f"{os.getpid()}\n".encode(), 0)
 
@@ -40,7 +37,32 @@ class Ownership:
         """Let go; a second call does nothing."""
         fd, self._fd = self._fd, -1
         if fd >= 0:
+            with contextlib.suppress(OSError):  # somebody else's file in a shared directory stays
+                self._path.unlink()
             os.close(fd)
+
+
+def _locked(path: Path) -> int:
+    """Open and lock a lock file; `BlockingIOError` while somebody has it."""
+    while True:
+        fd = _open_for_all(path)
+        try:
+            fcntl.flock(fd, fcntl.LOCK_EX | fcntl.LOCK_NB)
+            if os.path.samestat(os.fstat(fd), os.stat(path)):
+                return fd
+        except FileNotFoundError:
+            pass  # its owner took it away in between, and with it the lock's meaning: once more
+        except OSError:
+            os.close(fd)
+            raise
+        os.close(fd)
+
+
+def _owner_of(path: Path) -> str:
+    try:
+        return path.read_text("ascii", "replace").strip() or "?"
+    except OSError:  # it has just let go
+        return "?"
 
 
 def _open_for_all(path: Path) -> int:

@@ -1,7 +1,10 @@
 """Lock files: who may open them, what a stale one does, and what an unusable one says."""
 
+import contextlib
+import fcntl
 import os
 import tempfile
+import threading
 from pathlib import Path
 
 import pytest
@@ -17,17 +20,31 @@ def lock_file(directory: Path) -> Path:
     return found
 
 
+def left_behind(directory: Path) -> Path:
+    """Where the lock file of a dead owner would lie."""
+    held = Ownership("a", place=PLACE)
+    path = lock_file(directory)
+    held.close()
+    return path
+
+
 def test_the_lock_names_its_owner_and_anybody_may_take_it_over(own_lock_files: Path) -> None:
-    Ownership("tcp://meter:5025", place=PLACE).close()
+    held = Ownership("tcp://meter:5025", place=PLACE)
 
     lock = lock_file(own_lock_files)
     assert lock.read_text() == f"{os.getpid()}\n"
     assert lock.stat().st_mode & 0o777 == 0o666
+    held.close()
+
+
+def test_an_owner_takes_its_lock_file_away(own_lock_files: Path) -> None:
+    Ownership("a", place=PLACE).close()
+
+    assert list(own_lock_files.glob("polrig-*")) == []
 
 
 def test_a_lock_file_whose_owner_is_dead_is_taken_over(own_lock_files: Path) -> None:
-    Ownership("tcp://meter:5025", place=PLACE).close()
-    lock_file(own_lock_files).write_text("999999999999\n")
+    left_behind(own_lock_files).write_text("999999999999\n")
 
     held = Ownership("tcp://meter:5025", place=PLACE)
 
@@ -49,9 +66,9 @@ def test_a_second_hold_says_who_has_it_and_where_the_lock_is(own_lock_files: Pat
     with pytest.raises(BusyError) as caught:
         Ownership("tcp://meter:5025", place=PLACE)
 
-    first.close()
     assert f"process {os.getpid()}" in str(caught.value)
     assert str(lock_file(own_lock_files)) in str(caught.value)
+    first.close()
 
 
 def test_a_hold_can_be_let_go_twice_and_taken_again() -> None:
@@ -63,9 +80,7 @@ def test_a_hold_can_be_let_go_twice_and_taken_again() -> None:
 
 
 def test_a_symbolic_link_is_not_followed(own_lock_files: Path) -> None:
-    Ownership("a", place=PLACE).close()
-    lock = lock_file(own_lock_files)
-    lock.unlink()
+    lock = left_behind(own_lock_files)
     target = own_lock_files / "precious"
     target.write_text("keep me")
     lock.symlink_to(target)
@@ -74,6 +89,47 @@ def test_a_symbolic_link_is_not_followed(own_lock_files: Path) -> None:
         Ownership("a", place=PLACE)
 
     assert target.read_text() == "keep me"
+
+
+def test_a_lock_on_a_file_that_was_just_taken_away_does_not_count(
+    own_lock_files: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    first = Ownership("a", place=PLACE)
+    flock, times = fcntl.flock, iter([True])
+
+    def lock_after_the_owner_left(fd: int, operation: int) -> None:
+        if next(times, False):
+            first.close()
+        flock(fd, operation)
+
+    monkeypatch.setattr(fcntl, "flock", lock_after_the_owner_left)
+    second = Ownership("a", place=PLACE)
+
+    with pytest.raises(BusyError):
+        Ownership("a", place=PLACE)
+    assert lock_file(own_lock_files).read_text() == f"{os.getpid()}\n"
+    second.close()
+
+
+def test_of_many_that_want_one_address_at_once_one_at_a_time_has_it() -> None:
+    inside, most = [0], [0]
+
+    def take_and_leave() -> None:
+        for _ in range(200):
+            with contextlib.suppress(BusyError):
+                held = Ownership("a", place=PLACE)
+                inside[0] += 1
+                most[0] = max(most[0], inside[0])
+                inside[0] -= 1
+                held.close()
+
+    threads = [threading.Thread(target=take_and_leave) for _ in range(4)]
+    for thread in threads:
+        thread.start()
+    for thread in threads:
+        thread.join()
+
+    assert most == [1]
 
 
 def test_a_directory_that_cannot_be_used_is_told(
