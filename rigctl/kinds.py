@@ -72,7 +72,6 @@ KINDS: Mapping[str, Kind] = {
             "length", {"m": 1.0, "mm": 1e-3, **_LENGTHS}, ("nm", "um", "mm", "m"), "785.2 nm", sign="positive"
         ),
         Kind("drift", _DRIFTS, ("%/h",), "0.5 %/h"),
-        Kind("frequency", {"Hz": 1.0, "kHz": 1e3}, ("Hz", "kHz"), "50 Hz", sign="positive"),
         Kind("angular speed", _SPEEDS, ("deg/s",), "20 deg/s", sign="positive"),
         Kind("angular acceleration", _ACCELERATIONS, ("deg/s2",), "100 deg/s2", sign="positive"),
         Kind("count", {"readings": 1.0, "reading": 1.0}, (), "4 readings", needs_unit=False),

@@ -81,9 +81,7 @@ def parse_measured(text: str, kind: str, *, wavelength_m: float | None = None) -
     value = _value(written, row, wavelength_m)
     u = _tolerance(tolerance, row, wavelength_m, value=value, unit=written.unit) / factor
     if not u > 0 or not math.isfinite(u):
-        raise _wrong(
-            f"the uncertainty in '{text}' is not positive", row, "a positive one; leave it out if exact"
-        )
+        raise _wrong(f"the uncertainty in '{text}' is not positive", row, "one above zero, or none if exact")
     return Measured(value, u)
 
 

@@ -56,7 +56,7 @@ def _steps(length: float, step: float, *, what: str) -> int:
     written = format_quantity(step, "angle")
     if not step > 0:
         raise wrong(f"a step of {written} leads nowhere", expected="a step above zero", key="step")
-    if length / step > MOST_ANGLES:
+    if length / step > MOST_ANGLES + 0.5:
         what = f"steps of {written} make more than {MOST_ANGLES} angles"
         raise wrong(what, expected="larger steps", key="step")
     count = round(length / step)

@@ -5,6 +5,7 @@ It owns the gathering, its bound and the search for the nearest valid word; it k
 
 import difflib
 from collections.abc import Iterable
+from itertools import islice
 from typing import NoReturn
 
 from rigctl.errors import FileError, Mistake
@@ -14,12 +15,16 @@ MOST = 50
 """Mistakes told of one file; who has more has another problem, and no file may keep us busy for long."""
 LONGEST_SHOWN = 60
 """Characters of a text that a message quotes."""
+MOST_NAMED = 12
+"""Words that a message offers."""
+MOST_COMPARED = 1000
+"""Words among which the nearest is sought."""
 STOPPED = "The rest of the file was not looked at: mend this first."
 
 
 def nearest_word(word: str, words: Iterable[str]) -> str:
     """Return the valid word most like a wrong one; empty where none is."""
-    by_folded = {valid.casefold(): valid for valid in words}
+    by_folded = {valid.casefold(): valid for valid in islice(words, MOST_COMPARED)}
     found = difflib.get_close_matches(word[:LONGEST_SHOWN].casefold(), by_folded, n=1)
     return by_folded[found[0]] if found else ""
 
@@ -33,6 +38,8 @@ def quoted(text: object) -> str:
 def either(words: Iterable[str]) -> str:
     """Write a choice: `a, b or c`."""
     *others, last = words
+    if len(others) >= MOST_NAMED:
+        return f"{', '.join(others[:MOST_NAMED])} and {len(others) + 1 - MOST_NAMED} more"
     return f"{', '.join(others)} or {last}" if others else last
 
 

@@ -3,7 +3,7 @@
 It owns the checks between elements and of elements against roles; it passes over what is missing.
 """
 
-from collections.abc import Iterator
+from collections.abc import Collection, Iterator
 
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.part import Part
@@ -30,10 +30,10 @@ def check_optics(optics: Part, roles: Roles) -> None:
     _check_end(optics, elements)
 
 
-def mounts_of(optics: Part) -> tuple[str, ...]:
+def mounts_of(optics: Part) -> Collection[str]:
     """Return every role that turns an element, in the order of the light."""
     mounts = (part.at("turned by").text for _, part in _elements(optics))
-    return tuple(dict.fromkeys(mount for mount in mounts if mount is not None))
+    return dict.fromkeys(mount for mount in mounts if mount is not None)
 
 
 def _elements(optics: Part) -> Iterator[tuple[str, Part]]:
@@ -90,7 +90,7 @@ def _check_mount(part: Part, roles: Roles) -> None:
     if part.at("dial offset").is_there:
         what = "an element that no mount turns has no dial offset"
         part.at("dial offset").wrong_key(what, expected="'turned by', or 'axis' instead")
-    if not part.at("axis").is_there and part.items():
+    if part.items() and not part.at("axis").is_there and not part.has_slip_for("axis", "turned by"):
         part.missing("an element that no mount turns needs its 'axis'", expected="a key such as axis: 0 deg")
 
 

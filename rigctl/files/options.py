@@ -24,7 +24,7 @@ def read_options(
 
     `others` are keys that are read elsewhere; `whose` says in a message who knows the keys.
     """
-    known = (*table, *others)
+    known = dict.fromkeys((*table, *others))
     for key, value in part.items().items():
         if key not in known:
             near = nearest_word(key, known)

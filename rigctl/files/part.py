@@ -6,7 +6,7 @@ It owns the lenient look: what is not there, or is of another shape, is an empty
 from dataclasses import dataclass
 
 from rigctl.files.document import Document
-from rigctl.files.mistakes import Mistakes
+from rigctl.files.mistakes import Mistakes, nearest_word
 from rigctl.files.nodes import Data
 from rigctl.files.places import Keys, Places
 
@@ -58,6 +58,10 @@ class Part:
     def words(self) -> list["Part"]:
         """Return the entries of a list, or the text alone as its only entry."""
         return [self] if self.text is not None else self.entries()
+
+    def has_slip_for(self, *keys: str) -> bool:
+        """Whether some key of a mapping is most likely one of these, mistyped, and told as such."""
+        return any(key not in keys and nearest_word(key, keys) for key in self.items())
 
     def wrong(self, what: str, *, expected: str = "", nearest: str = "") -> None:
         """Note a mistake at the value."""

@@ -1,7 +1,7 @@
 """What a recipe says, as checked values.
 
 It owns the nouns that the runner, the bench and the fit read; it reads no file and checks nothing.
-`rigctl.files.reading` makes them.
+`rigctl.files.recipe_reading` makes them.
 """
 
 from collections.abc import Mapping
@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from typing import Literal
 
 from rigctl.files.places import Places
+from rigctl.interfaces import RoleKind
 from rigctl.quantities import Measured
 
 ElementKind = Literal["polarizer", "retarder", "detector"]
@@ -22,7 +23,7 @@ BY_HAND = "hand"
 class Role:
     """What must stand on the bench for a name of the recipe; an optional one may be left out."""
 
-    kind: str
+    kind: RoleKind
     is_optional: bool = False
 
 

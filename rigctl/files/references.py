@@ -8,7 +8,7 @@ from collections.abc import Collection
 
 from rigctl.files.document import Document
 from rigctl.files.leaves import LABEL, is_label
-from rigctl.files.mistakes import Mistakes, nearest_word, quoted
+from rigctl.files.mistakes import Mistakes, quoted
 from rigctl.files.optics_references import check_optics, mounts_of
 from rigctl.files.part import Part
 from rigctl.files.recipe import BY_HAND
@@ -43,16 +43,11 @@ def _check_steps(recipe: Part) -> None:
     sweep, steps = recipe.at("sweep"), recipe.at("steps")
     if sweep.is_there and steps.is_there:
         steps.wrong_key("'sweep' and 'steps' exclude each other", expected="one of them")
-    elif not sweep.is_there and not steps.is_there and not _is_meant(recipe, ("sweep", "steps")):
+    elif not sweep.is_there and not steps.is_there and not recipe.has_slip_for("sweep", "steps"):
         recipe.missing("nothing is swept", expected="a key 'sweep', or 'steps'")
     seen: dict[str, str] = {}
     for step in steps.entries():
         _check_step_name(step.at("name"), seen)
-
-
-def _is_meant(recipe: Part, keys: tuple[str, ...]) -> bool:
-    """Whether some key is a slip for one of these, and told as such."""
-    return any(nearest_word(key, keys) for key in recipe.items())
 
 
 def _check_step_name(part: Part, seen: dict[str, str]) -> None:

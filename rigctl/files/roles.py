@@ -3,12 +3,12 @@
 It owns the check of one mention of a role; who mentions roles is the business of others.
 """
 
-from collections.abc import Collection
+from collections.abc import Callable, Collection
 from dataclasses import dataclass, field
 from typing import get_args
 
 from rigctl.files.leaves import LABEL, is_label
-from rigctl.files.mistakes import nearest_word, quoted
+from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.part import Part
 from rigctl.files.recipe import BY_HAND
 from rigctl.interfaces import RoleKind
@@ -40,12 +40,8 @@ class Roles:
         complain = part.wrong if name is None else part.wrong_key
         if wanted is None or not isinstance(self.part.value, dict):
             return None
-        names = self.part.items()
-        if wanted not in names:
-            near = nearest_word(wanted, [n for n in names if self.kind(n) == kind]) or nearest_word(
-                wanted, names
-            )
-            complain(f"no role is called {quoted(wanted)}", expected=self._declared(kind), nearest=near)
+        if wanted not in self.part.value:
+            self._complain_of_unknown(wanted, kind, complain)
             return None
         self.used.add(wanted)
         found = self.kind(wanted)
@@ -74,9 +70,15 @@ class Roles:
                 what = f"the role {quoted(name)} is a {self.kind(name)} that nothing in the recipe uses"
                 part.wrong_key(what, expected="a detector or an element that names it")
 
-    def _declared(self, kind: str) -> str:
-        names = [quoted(name) for name in self.part.items() if self.kind(name) == kind]
-        return f"a role that is a {kind}" + (f", here {' or '.join(names)}" if names else ", under 'roles'")
+    def _complain_of_unknown(self, wanted: str, kind: str, complain: Callable[..., None]) -> None:
+        """Tell that a role is not declared, and which of the wanted kind are."""
+        names = self.part.items()
+        fitting = [name for name in names if self.kind(name) == kind]
+        here = f", here {either(map(quoted, fitting))}" if fitting else ", under 'roles'"
+        near = nearest_word(wanted, fitting) or nearest_word(wanted, names)
+        complain(
+            f"no role is called {quoted(wanted)}", expected=f"a role that is a {kind}{here}", nearest=near
+        )
 
     def _refuse_optional(self, name: str) -> None:
         """Refuse that a role may be left out without which the recipe measures nothing."""

@@ -51,7 +51,7 @@ MeasuredLength = Annotated[Measured, measured("length"), shown("785.2 nm +- 0.3 
 MeasuredPower = Annotated[Measured, measured("power", is_positive=True), shown("2 mW +- 30 %")]
 MeasuredStray = Annotated[Measured, measured("power"), shown("20 nW")]
 MeasuredDrift = Annotated[Measured, measured("drift"), shown("0 %/h +- 0.5 %/h")]
-KindText = Annotated[str, choice(*get_args(RoleKind)), shown("rotation stage")]
+KindText = Annotated[RoleKind, choice(*get_args(RoleKind)), shown("rotation stage")]
 ApproachText = Annotated[Approach, choice(*get_args(Approach)), shown("from below")]
 
 

@@ -8,9 +8,9 @@ import pytest
 
 from rigctl.errors import FileError
 from rigctl.files import parse_recipe, parse_rig
+from rigctl.files.recipe import Recipe
 from rigctl.files.rig import Rig
 from rigctl.interfaces import (
-    BenchFactory,
     Capabilities,
     Driver,
     MeterCapabilities,
@@ -32,7 +32,8 @@ roles:
 source: {wavelength: 785.2 nm +- 0.3 nm, power: 2 mW +- 30 %}
 optics:
   - polarizer: {name: entry polarizer, axis: 0 deg, extinction ratio: 100000:1 +- 30 %}
-  - polarizer: {name: part, turned by: part mount, extinction ratio: 1000:1, unknown: [extinction ratio, dial offset]}
+  - polarizer: {name: part, turned by: part mount, extinction ratio: 1000:1,
+                unknown: [extinction ratio, dial offset]}
   - detector: {role: signal}
 sweep: [{part mount: {turn: 1, step: 5 deg, approach: from below, settle: 150 ms}}]
 dwell: {time: 400 ms, at least: 4 readings}
@@ -80,8 +81,7 @@ def _meter(options: Options) -> MeterCapabilities:
     return MeterCapabilities(ranges, (0.01,) * len(ranges), (1e-9,) * len(ranges), ranges[-1], (1e-3, 1.0))
 
 
-@pytest.fixture
-def drivers() -> Mapping[str, Driver]:
+def _drivers() -> dict[str, Driver]:
     senses = ("clockwise", "counter-clockwise")
     turner = _driver(
         "turner",
@@ -99,6 +99,9 @@ def drivers() -> Mapping[str, Driver]:
     return {driver.name: driver for driver in (turner, meter, flap)}
 
 
+DRIVERS: Mapping[str, Driver] = _drivers()
+
+
 class StubBench:
     def twin_options(self, driver: str) -> Mapping[str, Option]:
         return {"offset": Option("power", default=0.0)} if driver == "meter" else {}
@@ -106,32 +109,18 @@ class StubBench:
     def bench_options(self) -> Mapping[str, Option]:
         return {"room light": Option("power", default=0.0), "drift": Option("drift")}
 
-    def default_rig(self, roles: Mapping[str, RoleKind]) -> str:
+    def default_rig(self, roles: Mapping[str, RoleKind]) -> NoReturn:
         raise AssertionError("reading files asks for no default")
 
     def build(self, recipe: Any, rig: Any, seed: int) -> NoReturn:
         raise AssertionError("reading files builds no bench")
 
 
-@pytest.fixture
-def bench() -> BenchFactory:
-    return StubBench()
+Changes = Mapping[str, str]
+NOTHING: Changes = {}
 
 
-@pytest.fixture
-def recipe_text() -> str:
-    return RECIPE
-
-
-@pytest.fixture
-def rig_text() -> str:
-    return RIG
-
-
-Complaints = Callable[..., list[str]]
-
-
-def _replaced(text: str, changes: Mapping[str, str]) -> str:
+def replaced(text: str, changes: Changes) -> str:
     """Return a text with pieces replaced, each of which must be in it."""
     for old, new in changes.items():
         assert old in text
@@ -139,33 +128,18 @@ def _replaced(text: str, changes: Mapping[str, str]) -> str:
     return text
 
 
-def _told(read: Callable[[], object]) -> list[str]:
+def recipe(changes: Changes = NOTHING) -> Recipe:
+    """Read the good recipe after some pieces of it were replaced."""
+    return parse_recipe(replaced(RECIPE, changes), "r.yaml")
+
+
+def rig(changes: Changes = NOTHING) -> Rig:
+    """Read the good rig file after some pieces of it were replaced."""
+    return parse_rig(replaced(RIG, changes), "b.yaml", DRIVERS, StubBench())
+
+
+def told(read: Callable[[], object]) -> list[str]:
+    """Return the lines of the complaint that reading raises."""
     with pytest.raises(FileError) as caught:
         read()
     return str(caught.value).splitlines()
-
-
-@pytest.fixture
-def recipe_complaints() -> Complaints:
-    """What is told of the good recipe after some pieces of it were replaced."""
-
-    def told(changes: Mapping[str, str] | None = None, *, text: str = RECIPE) -> list[str]:
-        return _told(lambda: parse_recipe(_replaced(text, changes or {}), "r.yaml"))
-
-    return told
-
-
-@pytest.fixture
-def read_rig(drivers: Mapping[str, Driver], bench: BenchFactory) -> Callable[..., Rig]:
-    """Read the good rig file after some pieces of it were replaced."""
-
-    def read(changes: Mapping[str, str] | None = None) -> Rig:
-        return parse_rig(_replaced(RIG, changes or {}), "bench.yaml", drivers, bench)
-
-    return read
-
-
-@pytest.fixture
-def rig_complaints(read_rig: Callable[..., Rig]) -> Complaints:
-    """What is told of the good rig file after some pieces of it were replaced."""
-    return lambda changes: _told(lambda: read_rig(changes))
