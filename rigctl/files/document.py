@@ -43,7 +43,7 @@ def parse_document(text: str, mistakes: Mistakes) -> Document:
     """Take a text apart; raises `FileError` where it cannot be read on, and gathers the other mistakes."""
     _refuse_characters(text, mistakes)
     nodes = Nodes(mistakes)
-    for event in _events(text.removeprefix(_BOM), mistakes):
+    for event in _events(text, mistakes):
         nodes.take(event)
     data = nodes.root
     if data is None or data == "":
