@@ -68,6 +68,20 @@ def run_data(run: Run) -> Data:
     )
 
 
+def truth_of(run: Run) -> Mapping[str, float]:
+    """Return the hidden truth of a rehearsal as the fit means it; empty on hardware.
+
+    The simulated source is given by its power at the start, the fit's by that in the middle of the visits.
+    """
+    from rigctl.optics.train import DRIFT, POWER
+
+    truth = dict(run.header.truth)
+    if POWER in truth and DRIFT in truth:
+        times_h = run_data(run).visits.time_h
+        truth[POWER] *= 1.0 + truth[DRIFT] * float(times_h.min() + times_h.max()) / 2.0
+    return truth
+
+
 def fit_run(run: Run) -> "Fit":
     """Fit the train of a run's recipe to everything that the run measured."""
     from rigctl.polarimetry import fit

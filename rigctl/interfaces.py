@@ -5,6 +5,7 @@ and the runner polls it when it is due. Angles are degrees in the bench's sense 
 to an eye facing the light), powers watts, times seconds, instants seconds since the run began.
 """
 
+import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from enum import IntFlag
@@ -88,7 +89,7 @@ class StageCapabilities:
         distance, speed, acceleration = abs(distance_deg), self.speed_deg_per_s, self.acceleration_deg_per_s2
         if distance >= speed**2 / acceleration:
             return distance / speed + speed / acceleration
-        return 2.0 * (distance / acceleration) ** 0.5
+        return 2.0 * math.sqrt(distance / acceleration)
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,11 +97,13 @@ class MeterCapabilities:
     """What a power meter can do.
 
     `ranges_w` are full scales in ascending order; `time_constant_s` and `noise_w` belong to each range.
+    `relative_noise` is the part of a reading's scatter that grows with the power, the source's own included.
     """
 
     ranges_w: tuple[float, ...]
     time_constant_s: tuple[float, ...]
     noise_w: tuple[float, ...]
+    relative_noise: float
     saturation_w: float
     aperture_s: tuple[float, float]
 

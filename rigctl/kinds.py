@@ -68,9 +68,7 @@ KINDS: Mapping[str, Kind] = {
         Kind("ratio", {"%": 1e-2, "dB": math.nan}, (), "1000:1", needs_unit=False),
         Kind("power", _POWERS, ("pW", "nW", "uW", "mW", "W"), "2 mW"),
         Kind("time", _TIMES, ("us", "ms", "s", "min", "h"), "400 ms", sign="not negative"),
-        Kind(
-            "length", {"m": 1.0, "mm": 1e-3, **_LENGTHS}, ("nm", "um", "mm", "m"), "785.2 nm", sign="positive"
-        ),
+        Kind("length", {"m": 1.0, "mm": 1e-3, **_LENGTHS}, ("nm", "um", "mm", "m"), "785.2 nm", sign="positive"),
         Kind("drift", _DRIFTS, ("%/h",), "0.5 %/h"),
         Kind("angular speed", _SPEEDS, ("deg/s",), "20 deg/s", sign="positive"),
         Kind("angular acceleration", _ACCELERATIONS, ("deg/s2",), "100 deg/s2", sign="positive"),

@@ -210,9 +210,7 @@ def _tolerance(text: str, row: Kind, wavelength_m: float | None, *, value: float
     match = _QUANTITY.fullmatch(text.strip())
     if match is not None and match["unit"] == "%":
         if unit == "%":
-            raise _wrong(
-                f"'+- {text}' behind a value in % may mean two things", row, "an uncertainty without %"
-            )
+            raise _wrong(f"'+- {text}' behind a value in % may mean two things", row, "an uncertainty without %")
         return abs(value) * float(match["number"]) / 100.0
     written = _read(text, row)
     if written.unit == ":1":
@@ -264,6 +262,4 @@ def _choice_of_units(row: Kind, *, without: Collection[str] = ()) -> str:
 def _refuse_long(text: str) -> None:
     """Refuse a text that is too long to be a quantity before any pattern is tried on it."""
     if len(text) > LONGEST_TEXT:
-        raise QuantityError(
-            f"{len(text)} characters are no quantity", expected="a number, a space and a unit"
-        )
+        raise QuantityError(f"{len(text)} characters are no quantity", expected="a number, a space and a unit")

@@ -37,9 +37,17 @@ def clone(tmp_path_factory: pytest.TempPathFactory) -> Path:
 
 def shell(script: str, folder: Path) -> subprocess.CompletedProcess[str]:
     tools = Path(sys.executable).parent
-    environment = {**os.environ, "PATH": f"{tools}:{os.environ['PATH']}", "VENV": str(tools.parent)}
+    # this environment stands in for the one that make would set up, and is taken as ready
+    ready = {"VENV": str(tools.parent), "MAKEFLAGS": f"-o {tools.parent}/.ready"}
+    environment = {**os.environ, "PATH": f"{tools}:{os.environ['PATH']}", **ready}
     return subprocess.run(
-        ["bash", "-mec", script], cwd=folder, env=environment, capture_output=True, text=True, check=False, timeout=280
+        ["bash", "-mec", script],
+        cwd=folder,
+        env=environment,
+        capture_output=True,
+        text=True,
+        check=False,
+        timeout=280,
     )
 
 
@@ -55,7 +63,11 @@ def test_readme_opens_a_run_file_with_a_stock_reader(clone: Path) -> None:
         shell("polrig rehearse recipes/sheet-polarizer.yaml --seed 4 --out night.h5", clone)
 
     done = subprocess.run(
-        [sys.executable, "-c", blocks(README, "python")[0]], cwd=clone, capture_output=True, text=True, check=False
+        [sys.executable, "-c", blocks(README, "python")[0]],
+        cwd=clone,
+        capture_output=True,
+        text=True,
+        check=False,
     )
 
     assert done.returncode == 0, done.stderr

@@ -84,9 +84,7 @@ def test_decimal_prefixes_give_the_float_that_the_number_names() -> None:
     assert [parse_quantity(text, "power") for text in ("20 uW", "30 nW", "3 mW")] == [20e-6, 30e-9, 3e-3]
 
 
-@pytest.mark.parametrize(
-    "text", ["1000:1", "1:1000", "1000 : 1", "2000:2", "30 dB", "0.001", "0.1 %", "1e-3"]
-)
+@pytest.mark.parametrize("text", ["1000:1", "1:1000", "1000 : 1", "2000:2", "30 dB", "0.001", "0.1 %", "1e-3"])
 def test_an_extinction_ratio_may_be_written_in_many_ways(text: str) -> None:
     assert parse_quantity(text, "ratio") == pytest.approx(1e-3, rel=1e-12)
 
@@ -151,9 +149,7 @@ def test_a_retardance_in_nanometres_without_a_wavelength_is_refused() -> None:
         ("0 deg/s", "angular speed", "an angular speed of 0 deg/s is not above zero", ""),
     ],
 )
-def test_what_is_no_quantity_is_refused_with_the_nearest_that_is(
-    text: str, kind: str, what: str, nearest: str
-) -> None:
+def test_what_is_no_quantity_is_refused_with_the_nearest_that_is(text: str, kind: str, what: str, nearest: str) -> None:
     error = refusal(text, kind)
 
     assert (error.what, error.nearest) == (what, nearest)

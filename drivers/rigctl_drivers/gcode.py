@@ -133,9 +133,7 @@ class GcodeRotary:
         self._link.write(HOME)
         self._link.mark_out_of_step()
         first_s, last_s = HOMING_S
-        return Begun(
-            due_s=began_s + first_s, poll=self._homed, again_s=first_s / 2, give_up_s=began_s + last_s
-        )
+        return Begun(due_s=began_s + first_s, poll=self._homed, again_s=first_s / 2, give_up_s=began_s + last_s)
 
     def stop(self) -> None:
         """Stop turning now and forget the moves that are queued; returns once the mount is at rest.

@@ -155,6 +155,7 @@ def capabilities(options: Options) -> MeterCapabilities:
         ranges_w=ranges_w,
         time_constant_s=(options["time constant"],) * len(ranges_w),
         noise_w=tuple(options["noise"] * full_scale_w / ranges_w[0] for full_scale_w in ranges_w),
+        relative_noise=options["relative noise"],
         saturation_w=ranges_w[-1] if saturation_w is None else saturation_w,
         aperture_s=APERTURE_S,
     )
@@ -171,8 +172,11 @@ DRIVER = Driver(
             meaning="full scale of each range of the head",
         ),
         "time constant": Option("time", default=10e-3, meaning="how fast the head follows the light"),
-        "noise": Option(
-            "power", default=20e-12, meaning="standard deviation of a reading on the smallest range"
+        "noise": Option("power", default=20e-12, meaning="standard deviation of a reading on the smallest range"),
+        "relative noise": Option(
+            "ratio",
+            default=5e-4,  # common practice for a diode on a quiet driver
+            meaning="scatter of a reading that grows with the power, the source's included",
         ),
         "saturation": Option("power", meaning="power at which the head itself saturates; default: top range"),
     },

@@ -66,9 +66,7 @@ class TerminalProgress:
 
     def visit(self, done: int, total: int, left_s: float) -> None:
         """Show how far it is and the time left."""
-        self._rewrite(
-            f"{done}/{total} visits  {100 * done // total} %  {duration(left_s)} left  {self._phase}"
-        )
+        self._rewrite(f"{done}/{total} visits  {100 * done // total} %  {duration(left_s)} left  {self._phase}")
 
     def event(self, text: str, level: str) -> None:
         """Keep a line on the screen, above the one that is rewritten."""

@@ -12,6 +12,7 @@ if TYPE_CHECKING:
 
 def tell_outcome(job: "Job", outcome: "Outcome", lead: str, *, as_json: bool) -> int:
     """Print where the run file is, how it ended, and the fit; return the exit code."""
+    from rigctl.estimates import truth_of
     from rigctl.record import load_run
 
     run = load_run(job.path)
@@ -30,10 +31,10 @@ def tell_outcome(job: "Job", outcome: "Outcome", lead: str, *, as_json: bool) ->
     fitted, code = _fit(run, outcome.exit_code)
     answer["exit_code"] = code
     if as_json:
-        say_json(answer | ({"fit": fit_as_dict(fitted, run.header.truth)} if fitted else {}))
+        say_json(answer | ({"fit": fit_as_dict(fitted, truth_of(run))} if fitted else {}))
     elif fitted:
         say("")
-        for line in fit_lines(fitted, run.header.truth):
+        for line in fit_lines(fitted, truth_of(run)):
             say(line)
     if outcome.bug is not None:
         raise outcome.bug

@@ -10,7 +10,7 @@ def command(file: RunPath, as_json: AsJson = False) -> int:
     from rigctl.cli.console import complain, say, say_json
     from rigctl.cli.show import fit_as_dict, fit_lines
     from rigctl.errors import UndecidedError
-    from rigctl.estimates import fit_run
+    from rigctl.estimates import fit_run, truth_of
     from rigctl.record import load_run
 
     run = load_run(file)
@@ -18,8 +18,8 @@ def command(file: RunPath, as_json: AsJson = False) -> int:
         complain(f"note: the run is {run.status}; this is what it measured so far")
     fitted = fit_run(run)
     if as_json:
-        say_json({"file": str(file), "status": run.status, "fit": fit_as_dict(fitted, run.header.truth)})
+        say_json({"file": str(file), "status": run.status, "fit": fit_as_dict(fitted, truth_of(run))})
     else:
-        for line in fit_lines(fitted, run.header.truth):
+        for line in fit_lines(fitted, truth_of(run)):
             say(line)
     return UndecidedError.exit_code if fitted.refusals else 0

@@ -14,9 +14,7 @@ DEFAULT_SEED = 1
 
 def command(
     recipe: RecipePath,
-    rig: Annotated[
-        Path | None, typer.Option(help="Rig file; without one, a well-behaved simulated bench.")
-    ] = None,
+    rig: Annotated[Path | None, typer.Option(help="Rig file; without one, a well-behaved simulated bench.")] = None,
     out: Out = None,
     seed: Annotated[
         int | None, typer.Option(min=0, help="Which bench and which noise; the same seed, the same data.")

@@ -1,12 +1,15 @@
 """`polrig run`: the real run."""
 
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from rigctl.cli.options import AsJson, Out, RecipePath, Trace
 from rigctl.errors import PlanError
+
+if TYPE_CHECKING:
+    from rigctl.cli.loading import Loaded
 
 NAME = "run"
 
@@ -27,23 +30,13 @@ def command(
     from rigctl.cli.person import PersonAtTerminal, is_somebody_there
     from rigctl.cli.signals import stopping_on_signals
     from rigctl.cli.tracing import tapping
-    from rigctl.runner.bench import filled_roles
     from rigctl.runner.hardware import real_job
     from rigctl.runner.person import NobodyThere
     from rigctl.runner.run import run_job
-    from rigctl.runner.visiting import is_dark_by_hand
     from rigctl.timeline import StopRequest
 
     loaded = load(recipe, rig)
-    has_shutter = any(
-        loaded.recipe.roles[role].kind == "shutter" for role in filled_roles(loaded.recipe, loaded.rig)
-    )
-    if is_dark_by_hand(loaded.recipe, has_shutter) and not is_somebody_there():
-        raise PlanError(
-            "its darks are taken by hand, and nobody can be asked: this is no terminal",
-            where=str(recipe),
-            do="Run it at a terminal, or give the rig a shutter and the recipe `dark: {by: shutter}`.",
-        )
+    _refuse_without_hands(loaded, recipe)
     path = free_path(out, recipe.stem)
     stop, progress = StopRequest(), progress_for_stream()
     with stopping_on_signals(stop), tapping(trace) as wrap:
@@ -62,3 +55,19 @@ def command(
         outcome = run_job(job)
     progress.end()
     return tell_outcome(job, outcome, f"ran '{loaded.recipe.title}'", as_json=as_json)
+
+
+def _refuse_without_hands(loaded: "Loaded", path: Path) -> None:
+    """Refuse darks by hand where nobody can be asked for them."""
+    from rigctl.cli.person import is_somebody_there
+    from rigctl.runner.bench import filled_roles
+    from rigctl.runner.visiting import is_dark_by_hand
+
+    roles = loaded.recipe.roles
+    has_shutter = any(roles[role].kind == "shutter" for role in filled_roles(loaded.recipe, loaded.rig))
+    if is_dark_by_hand(loaded.recipe, has_shutter) and not is_somebody_there():
+        raise PlanError(
+            "its darks are taken by hand, and nobody can be asked: this is no terminal",
+            where=str(path),
+            do="Run it at a terminal, or give the rig a shutter and the recipe `dark: {by: shutter}`.",
+        )

@@ -41,8 +41,7 @@ def value_text(kind: str, value: float, u: float) -> str:
 def _table(rows: Sequence[Sequence[str]]) -> list[str]:
     widths = [max(len(row[column]) for row in rows) for column in range(len(rows[0]))] if rows else []
     return [
-        "  " + "  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip()
-        for row in rows
+        "  " + "  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip() for row in rows
     ]
 
 
@@ -113,9 +112,7 @@ def prediction_lines(prediction: "Prediction") -> list[str]:
         for estimate in prediction.estimates
         if estimate.is_unknown
     ]
-    lines = (
-        ["  expected standard uncertainty, at the nominal values and the meter's own noise:"] if rows else []
-    )
+    lines = ["  expected standard uncertainty, at the nominal values and the meter's own noise:"] if rows else []
     lines += ["  " + line for line in _table(rows)] + _refusal_lines(prediction.refusals)
     for coupling in prediction.couplings:
         lines.append(

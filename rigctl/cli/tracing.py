@@ -29,8 +29,6 @@ def tapping(path: Path | None) -> "Iterator[Callable[[Channel, Timeline], Channe
     try:
         sink = path.open("x", encoding="ascii")
     except OSError as error:
-        raise UsageError(
-            f"the trace {path} cannot be begun: {error.strerror}", do="Give another --trace."
-        ) from error
+        raise UsageError(f"the trace {path} cannot be begun: {error.strerror}", do="Give another --trace.") from error
     with sink:
         yield lambda channel, timeline: TappedChannel(channel, timeline, sink)

@@ -29,9 +29,7 @@ def angles_of(
 
     A turn leaves its end out, a range holds both ends; a step must divide either.
     """
-    given = [
-        name for name, value in (("turn", turn), ("values", values), ("range", span)) if value is not None
-    ]
+    given = [name for name, value in (("turn", turn), ("values", values), ("range", span)) if value is not None]
     exactly_one(("turn", "values", "range"), given)
     if start is not None and turn is None:
         raise wrong("'start' goes with 'turn' alone", key="start")
@@ -63,9 +61,7 @@ def _steps(length: float, step: float, *, what: str) -> int:
     if count < 1 or abs(count * step - length) > FINEST_DEG * count:
         near = " or ".join(format_quantity(s, "angle") for s in nearest_steps(length, step))
         whole = format_quantity(length, "angle")
-        raise wrong(
-            f"steps of {written} do not divide the {what} of {whole}", expected=f"steps of {near}", key="step"
-        )
+        raise wrong(f"steps of {written} do not divide the {what} of {whole}", expected=f"steps of {near}", key="step")
     return count
 
 

@@ -49,9 +49,7 @@ def parse_document(text: str, mistakes: Mistakes) -> Document:
     if data is None or data == "":
         mistakes.refuse("the file is empty")
     if not isinstance(data, dict):
-        mistakes.stop(
-            nodes.places.of(), "", "the file does not consist of keys", expected="lines such as 'key: value'"
-        )
+        mistakes.stop(nodes.places.of(), "", "the file does not consist of keys", expected="lines such as 'key: value'")
     sha256 = hashlib.sha256(text.encode()).hexdigest()
     return Document(data, nodes.places, text, mistakes.path, sha256)
 
@@ -80,9 +78,7 @@ def _decode(data: bytes, mistakes: Mistakes) -> str:
     except UnicodeDecodeError as error:
         before = data[: error.start].decode()
         what = f"byte 0x{data[error.start]:02x} is not UTF-8"
-        mistakes.stop(
-            _place_at(before, len(before)), "", what, expected="UTF-8: save it again with that encoding"
-        )
+        mistakes.stop(_place_at(before, len(before)), "", what, expected="UTF-8: save it again with that encoding")
 
 
 def _refuse_characters(text: str, mistakes: Mistakes) -> None:

@@ -107,11 +107,7 @@ def read_name(text: str) -> str:
 
 def is_label(text: str) -> bool:
     """Whether a text may name a role or a step: with `_` for spaces it becomes a name in the run file."""
-    return (
-        re.fullmatch(r"[A-Za-z][A-Za-z0-9_ ]*", text) is not None
-        and len(text) <= LONGEST_NAME
-        and text[-1] != " "
-    )
+    return re.fullmatch(r"[A-Za-z][A-Za-z0-9_ ]*", text) is not None and len(text) <= LONGEST_NAME and text[-1] != " "
 
 
 def _read_title(text: str, _: ValidationInfo) -> str:
@@ -132,9 +128,7 @@ def _read_date(text: str, _: ValidationInfo) -> date:
     try:
         return date.fromisoformat(text)
     except ValueError as error:
-        raise wrong(
-            f"{quoted(text)} is no date", expected="year, month and day such as 2027-03-01"
-        ) from error
+        raise wrong(f"{quoted(text)} is no date", expected="year, month and day such as 2027-03-01") from error
 
 
 def read_whole_number(text: str) -> int:
@@ -148,9 +142,7 @@ def read_choice(text: str, words: Collection[str]) -> str:
     """Return one of a few words."""
     if text not in words:
         nearest = nearest_word(text, words)
-        raise QuantityError(
-            f"{quoted(text)} is not among the choices", expected=either(words), nearest=nearest
-        )
+        raise QuantityError(f"{quoted(text)} is not among the choices", expected=either(words), nearest=nearest)
     return text
 
 
@@ -179,9 +171,7 @@ def read_address(text: str) -> str:
 def exactly_one(names: Sequence[str], given: Sequence[str], *, key: str = "") -> None:
     """Refuse a mapping that holds none or several of keys of which it must hold one."""
     if len(given) != 1:
-        what = (
-            f"{' and '.join(map(quoted, given))} exclude each other" if given else "something is missing here"
-        )
+        what = f"{' and '.join(map(quoted, given))} exclude each other" if given else "something is missing here"
         raise wrong(what, expected=f"exactly one of {either(map(quoted, names))}", key=key)
 
 
@@ -191,6 +181,4 @@ SwitchText = Annotated[bool, _leaf(_read_switch, "true or false"), shown("true")
 DateText = Annotated[date, _leaf(_read_date, "a date"), shown("2027-03-01")]
 WholeText = Annotated[int, _leaf(lambda text, _: read_whole_number(text), "a whole number"), shown("7")]
 WordText = Annotated[str, _leaf(lambda text, _: read_text(text), "a word"), shown("part")]
-AddressText = Annotated[
-    str, _leaf(lambda text, _: read_address(text), "an address"), shown("tcp://10.0.0.7:5025")
-]
+AddressText = Annotated[str, _leaf(lambda text, _: read_address(text), "an address"), shown("tcp://10.0.0.7:5025")]

@@ -40,9 +40,7 @@ def _wrong_kinds(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Ite
         if entry is not None and kind != role.kind:
             line, column = rig.place("roles", name)
             what = f"{quoted(entry.name)} fills the role {quoted(name)} but is a {kind}"
-            yield Mistake(
-                rig.path, line, column, name, what, expected=f"a {role.kind}, as {recipe.path} asks"
-            )
+            yield Mistake(rig.path, line, column, name, what, expected=f"a {role.kind}, as {recipe.path} asks")
 
 
 def _too_far(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Iterator[Mistake]:

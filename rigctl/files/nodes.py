@@ -70,9 +70,7 @@ class Nodes:
             what, expected = f"the alias '*{event.anchor}' repeats another part", "the part written out"
             self._mistakes.add(place, "", what, expected=expected)
         elif event.anchor is not None:
-            self._mistakes.add(
-                place, "", f"the anchor '&{event.anchor}' is not allowed", expected="the value alone"
-            )
+            self._mistakes.add(place, "", f"the anchor '&{event.anchor}' is not allowed", expected="the value alone")
         tag = getattr(event, "tag", None)
         if tag is not None:
             self._mistakes.add(
@@ -111,9 +109,7 @@ class Nodes:
         if top.keys is None:
             return
         if key == "<<":
-            self._mistakes.add(
-                place, key, "merging with '<<' is not allowed", expected="the keys written out"
-            )
+            self._mistakes.add(place, key, "merging with '<<' is not allowed", expected="the keys written out")
         elif not key:
             self._mistakes.add(place, key, "a key is missing before ':'", expected="a word")
         elif key in top.held:

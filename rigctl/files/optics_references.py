@@ -75,9 +75,7 @@ def _check_unknown(kind: str, part: Part) -> None:
         elif name in seen:
             word.wrong(f"{quoted(name)} is listed twice")
         elif name == "dial offset" and not part.at("turned by").is_there:
-            word.wrong(
-                "an element that no mount turns has no dial offset", expected="'turned by', or 'axis' instead"
-            )
+            word.wrong("an element that no mount turns has no dial offset", expected="'turned by', or 'axis' instead")
         seen.add(name)
 
 
@@ -99,12 +97,8 @@ def _check_end(optics: Part, elements: list[tuple[str, Part]]) -> None:
     kinds = [kind for kind, _ in elements]
     if "detector" not in kinds:
         if len(elements) == len(optics.entries()) > 0:
-            optics.missing(
-                "the light ends on no detector", expected="a last entry such as detector: {role: signal}"
-            )
+            optics.missing("the light ends on no detector", expected="a last entry such as detector: {role: signal}")
         return
     for kind, part in elements[kinds.index("detector") :]:
         if kind != "detector":
-            part.wrong_key(
-                f"a {kind} stands behind the detector", expected="detectors at the end of the optics"
-            )
+            part.wrong_key(f"a {kind} stands behind the detector", expected="detectors at the end of the optics")

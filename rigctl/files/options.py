@@ -17,9 +17,7 @@ from rigctl.quantities import parse_quantity, parse_span
 _LIST, _SPAN = "list of ", "span of "
 
 
-def read_options(
-    part: Part, table: Mapping[str, Option], *, others: Collection[str], whose: str
-) -> dict[str, Any]:
+def read_options(part: Part, table: Mapping[str, Option], *, others: Collection[str], whose: str) -> dict[str, Any]:
     """Read the keys of a mapping by a table; defaults stand for what is not written.
 
     `others` are keys that are read elsewhere; `whose` says in a message who knows the keys.

@@ -79,9 +79,7 @@ def _steps(written: WrittenRecipe) -> tuple[Step, ...]:
 
 
 def _axes(sweep: Sweep) -> tuple[Axis, ...]:
-    return tuple(
-        Axis(role, axis.angles_deg, axis.approach, axis.settle) for one in sweep for role, axis in one.items()
-    )
+    return tuple(Axis(role, axis.angles_deg, axis.approach, axis.settle) for one in sweep for role, axis in one.items())
 
 
 def _element(written: WrittenElement) -> OpticalElement:

@@ -75,9 +75,7 @@ def _check_sweep(sweep: Part, roles: Roles, mounts: Collection[str]) -> None:
             entry.wrong(what, expected="one mount in an entry: the first turns slowest")
         for name, axis in axes.items():
             if name in swept:
-                axis.wrong_key(
-                    f"the mount {quoted(name)} is swept twice in one step", expected="each mount once"
-                )
+                axis.wrong_key(f"the mount {quoted(name)} is swept twice in one step", expected="each mount once")
             swept.add(roles.use(axis, "rotation stage", name=name))
     for name in mounts:
         if not swept & {name, None} and roles.kind(name) == "rotation stage":
@@ -90,9 +88,7 @@ def _check_idle(sweep: Part, mounts: Collection[str]) -> None:
     for entry in sweep.entries():
         for name, axis in entry.items().items():
             if name not in mounts:
-                axis.wrong_key(
-                    f"the mount {quoted(name)} turns no element", expected="an element turned by it"
-                )
+                axis.wrong_key(f"the mount {quoted(name)} turns no element", expected="an element turned by it")
 
 
 def _check_dark(dark: Part, roles: Roles) -> None:
@@ -102,6 +98,4 @@ def _check_dark(dark: Part, roles: Roles) -> None:
         roles.use(by, "shutter", may_be_optional=True)
     times = [dark.at(when) for when in ("before", "after")]
     if all(when.text in ("false", "no") for when in times):
-        times[0].wrong_key(
-            "a dark neither before nor after is none", expected="one of them true, or no 'dark' at all"
-        )
+        times[0].wrong_key("a dark neither before nor after is none", expected="one of them true, or no 'dark' at all")

@@ -31,9 +31,7 @@ def parse_rig(text: str, path_name: str, drivers: Mapping[str, Driver], bench: B
     return _rig(parse_document(text, mistakes), mistakes, drivers, bench)
 
 
-def _rig(
-    document: Document, mistakes: Mistakes, drivers: Mapping[str, Driver], bench: BenchFactory | None
-) -> Rig:
+def _rig(document: Document, mistakes: Mistakes, drivers: Mapping[str, Driver], bench: BenchFactory | None) -> Rig:
     """Check a document and make a rig of it."""
     written = shaped(WrittenRig, document, mistakes, context={})
     extras = read_extras(Part.whole(document, mistakes), drivers, bench)
@@ -59,6 +57,4 @@ def _entry(name: str, written: WrittenInstrument, extras: Extras) -> InstrumentE
 
 
 def _calibration(written: WrittenCalibration) -> Calibration:
-    return Calibration(
-        written.certificate, written.due, written.expanded_uncertainty, written.coverage_factor
-    )
+    return Calibration(written.certificate, written.due, written.expanded_uncertainty, written.coverage_factor)

@@ -45,11 +45,7 @@ def _driver(instrument: Part, drivers: Mapping[str, Driver]) -> Driver | None:
     part = instrument.at("driver")
     if part.text is None or part.text in drivers:
         return drivers.get(part.text or "")
-    expected = (
-        f"one that is installed: {either(sorted(drivers))}"
-        if drivers
-        else "an installed driver; there is none"
-    )
+    expected = f"one that is installed: {either(sorted(drivers))}" if drivers else "an installed driver; there is none"
     nearest = nearest_word(part.text, drivers)
     part.wrong(f"no driver is called {quoted(part.text)}", expected=expected, nearest=nearest)
     return None
@@ -92,9 +88,7 @@ def _check_roles(roles: Part, instruments: Part) -> None:
             what, known = f"no instrument is called {quoted(name)}", either(map(quoted, names))
             part.wrong(what, expected=f"one of {known}", nearest=nearest_word(name, names))
         elif name in filled:
-            part.wrong(
-                f"{quoted(name)} fills the role {quoted(filled[name])} already", expected="one role each"
-            )
+            part.wrong(f"{quoted(name)} fills the role {quoted(filled[name])} already", expected="one role each")
         filled[name] = role
 
 

@@ -29,9 +29,7 @@ class Roles:
         role = self.part.at(name)
         return role.text if role.text is not None else role.at("is").text
 
-    def use(
-        self, part: Part, kind: str, *, name: str | None = None, may_be_optional: bool = False
-    ) -> str | None:
+    def use(self, part: Part, kind: str, *, name: str | None = None, may_be_optional: bool = False) -> str | None:
         """Check that a part names a role of a kind, and return the role where it is declared.
 
         The name is the part's text, or `name` where the role is the part's key.
@@ -76,14 +74,10 @@ class Roles:
         fitting = [name for name in names if self.kind(name) == kind]
         here = f", here {either(map(quoted, fitting))}" if fitting else ", under 'roles'"
         near = nearest_word(wanted, fitting) or nearest_word(wanted, names)
-        complain(
-            f"no role is called {quoted(wanted)}", expected=f"a role that is a {kind}{here}", nearest=near
-        )
+        complain(f"no role is called {quoted(wanted)}", expected=f"a role that is a {kind}{here}", nearest=near)
 
     def _refuse_optional(self, name: str) -> None:
         """Refuse that a role may be left out without which the recipe measures nothing."""
         optional = self.part.at(name).at("optional")
         if optional.text in ("true", "yes"):
-            optional.wrong(
-                f"the role {quoted(name)} cannot be optional: the recipe needs it", expected="false"
-            )
+            optional.wrong(f"the role {quoted(name)} cannot be optional: the recipe needs it", expected="false")

@@ -75,11 +75,7 @@ class _Gatherer:
 
     def _wrong_shape(self, keys: Keys, detail: ErrorDetails) -> None:
         key, given = str(keys[-1]) if keys else "", detail["input"]
-        what = (
-            f"{quoted(given)} stands here"
-            if given and isinstance(given, str)
-            else f"{noun(given)} stands here"
-        )
+        what = f"{quoted(given)} stands here" if given and isinstance(given, str) else f"{noun(given)} stands here"
         expected = _shape_of(annotation_at(self._model, keys))
         self._mistakes.add(self._places.of(*keys), key, what, expected=expected)
 

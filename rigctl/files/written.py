@@ -6,6 +6,4 @@ from pydantic import BaseModel, ConfigDict
 class Written(BaseModel):
     """A mapping of a written file; its keys are the names of its fields, with spaces."""
 
-    model_config = ConfigDict(
-        frozen=True, extra="forbid", alias_generator=lambda name: name.replace("_", " ")
-    )
+    model_config = ConfigDict(frozen=True, extra="forbid", alias_generator=lambda name: name.replace("_", " "))

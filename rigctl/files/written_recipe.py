@@ -159,9 +159,7 @@ class WrittenAxis(Written):
     @property
     def angles_deg(self) -> tuple[float, ...]:
         """The angles in the order of the visits."""
-        return angles_of(
-            turn=self.turn, values=self.values, span=self.range, step=self.step, start=self.start
-        )
+        return angles_of(turn=self.turn, values=self.values, span=self.range, step=self.step, start=self.start)
 
 
 Sweep = Annotated[list[dict[str, WrittenAxis]], Field(min_length=1)]

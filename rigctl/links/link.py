@@ -36,9 +36,7 @@ class Link:
     with it, so whoever opens it again has to identify and set it again.
     """
 
-    def __init__(
-        self, address: str, open_channel: Callable[[], Channel], family: Family, timeline: Timeline
-    ) -> None:
+    def __init__(self, address: str, open_channel: Callable[[], Channel], family: Family, timeline: Timeline) -> None:
         self.address, self.family, self.timeline = address, family, timeline
         self.lock = threading.RLock()
         self.is_in_step = False

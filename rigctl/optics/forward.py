@@ -30,9 +30,7 @@ class _Stage:
 
 
 def _stage(train: Train, element: Element, visits: Visits, values: Mapping[str, float]) -> _Stage:
-    azimuth_deg = (
-        values[element.axis] + _mount_deg(element, visits) - values.get(element.dial_offset or "", 0.0)
-    )
+    azimuth_deg = values[element.axis] + _mount_deg(element, visits) - values.get(element.dial_offset or "", 0.0)
     twice = (2.0 * DEGREE) * azimuth_deg
     form = FORMS[train.quantities[element.strength].kind]
     return _Stage(element, (np.cos(twice), np.sin(twice)), *form(values[element.strength]))
@@ -158,9 +156,7 @@ def _element_slopes(
         element = stage.element
         if element.strength in names:
             local = coefficient_slopes(planes[k], rows[k + 1], stage.turn)
-            slopes[element.strength] = sum(
-                (s * d for s, d in zip(stage.slopes, local, strict=True)), np.zeros(())
-            )
+            slopes[element.strength] = sum((s * d for s, d in zip(stage.slopes, local, strict=True)), np.zeros(()))
         if names.intersection((element.axis, element.dial_offset)):
             turning = DEGREE * (torque(planes[k + 1], rows[k + 1]) - torque(planes[k], rows[k]))
             slopes[element.axis] = turning

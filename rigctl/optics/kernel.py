@@ -61,9 +61,7 @@ def through(light: Stokes[Number], turn: tuple[Number, Number], element: Coeffic
     return a * S0 + b * u, c * x - s * w, s * x + c * w, gc * S3 - gs * v
 
 
-def coefficient_slopes(
-    light: Stokes[Array], row: Stokes[Array], turn: tuple[Array, Array]
-) -> tuple[Array, ...]:
+def coefficient_slopes(light: Stokes[Array], row: Stokes[Array], turn: tuple[Array, Array]) -> tuple[Array, ...]:
     """Slopes of the detected power with an element's four coefficients.
 
     Parameters

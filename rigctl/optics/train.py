@@ -144,9 +144,7 @@ class Train:
         addresses = self.addresses
         yield from (f"two parts of the train share '{a}'" for a in sorted(_repeated(addresses)))
         yield from (f"'{a}' has no value" for a in addresses if a not in self.quantities)
-        yield from (
-            f"'{a}' belongs to nothing in the train" for a in sorted(set(self.quantities) - set(addresses))
-        )
+        yield from (f"'{a}' belongs to nothing in the train" for a in sorted(set(self.quantities) - set(addresses)))
 
     @property
     def addresses(self) -> tuple[str, ...]:

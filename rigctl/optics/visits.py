@@ -37,9 +37,7 @@ class Visits:
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "is_open", np.asarray(self.is_open, dtype=bool))  # 0 and 1 will do as well
-        if {np.shape(column) for column in self.angle_deg.values()} | {np.shape(self.is_open)} != {
-            (self.count,)
-        }:
+        if {np.shape(column) for column in self.angle_deg.values()} | {np.shape(self.is_open)} != {(self.count,)}:
             raise PlanError("the columns of the visits differ in length", do="Give one value per visit.")
 
     @property
@@ -73,9 +71,7 @@ class Visits:
         """
         mounts = {frozenset(part.angle_deg) for part in parts}
         if len(mounts) != 1:
-            raise PlanError(
-                "only visits that list the same mounts can be joined", do="List every mount in each part."
-            )
+            raise PlanError("only visits that list the same mounts can be joined", do="List every mount in each part.")
         return cls(
             {mount: np.concatenate([p.angle_deg[mount] for p in parts]) for mount in parts[0].angle_deg},
             np.concatenate([p.is_open for p in parts]),

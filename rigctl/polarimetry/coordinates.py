@@ -70,9 +70,7 @@ def probes(train: Train) -> list[dict[str, float]]:
 def _probe(quantity: Quantity, rng: np.random.Generator) -> float:
     if quantity.prior_u is not None:
         return quantity.value + quantity.prior_u * rng.uniform(0.5, 1.0)
-    low, high = {"angle": (0.0, 180.0), "retardance": (0.1, 0.4), "ratio": (0.01, 0.1)}.get(
-        quantity.kind, (0.1, 0.2)
-    )
+    low, high = {"angle": (0.0, 180.0), "retardance": (0.1, 0.4), "ratio": (0.01, 0.1)}.get(quantity.kind, (0.1, 0.2))
     return float(rng.uniform(low, high))
 
 
@@ -116,9 +114,7 @@ def estimate_of(quantity: Quantity, form: str, *, value: float, fitted: float, u
     """
     if form == "cosine":
         return _retardance(quantity, value=value, cosine=fitted, u=u)
-    plain = Estimate(
-        quantity.name, quantity.kind, value, u * abs(to_people(form, fitted)[1]), quantity.is_unknown
-    )
+    plain = Estimate(quantity.name, quantity.kind, value, u * abs(to_people(form, fitted)[1]), quantity.is_unknown)
     return _bounded(plain, form, fitted, u) if quantity.kind == "ratio" and quantity.is_unknown else plain
 
 
@@ -133,9 +129,7 @@ def _retardance(quantity: Quantity, *, value: float, cosine: float, u: float) ->
     ends = sorted(whole + sign * to_people("cosine", c)[0] for c in (low, high))
     spread = max(value - ends[0], ends[1] - value) / Z95
     note = "at an edge of what this sweep can tell (0, half a wave): read the 95 % interval"
-    return Estimate(
-        quantity.name, quantity.kind, value, spread, quantity.is_unknown, note, (ends[0], ends[1])
-    )
+    return Estimate(quantity.name, quantity.kind, value, spread, quantity.is_unknown, note, (ends[0], ends[1]))
 
 
 def _bounded(plain: Estimate, form: str, fitted: float, u: float) -> Estimate:

@@ -69,9 +69,7 @@ def fit(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Fit:
 def _problem(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Problem:
     names = [d.name for d in train.detectors]
     level_w = {name: np.where(_counts(levels[name]), levels[name].power_w, 0.0) for name in names}
-    weight = {
-        name: _weight(levels[name], w, GUESS * float(np.max(np.abs(w)) or 1.0)) for name, w in level_w.items()
-    }
+    weight = {name: _weight(levels[name], w, GUESS * float(np.max(np.abs(w)) or 1.0)) for name, w in level_w.items()}
     problem = Problem(train, in_fit_forms(train, visits), visits, level_w, weight)
     if not problem.row_count:
         raise UndecidedError("there is no reading to fit", do="Run the recipe, or resume the run.")
@@ -155,10 +153,7 @@ def _fit_numbers(problem: Problem, z: Array, chosen: Mapping[str, float]) -> Arr
     """The numbers of the fit at the chosen solution; a cosine beyond its edge stays there."""
     moved = {"angle", "retardance"}
     return np.array(
-        [
-            to_fit(q.kind, chosen[q.name]) if q.kind in moved else v
-            for q, v in zip(problem.fitted, z, strict=True)
-        ]
+        [to_fit(q.kind, chosen[q.name]) if q.kind in moved else v for q, v in zip(problem.fitted, z, strict=True)]
     )
 
 
@@ -183,10 +178,7 @@ def _result(
         refusals=refusals(problem, best.z),
         notes=verdict.notes(),
         fitted_w=readings(problem.train, problem.visits, problem.values(best.z)),
-        u_w={
-            n: np.divide(1.0, w, out=np.full_like(w, np.inf), where=w > 0.0)
-            for n, w in problem.weight.items()
-        },
+        u_w={n: np.divide(1.0, w, out=np.full_like(w, np.inf), where=w > 0.0) for n, w in problem.weight.items()},
     )
 
 

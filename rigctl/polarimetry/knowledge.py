@@ -93,9 +93,7 @@ def _echelon(rows: Array) -> Array:
 def _first_cure(problem: Problem, z: Array, unknown: Sequence[str], members: Sequence[str]) -> _Remedy | None:
     """The first remedy, the most practical first, after which none of the unknowns is blind."""
     for remedy in _remedies(problem.holding(()), z, [n for n in members if n not in unknown[:1]]):
-        shares = dict(
-            zip(remedy.problem.names, np.linalg.norm(blind(remedy.problem, z), axis=0), strict=True)
-        )
+        shares = dict(zip(remedy.problem.names, np.linalg.norm(blind(remedy.problem, z), axis=0), strict=True))
         if all(shares[name] <= SHARE for name in unknown if name in shares):
             return remedy
     return None
@@ -133,18 +131,14 @@ def _turn(visits: Visits, mount: str) -> Visits:
 
 
 def _shifted(visits: Visits, mount: str, angle_deg: float) -> Visits:
-    return Visits(
-        {**visits.angle_deg, mount: visits.angle_deg[mount] + angle_deg}, visits.is_open, visits.time_h
-    )
+    return Visits({**visits.angle_deg, mount: visits.angle_deg[mount] + angle_deg}, visits.is_open, visits.time_h)
 
 
 def _u_by_name(problem: Problem, z: Array, names: Sequence[str]) -> dict[str, float]:
     """Standard uncertainties as people read them."""
     _, slopes = guarded(problem, z).rows(z)
     u = np.sqrt(np.diag(covariance(slopes)))
-    return {
-        n: _readable_u(problem, z, problem.names.index(n), float(u[problem.names.index(n)])) for n in names
-    }
+    return {n: _readable_u(problem, z, problem.names.index(n), float(u[problem.names.index(n)])) for n in names}
 
 
 def _readable_u(problem: Problem, z: Array, k: int, u: float) -> float:

@@ -78,9 +78,7 @@ class Problem:
         power_w = abs(values[POWER]) or 1.0
         by_power = {POWER: power_w}
         stray_w = STRAY_WIDTH * power_w
-        return np.array(
-            [by_power.get(q.name, stray_w) if q.kind == "power" else WIDTHS[q.kind] for q in self.fitted]
-        )
+        return np.array([by_power.get(q.name, stray_w) if q.kind == "power" else WIDTHS[q.kind] for q in self.fitted])
 
     def values(self, z: Array) -> dict[str, float]:
         """Every quantity of the train in the forms of the fit."""

@@ -80,7 +80,5 @@ class Scatter:
 def scatter(chi2: float, dof: int, levels: Mapping[str, Observed]) -> Scatter:
     """What chi-squared says, given the dwells."""
     within = sum(float(np.sum(np.maximum(observed.n - 1, 0))) for observed in levels.values())
-    silent = tuple(
-        name for name, observed in levels.items() if pooled_noise(observed, observed.power_w) is None
-    )
+    silent = tuple(name for name, observed in levels.items() if pooled_noise(observed, observed.power_w) is None)
     return Scatter(chi2, dof, within, silent)

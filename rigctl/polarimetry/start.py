@@ -89,9 +89,7 @@ def _solve_chunk(problem: Problem, columns: dict[str, Array]) -> tuple[Array, Ar
     right = np.einsum("gnl,n->gl", design, target)
     centre, precision = _linear_knowledge(problem)
     size = centre.size
-    normal[:, range(size), range(size)] += (
-        precision + 1e-12 * np.max(normal, axis=(1, 2), initial=0.0)[:, None]
-    )
+    normal[:, range(size), range(size)] += precision + 1e-12 * np.max(normal, axis=(1, 2), initial=0.0)[:, None]
     right += precision * centre
     linear = np.linalg.solve(normal, right[..., None])[..., 0]
     chi2 = target @ target + precision @ centre**2 - np.einsum("gl,gl->g", linear, right)
@@ -152,8 +150,6 @@ def _neighbours(chi2: Array, k: int, *, is_closed: bool) -> Iterator[Array]:
 def _point(problem: Problem, columns: dict[str, Array], linear: Array, node: int) -> Array:
     power, power_drift, *stray = map(float, linear[node])
     names = [POWER, DRIFT, *(d.stray_light for d in problem.train.detectors)]
-    solved = dict(
-        zip(names, (power, problem.train.quantities[DRIFT].value + power_drift / power, *stray), strict=True)
-    )
+    solved = dict(zip(names, (power, problem.train.quantities[DRIFT].value + power_drift / power, *stray), strict=True))
     solved |= {name: float(nodes[node, 0]) for name, nodes in columns.items()}
     return np.array([solved.get(q.name, q.value) for q in problem.fitted])

@@ -33,8 +33,7 @@ class Symmetries:
     def sentences(self) -> tuple[str, ...]:
         """The moves found, in words."""
         return tuple(
-            " with ".join(_words(q, k) for q, k in zip(self.unknowns, move, strict=True) if k)
-            for move in self.found
+            " with ".join(_words(q, k) for q, k in zip(self.unknowns, move, strict=True) if k) for move in self.found
         )
 
     def nearest(self, values: Mapping[str, float]) -> dict[str, float]:

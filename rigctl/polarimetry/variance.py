@@ -67,7 +67,5 @@ def _two_term(sample: Array, power2: Array, root: Array) -> Noise:
     if np.all(solution >= 0.0):
         return Noise(float(solution[0]), float(solution[1]) / scale)
     alone = [max(0.0, float(column @ (sample * root) / (column @ column))) for column in design.T]
-    misfit = [
-        float(np.sum((sample * root - a * column) ** 2)) for a, column in zip(alone, design.T, strict=True)
-    ]
+    misfit = [float(np.sum((sample * root - a * column) ** 2)) for a, column in zip(alone, design.T, strict=True)]
     return Noise(alone[0], 0.0) if misfit[0] <= misfit[1] else Noise(0.0, alone[1] / scale)

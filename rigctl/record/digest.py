@@ -45,11 +45,7 @@ def stored_digests(file: Any) -> dict[str, str] | None:
 
 def digests(file: Any) -> dict[str, str]:
     """Return the digest of each object, by path; `unreadable` where the library cannot read it."""
-    return {
-        path: _digest(item)
-        for path, item in _walk(file)
-        if path != DIGEST and not path.startswith(f"{DIGEST}/")
-    }
+    return {path: _digest(item) for path, item in _walk(file) if path != DIGEST and not path.startswith(f"{DIGEST}/")}
 
 
 def _walk(group: Any) -> Iterator[tuple[str, Any]]:

@@ -31,9 +31,7 @@ def clean_name(text: str) -> str:
     return name if name and not name[0].isdigit() else f"_{name}"
 
 
-def free_names(
-    texts: Sequence[str], *, suffixes: Sequence[str] = ("",), taken: Iterable[str] = ()
-) -> tuple[str, ...]:
+def free_names(texts: Sequence[str], *, suffixes: Sequence[str] = ("",), taken: Iterable[str] = ()) -> tuple[str, ...]:
     """Return a name for each text such that no name with any suffix is taken; the later of two is
     numbered."""
     used = set(taken)

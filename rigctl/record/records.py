@@ -108,13 +108,9 @@ def parse_dark(record: Mapping[str, Any]) -> Dark:
 def check_visit(visit: Visit, header: Header) -> None:
     """Raise `RecordError` for a visit that has no place in the layout."""
     shape = header.step(visit.step).shape
-    inside = len(visit.index) == len(shape) and all(
-        0 <= i < n for i, n in zip(visit.index, shape, strict=True)
-    )
+    inside = len(visit.index) == len(shape) and all(0 <= i < n for i, n in zip(visit.index, shape, strict=True))
     if not inside:
-        raise RecordError(
-            f"visit {visit.number} at {visit.index} lies outside the grid {shape}", where=visit.step
-        )
+        raise RecordError(f"visit {visit.number} at {visit.index} lies outside the grid {shape}", where=visit.step)
     require_word(visit.status, VISIT_STATUSES)
     _require_detectors(visit.dwells, header)
 

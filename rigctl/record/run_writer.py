@@ -102,9 +102,7 @@ class RunWriter:
         try:
             self.view()
         except RecordError as error:
-            self.append(
-                {"kind": "event", "t": timeline.now(), "text": f"no view: {error.what}", "level": "warning"}
-            )
+            self.append({"kind": "event", "t": timeline.now(), "text": f"no view: {error.what}", "level": "warning"})
         now_s = timeline.now()
         self._next_view_s = now_s + max(VIEW_EVERY_S, VIEW_SHARE * (now_s - began_s))
 

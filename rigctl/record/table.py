@@ -70,9 +70,7 @@ def dark_table(run: Run) -> Table:
     return _table((axis,), detector_variables(frame, [dark.dwells for dark in darks], _DARK_VARIABLES), own)
 
 
-def _table(
-    axes: tuple[Variable, ...], detectors: Sequence[tuple[Variable, ...]], own: tuple[Variable, ...]
-) -> Table:
+def _table(axes: tuple[Variable, ...], detectors: Sequence[tuple[Variable, ...]], own: tuple[Variable, ...]) -> Table:
     measured = tuple(variable for group in detectors for variable in group[:-1])
     signals = tuple(group[0].name for group in detectors)
     return Table(axes, tuple(group[-1] for group in detectors), signals, (*measured, *own))
@@ -109,9 +107,7 @@ def _about_visits(frame: Frame, visits: Sequence[Visit]) -> tuple[Variable, ...]
     return (
         frame.times([_middle(visit.dwells, visit.began_s, visit.ended_s) for visit in visits]),
         frame.words("status", [_status(visit) for visit in visits], STATUSES, "how the visit went"),
-        Variable(
-            "visit", frame.dims, numbers, {"long_name": "number of the visit as planned, -1 where none"}
-        ),
+        Variable("visit", frame.dims, numbers, {"long_name": "number of the visit as planned, -1 where none"}),
         Variable("attempt", frame.dims, attempts, {"long_name": "attempt that is shown, 0 where none"}),
     )
 

@@ -30,9 +30,7 @@ class Verification:
 
     def findings(self) -> tuple[str, ...]:
         """What is wrong, a sentence each."""
-        state = (
-            "it is being recorded now" if self.is_live else "it was never closed: a copy made during its run"
-        )
+        state = "it is being recorded now" if self.is_live else "it was never closed: a copy made during its run"
         return (
             *(() if self.is_closed else (state,)),
             *(f"{path} has changed" for path in self.changed),

@@ -60,9 +60,7 @@ def filled_roles(recipe: Recipe, rig: Rig) -> Mapping[str, InstrumentEntry]:
     return {role: entry for role, entry in found.items() if entry is not None}
 
 
-def declared_capabilities(
-    recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]
-) -> Mapping[str, Capabilities]:
+def declared_capabilities(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Mapping[str, Capabilities]:
     """Return what the instrument in each filled role can do, from the rig file alone."""
     entries = filled_roles(recipe, rig)
     return {role: drivers[entry.driver].capabilities(entry.options) for role, entry in entries.items()}

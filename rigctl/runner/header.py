@@ -24,9 +24,7 @@ def make_header(
         recipe=Document(recipe.text, recipe.path, recipe.sha256),
         rig=Document(rig.text, rig.path, rig.sha256),
         steps=step_layouts(recipe),
-        detectors=tuple(
-            role for role, kind in recipe.roles.items() if kind.kind == "power meter" and rig.entry(role)
-        ),
+        detectors=tuple(role for role, kind in recipe.roles.items() if kind.kind == "power meter" and rig.entry(role)),
         versions={"polrig": __version__, "python": python, **libraries},
         operator=operator,
         part=part,

@@ -77,16 +77,12 @@ def duration_s(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> floa
     slowest_s = max((tau for meter in meters for tau in meter.time_constant_s), default=0.0)
     total = sum(_step_duration_s(step, recipe, stages, slowest_s=slowest_s) for step in recipe.steps)
     if recipe.dark is not None:
-        one = (
-            DARK_DWELLS * recipe.dwell.time_s + 2 * 9.21 * slowest_s + 2 * sum(c.moves_in_s for c in shutters)
-        )
+        one = DARK_DWELLS * recipe.dwell.time_s + 2 * 9.21 * slowest_s + 2 * sum(c.moves_in_s for c in shutters)
         total += (recipe.dark.before + recipe.dark.after) * one
     return total
 
 
-def _step_duration_s(
-    step: Step, recipe: Recipe, stages: Mapping[str, StageCapabilities], *, slowest_s: float
-) -> float:
+def _step_duration_s(step: Step, recipe: Recipe, stages: Mapping[str, StageCapabilities], *, slowest_s: float) -> float:
     last: dict[str, float] = {}
     per_visit = settle_s(step, slowest_s) + recipe.dwell.time_s + 4 * EXCHANGE_S
     total = 0.0

@@ -64,16 +64,18 @@ def predicted(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> "Pred
     """
     import numpy as np
 
+    from rigctl.optics import readings
     from rigctl.polarimetry import predict
 
     train = train_of(recipe)
     visits = planned_visits(recipe, train, duration_s=duration_s(recipe, capabilities))
+    nominal = {name: quantity.value for name, quantity in train.quantities.items()}
     variances = {}
-    for detector in train.detectors:
-        meter = capabilities[detector.name]
+    for name, power_w in readings(train, visits, nominal).items():
+        meter = capabilities[name]
         assert isinstance(meter, MeterCapabilities)
-        noise_w = _noise_on_range_w(meter, expected_peak_w(recipe, detector.name))
-        variances[detector.name] = np.full(visits.is_open.size, noise_w**2 / recipe.dwell.readings)
+        noise_w = np.hypot(_noise_on_range_w(meter, expected_peak_w(recipe, name)), meter.relative_noise * power_w)
+        variances[name] = noise_w**2 / recipe.dwell.readings
     return predict(train, visits, variances)
 
 

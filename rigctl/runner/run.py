@@ -129,9 +129,7 @@ class _Run:
 
     def _opened(self) -> AbstractContextManager[OpenBench]:
         job = self.job
-        return open_bench(
-            job.recipe, job.rig, job.drivers, open_channel=job.open_channel, timeline=self.timeline
-        )
+        return open_bench(job.recipe, job.rig, job.drivers, open_channel=job.open_channel, timeline=self.timeline)
 
     def _measure(self, bench: OpenBench) -> None:
         visiting = Visiting(bench, self.recipe, self.timeline, self.job.person)
@@ -236,9 +234,7 @@ class _Run:
                 if step.is_confirmed:
                     self._event(f"'{step.role}' {step.wanted}", "info")
                 else:
-                    self._event(
-                        f"'{step.role}' could not be confirmed {step.wanted}: {step.trouble}", "error"
-                    )
+                    self._event(f"'{step.role}' could not be confirmed {step.wanted}: {step.trouble}", "error")
             except RecordError:
                 continue
 

@@ -38,11 +38,7 @@ class Visiting:
 
     def raise_range(self, role: str) -> bool:
         """Go to a meter's next larger range; False when it is on its largest."""
-        larger = [
-            full
-            for full in self.bench.meters[role].capabilities.ranges_w
-            if full > self._ranges_w[role] * 1.01
-        ]
+        larger = [full for full in self.bench.meters[role].capabilities.ranges_w if full > self._ranges_w[role] * 1.01]
         if larger:
             self.use_range(role, larger[0])
         return bool(larger)
@@ -78,9 +74,7 @@ class Visiting:
             began_s = self.timeline.now()
             detectors = {role: dwell_record(dwell) for role, dwell in self._dwell().items()}
             times = {"t_begin": began_s, "t_end": self.timeline.now()}
-            records.append(
-                {"kind": "dark", "step": step, "when": when, "how": how, **times, "detectors": detectors}
-            )
+            records.append({"kind": "dark", "step": step, "when": when, "how": how, **times, "detectors": detectors})
         return records
 
     def open_beam(self) -> None:

@@ -31,7 +31,6 @@ CLOCKWISE = "clockwise to an eye facing the light"
 HOMED_BY_RUN = "at start"
 APERTURES_S = (1e-4, 100.0)
 SWITCH_CHANNELS = 8
-RELATIVE_NOISE = 1e-4
 
 BENCH_OPTIONS: Mapping[str, Option] = {
     "power": Option("power", meaning="true power of the source at the start of the run"),
@@ -40,9 +39,7 @@ BENCH_OPTIONS: Mapping[str, Option] = {
 TWIN_OPTIONS: Mapping[str, Mapping[str, Option]] = {
     METER: {
         "noise": Option("power", meaning="standard deviation of a reading in the dark, on any range"),
-        "relative noise": Option(
-            "ratio", default=RELATIVE_NOISE, meaning="standard deviation that grows with the power"
-        ),
+        "relative noise": Option("ratio", meaning="standard deviation that grows with the power"),
         "time constant": Option("time", meaning="true lag of the head"),
         "stray light": Option("power", meaning="true light that reaches the head beside the beam"),
     },
@@ -113,9 +110,7 @@ class _Assembly:
         make = AxisMake((low, high), options["speed"], options["acceleration"], options["resolution"])
         left_at = 0.0
         if options["homing"] == HOMED_BY_RUN:
-            left_at = float(
-                generator(self._seed, f"{entry.name} left at").uniform(max(low, -180), min(high, 180))
-            )
+            left_at = float(generator(self._seed, f"{entry.name} left at").uniform(max(low, -180), min(high, 180)))
         return Axis(make, left_at_deg=left_at)
 
     def _make_world(self) -> World:
@@ -153,12 +148,13 @@ class _Assembly:
         # as the driver has it: the noise belongs to the smallest range and grows with the full scale
         noise_w = [options["noise"] * full_scale_w / ranges_w[0] for full_scale_w in ranges_w]
         flat_noise_w = self._simulated(entry, "noise")
+        relative_noise = self._simulated(entry, "relative noise")
         lag_s = self._simulated(entry, "time constant")
         make = MeterMake(
             ranges_w=ranges_w,
             time_constants_s=(options["time constant"] if lag_s is None else lag_s,) * len(ranges_w),
             noise_w=tuple(noise_w) if flat_noise_w is None else (flat_noise_w,) * len(ranges_w),
-            relative_noise=self._simulated(entry, "relative noise"),
+            relative_noise=options["relative noise"] if relative_noise is None else relative_noise,
             saturation_w=options["saturation"] or ranges_w[-1],
             apertures_s=APERTURES_S,
         )
@@ -189,8 +185,7 @@ def _several(entries: list[InstrumentEntry]) -> str:
 def _plain(name: str) -> str:
     """Write a name so that it fits into a field of an identity: ASCII, without separators of replies."""
     return "".join(
-        letter if letter.isascii() and letter.isprintable() and letter not in ",;[]" else "_"
-        for letter in name
+        letter if letter.isascii() and letter.isprintable() and letter not in ",;[]" else "_" for letter in name
     )
 
 

@@ -148,9 +148,7 @@ class GcodeTwin:
         if not block.axes:
             self._ok(at_s)
         elif self._machine.room_from_s(at_s) > at_s:
-            self._pending = Pending(
-                lambda: self._machine.room_from_s(-math.inf), lambda s: self._plan(block, s)
-            )
+            self._pending = Pending(lambda: self._machine.room_from_s(-math.inf), lambda s: self._plan(block, s))
         else:
             self._plan(block, at_s)
 

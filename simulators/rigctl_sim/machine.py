@@ -51,9 +51,7 @@ class Axis:
         """Go to a counted angle, rounded to a step; return the instant at which it is there."""
         step = self.make.resolution_deg
         target = round(target_deg / step) * step - self.lost_deg
-        return self.dial.move(
-            start_s, target, speed=speed_deg_per_s, acceleration=self.make.acceleration_deg_per_s2
-        )
+        return self.dial.move(start_s, target, speed=speed_deg_per_s, acceleration=self.make.acceleration_deg_per_s2)
 
     def hold(self, now_s: float) -> float:
         """Slow down; return the instant of rest."""

@@ -100,9 +100,7 @@ def tcp_beside_a_bare_socket() -> str:
             thread.join()
     ours_us, bare_us = (statistics.median(column) * 1e6 for column in zip(*pairs, strict=True))
     ratio = statistics.median(own_s / bare_s for own_s, bare_s in pairs)
-    return (
-        f"tcp: {ours_us:.1f} us a round trip; a bare socket beside it {bare_us:.1f} us; ratio {ratio:.2f}\n"
-    )
+    return f"tcp: {ours_us:.1f} us a round trip; a bare socket beside it {bare_us:.1f} us; ratio {ratio:.2f}\n"
 
 
 if __name__ == "__main__":

@@ -54,7 +54,8 @@ def main() -> None:
         took_s = visits[-1].ended_s - visits[0].ended_s
         least_s = needed_s(recipe, stage)
         print(f"{len(visits)} visits over TCP: {took_s:.3f} s; motion, settling and dwell {least_s:.3f} s")
-        print(f"overhead {100 * (took_s / least_s - 1):.2f} %, {1e3 * (took_s - least_s) / (len(visits) - 1):.1f} ms a visit")
+        extra_ms = 1e3 * (took_s - least_s) / (len(visits) - 1)
+        print(f"overhead {100 * (took_s / least_s - 1):.2f} %, {extra_ms:.1f} ms a visit")
 
 
 if __name__ == "__main__":

@@ -28,9 +28,7 @@ def make_job(folder: Path, seed: int, sink: io.StringIO | None = None) -> Job:
     match(recipe, rig, drivers)
     tap = {} if sink is None else {"wrap": lambda channel, timeline: TappedChannel(channel, timeline, sink)}
     path = folder / f"run-{seed}.h5"
-    return rehearsal_job(
-        recipe, rig, drivers=drivers, factory=factory, seed=seed, path=path, progress=Silent(), **tap
-    )
+    return rehearsal_job(recipe, rig, drivers=drivers, factory=factory, seed=seed, path=path, progress=Silent(), **tap)
 
 
 def bare_exchanges_per_second(folder: Path) -> float:
@@ -61,7 +59,9 @@ def main() -> None:
         bare = bare_exchanges_per_second(folder)
         best = max(rates)
         print(f"rehearsal: {best:,.0f} visits/s (three runs: {', '.join(f'{r:,.0f}' for r in rates)})")
-        print(f"{exchanges:.2f} exchanges a visit; bare exchanges {bare:,.0f}/s, so {bare / exchanges / best:.1f} times")
+        print(
+            f"{exchanges:.2f} exchanges a visit; bare exchanges {bare:,.0f}/s, so {bare / exchanges / best:.1f} times"
+        )
         print("slower than its exchanges alone")
         profile = cProfile.Profile()
         job = make_job(folder, 5)

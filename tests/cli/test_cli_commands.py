@@ -8,7 +8,7 @@ import subprocess
 from pathlib import Path
 
 import pytest
-from conftest import COMMAND, RECIPE, RIG, polrig
+from cli_cases import COMMAND, RECIPE, RIG, polrig
 
 from rigctl.record import load_run
 
@@ -22,9 +22,7 @@ def recipe(tmp_path: Path) -> Path:
     return path
 
 
-def test_rehearse_says_where_the_run_file_is_and_prints_the_fit_beside_the_truth(
-    recipe: Path, tmp_path: Path
-) -> None:
+def test_rehearse_says_where_the_run_file_is_and_prints_the_fit_beside_the_truth(recipe: Path, tmp_path: Path) -> None:
     done = polrig("rehearse", recipe, "--out", tmp_path / "run.h5")
 
     assert done.returncode == 0, done.stderr
@@ -112,9 +110,7 @@ def test_verify_tells_a_changed_file_with_exit_code_9(recipe: Path, tmp_path: Pa
 
 @pytest.mark.parametrize("command", ["fit", "verify"])
 @pytest.mark.parametrize("content", [None, b"", b"no HDF5", b"\x89HDF\r\n\x1a\n" + b"\0" * 500])
-def test_what_is_no_run_file_is_told_in_a_sentence(
-    command: str, content: bytes | None, tmp_path: Path
-) -> None:
+def test_what_is_no_run_file_is_told_in_a_sentence(command: str, content: bytes | None, tmp_path: Path) -> None:
     path = tmp_path / "what.h5"
     if content is not None:
         path.write_bytes(content)

@@ -7,15 +7,22 @@ import signal
 import socket
 import subprocess
 import time
+from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
-from conftest import COMMAND, RECIPE, RIG, Twins, polrig, serving, wait_for_visits
+from cli_cases import COMMAND, RECIPE, RIG, Twins, polrig, serving, wait_for_visits
 
 from rigctl.record import load_run, verify_run
 
 VISITS = 12
 SLOW_RECIPE = RECIPE.replace("time: 100 ms", "time: 2 s")
+
+
+@pytest.fixture
+def twins(tmp_path: Path) -> Iterator[Twins]:
+    with serving(tmp_path) as served:
+        yield served
 
 
 def start_run(twins: Twins, path: Path) -> subprocess.Popen[str]:
@@ -27,9 +34,7 @@ def start_run(twins: Twins, path: Path) -> subprocess.Popen[str]:
 
 
 def test_a_live_run_over_tcp_measures_fits_and_leaves_the_beam_blocked(twins: Twins, tmp_path: Path) -> None:
-    done = polrig(
-        "run", twins.recipe, "--rig", twins.rig, "--out", tmp_path / "run.h5", "--part", "P-7", "--json"
-    )
+    done = polrig("run", twins.recipe, "--rig", twins.rig, "--out", tmp_path / "run.h5", "--part", "P-7", "--json")
 
     answer = json.loads(done.stdout)
     assert done.returncode == 0, done.stderr
@@ -44,9 +49,7 @@ def test_a_live_run_over_tcp_measures_fits_and_leaves_the_beam_blocked(twins: Tw
 
 def test_a_live_run_and_a_rehearsal_of_one_seed_agree_on_the_truth(twins: Twins, tmp_path: Path) -> None:
     live = polrig("run", twins.recipe, "--rig", twins.rig, "--out", tmp_path / "run.h5", "--json")
-    rehearsed = polrig(
-        "rehearse", twins.recipe, "--rig", twins.original, "--out", tmp_path / "rehearsal.h5", "--json"
-    )
+    rehearsed = polrig("rehearse", twins.recipe, "--rig", twins.original, "--out", tmp_path / "rehearsal.h5", "--json")
 
     fits = [json.loads(done.stdout)["fit"]["estimates"] for done in (live, rehearsed)]
     for ours, theirs in zip(*fits, strict=True):
@@ -111,9 +114,7 @@ def test_nobody_listening_is_exit_code_3_and_says_which_address(tmp_path: Path) 
     (tmp_path / "recipe.yaml").write_text(RECIPE, encoding="utf-8")
     (tmp_path / "rig.yaml").write_text(RIG.replace(":5001", f":{port}"), encoding="utf-8")
 
-    done = polrig(
-        "run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--out", tmp_path / "run.h5"
-    )
+    done = polrig("run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--out", tmp_path / "run.h5")
 
     assert done.returncode == 3
     assert f"tcp://127.0.0.1:{port}" in done.stderr
@@ -143,9 +144,7 @@ def test_darks_by_hand_without_a_terminal_end_at_once_with_exit_code_2_and_nothi
         (tmp_path / "recipe.yaml").write_text(RECIPE.replace("by: shutter", "by: hand"), encoding="utf-8")
         (tmp_path / "rig.yaml").write_text(RIG.replace(":5001", f":{port}"), encoding="utf-8")
 
-        done = polrig(
-            "run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--out", tmp_path / "run.h5"
-        )
+        done = polrig("run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--out", tmp_path / "run.h5")
 
         assert done.returncode == 2
         assert "by hand" in done.stderr

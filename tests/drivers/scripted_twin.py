@@ -32,9 +32,7 @@ class ScriptedTwin:
         self._answers: deque[tuple[float, bytes]] = deque()
         self.heard: list[bytes] = []
 
-    def expect(
-        self, expected: bytes, answer: bytes = b"", *, after_s: float = 0.0, drips_s: float = 0.0
-    ) -> None:
+    def expect(self, expected: bytes, answer: bytes = b"", *, after_s: float = 0.0, drips_s: float = 0.0) -> None:
         """Add a line to the script; with `drips_s` the answer comes byte by byte, so far apart."""
         self._script.append(Line(expected, answer, after_s, drips_s))
 

@@ -137,9 +137,7 @@ def test_another_instrument_of_the_family_is_the_wrong_one(named: str, standing:
             instrument.identify()
 
 
-@pytest.mark.parametrize(
-    ("named", "standing"), [("gcode-rotary", "scpi-switch"), ("scpi-switch", "gcode-rotary")]
-)
+@pytest.mark.parametrize(("named", "standing"), [("gcode-rotary", "scpi-switch"), ("scpi-switch", "gcode-rotary")])
 def test_an_instrument_of_another_family_never_passes(named: str, standing: str) -> None:
     driver, _, options = DRIVERS[named]
     with place("loopback", driver, DRIVERS[standing][1]()) as at:
@@ -150,9 +148,7 @@ def test_an_instrument_of_another_family_never_passes(named: str, standing: str)
 
 @pytest.mark.parametrize("angle_deg", [45.0, 370.25, -725.125, 0.0])
 @pytest.mark.parametrize("positive", [gcode.COUNTER_CLOCKWISE, CLOCKWISE])
-def test_a_mount_arrives_at_any_turn_in_either_sense(
-    mount_place: Place, angle_deg: float, positive: str
-) -> None:
+def test_a_mount_arrives_at_any_turn_in_either_sense(mount_place: Place, angle_deg: float, positive: str) -> None:
     mount = mount_at(mount_place, positive=positive)
 
     assert mount_place.wait_for(mount.begin_move(angle_deg)) == angle_deg

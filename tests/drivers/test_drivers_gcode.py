@@ -163,9 +163,7 @@ def test_a_report_from_before_the_start_is_not_taken_for_a_stall(gcode: Bench) -
     ("state", "words"),
     [("Hold:0", "held"), ("Door:1", "safety door"), ("Check", "moves nothing"), ("Sleep", "sleeps")],
 )
-def test_a_mount_that_is_kept_from_turning_says_by_what_and_what_to_do(
-    gcode: Bench, state: str, words: str
-) -> None:
+def test_a_mount_that_is_kept_from_turning_says_by_what_and_what_to_do(gcode: Bench, state: str, words: str) -> None:
     begun = begin(gcode, make_mount(gcode), 45.0, b"G90 G53 G0 A45.000\n")
     gcode.twin.expect(b"?", report(state))
 
@@ -330,9 +328,7 @@ def test_a_work_offset_in_a_report_of_machine_positions_changes_nothing(gcode: B
 
 
 @pytest.mark.parametrize(("state", "is_homed"), [("Idle", True), ("Alarm", False)])
-def test_a_mount_that_is_never_homed_is_trusted_unless_in_alarm(
-    gcode: Bench, state: str, is_homed: bool
-) -> None:
+def test_a_mount_that_is_never_homed_is_trusted_unless_in_alarm(gcode: Bench, state: str, is_homed: bool) -> None:
     gcode.twin.expect(b"?", report(state))
 
     assert make_mount(gcode).is_homed() is is_homed

@@ -62,9 +62,7 @@ SAMPLES = (
     Sample("acknowledgement", of_line(parse_line), b"ok", Ack()),
     Sample("refusal", of_line(parse_line), b"error:22", Ack(22)),
     Sample("alarm", of_line(parse_line), b"ALARM:3", Alarm(3)),
-    Sample(
-        "message", of_line(parse_line), b"[MSG:'$H'|'$X' to unlock]", Message("MSG", "'$H'|'$X' to unlock")
-    ),
+    Sample("message", of_line(parse_line), b"[MSG:'$H'|'$X' to unlock]", Message("MSG", "'$H'|'$X' to unlock")),
     Sample(
         "greeting",
         of_line(parse_line),
@@ -127,9 +125,7 @@ def test_a_report_without_one_sound_position_is_refused(line: bytes) -> None:
         parse_report(line, address=ADDRESS)
 
 
-@pytest.mark.parametrize(
-    "line", [b"OK", b"okay", b"error:", b"error:x", b"ALARM", b"1.5E-3", b'0,"No error"']
-)
+@pytest.mark.parametrize("line", [b"OK", b"okay", b"error:", b"error:x", b"ALARM", b"1.5E-3", b'0,"No error"'])
 def test_a_line_of_another_convention_is_refused(line: bytes) -> None:
     with pytest.raises(FramingError, match="none of this convention"):
         parse_line(line, address=ADDRESS)
@@ -185,9 +181,7 @@ def test_an_axis_is_found_by_its_letter(values: tuple[float, ...], axis: str, po
         (-0.0001, b"G90 G53 G0 A0.000\n"),
     ],
 )
-def test_a_move_has_three_decimals_is_never_wrapped_and_knows_no_minus_zero(
-    position_deg: float, line: bytes
-) -> None:
+def test_a_move_has_three_decimals_is_never_wrapped_and_knows_no_minus_zero(position_deg: float, line: bytes) -> None:
     assert format_move("A", position_deg) == line
 
 

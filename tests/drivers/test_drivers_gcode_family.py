@@ -76,9 +76,7 @@ def test_a_refusal_among_the_stale_lines_is_told(gcode: Bench) -> None:
 def test_an_alarm_among_the_stale_lines_is_told_as_one(gcode: Bench) -> None:
     expect_resync(gcode, first=b"ALARM:1\r\n[MSG:Reset to continue]\r\n<Alarm|MPos:0.000>\r\n")
 
-    assert gcode.link.resync().complaints == (
-        (1, "ALARM: alarm 1: a hard limit was hit; the position is lost"),
-    )
+    assert gcode.link.resync().complaints == ((1, "ALARM: alarm 1: a hard limit was hit; the position is lost"),)
 
 
 def test_an_acknowledgement_too_many_makes_it_ask_for_another_report(gcode: Bench) -> None:

@@ -202,9 +202,7 @@ def test_a_trigger_count_that_is_cut_down_is_refused(scpi: Bench) -> None:
 
 
 @pytest.mark.parametrize("aperture_s", [1e-4, 11.0, -1.0, math.nan])
-def test_an_aperture_that_no_meter_has_is_refused_before_anything_is_sent(
-    scpi: Bench, aperture_s: float
-) -> None:
+def test_an_aperture_that_no_meter_has_is_refused_before_anything_is_sent(scpi: Bench, aperture_s: float) -> None:
     with pytest.raises(LimitError, match="outside what this meter integrates"):
         make_meter(scpi).set_dwell(1, aperture_s)
 
@@ -283,9 +281,7 @@ def test_a_block_that_the_meter_forgot_is_refused_with_its_reason(scpi: Bench) -
         b"\n",
     ],
 )
-def test_a_reply_that_is_none_is_refused_and_the_link_resyncs_before_the_next(
-    scpi: Bench, answer: bytes
-) -> None:
+def test_a_reply_that_is_none_is_refused_and_the_link_resyncs_before_the_next(scpi: Bench, answer: bytes) -> None:
     meter = make_ready_meter(scpi)
     scpi.twin.expect(BEGIN)
     scpi.twin.expect(FETCH, answer)

@@ -86,9 +86,7 @@ def test_no_noise_breaks_a_parser(noise: bytes) -> None:
         is_refused(sample.parse, noise)
 
 
-@pytest.mark.parametrize(
-    "line", [b'1;2;0,"No error"', b'0,"No error"', b'1;;2;0,"No error"', b'1;2;3;4;0,"No error"']
-)
+@pytest.mark.parametrize("line", [b'1;2;0,"No error"', b'0,"No error"', b'1;;2;0,"No error"', b'1;2;3;4;0,"No error"'])
 def test_a_reply_with_another_number_of_values_is_refused(line: bytes) -> None:
     with pytest.raises(FramingError, match="instead of 3"):
         parse_reply(line, values=3, address=ADDRESS)
@@ -177,9 +175,7 @@ def test_a_wavelength_above_a_thousandth_can_only_be_in_nm(text: str, unit_m: fl
         (1.0, "1" + "0" * 400 + "E-400", True),
     ],
 )
-def test_a_number_read_back_may_be_rounded_to_its_digits_and_no_more(
-    asked: float, text: str, is_same: bool
-) -> None:
+def test_a_number_read_back_may_be_rounded_to_its_digits_and_no_more(asked: float, text: str, is_same: bool) -> None:
     assert is_same_number(asked, text) == is_same
 
 
@@ -189,9 +185,7 @@ def test_a_number_read_back_in_another_unit_is_compared_in_the_unit_asked() -> N
 
 
 @given(value=st.floats(1e-12, 1e12), digits=st.integers(4, 12))
-def test_a_number_written_by_any_instrument_with_four_digits_is_the_same_number(
-    value: float, digits: int
-) -> None:
+def test_a_number_written_by_any_instrument_with_four_digits_is_the_same_number(value: float, digits: int) -> None:
     assert is_same_number(value, f"{value:.{digits}E}")
 
 

@@ -82,9 +82,7 @@ def place(transport: Transport, driver: Driver, twin: Twin) -> Iterator[Place]:
     if transport == "loopback":
         virtual = VirtualTimeline(datetime(2026, 1, 2, tzinfo=UTC))
         address = "tcp://bench:5025"
-        yield Place(
-            Link(address, lambda: LoopbackChannel(address, twin, virtual), driver.family, virtual), virtual
-        )
+        yield Place(Link(address, lambda: LoopbackChannel(address, twin, virtual), driver.family, virtual), virtual)
         virtual.stop.close()
         return
     with served(twin) as address:

@@ -78,7 +78,7 @@ def _turner(options: Options) -> StageCapabilities:
 
 def _meter(options: Options) -> MeterCapabilities:
     ranges = options["ranges"]
-    return MeterCapabilities(ranges, (0.01,) * len(ranges), (1e-9,) * len(ranges), ranges[-1], (1e-3, 1.0))
+    return MeterCapabilities(ranges, (0.01,) * len(ranges), (1e-9,) * len(ranges), 1e-4, ranges[-1], (1e-3, 1.0))
 
 
 def _drivers() -> dict[str, Driver]:
@@ -93,9 +93,7 @@ def _drivers() -> dict[str, Driver]:
         backlash=Option("angle", default=0.1),
     )
     meter = _driver("meter", "power meter", _meter, ranges=Option("list of power", default=(1e-3,)))
-    flap = _driver(
-        "flap", "shutter", lambda _: ShutterCapabilities(0.02), channel=Option("whole number", default=1)
-    )
+    flap = _driver("flap", "shutter", lambda _: ShutterCapabilities(0.02), channel=Option("whole number", default=1))
     return {driver.name: driver for driver in (turner, meter, flap)}
 
 

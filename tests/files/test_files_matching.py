@@ -41,8 +41,7 @@ def test_an_instrument_of_the_wrong_kind_is_told_at_its_place_in_the_rig() -> No
     swapped = {"signal: head 7": "signal: shutter 1", ", shutter: shutter 1": ""}
 
     assert complaints(rig_changes=swapped) == [
-        "b.yaml:7:38: 'shutter 1' fills the role 'signal' but is a shutter; "
-        "expected a power meter, as r.yaml asks"
+        "b.yaml:7:38: 'shutter 1' fills the role 'signal' but is a shutter; expected a power meter, as r.yaml asks"
     ]
 
 

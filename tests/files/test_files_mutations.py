@@ -38,12 +38,8 @@ PIECES = st.one_of(
             "- ",
         ]
     ),
-    st.sampled_from(
-        ["nan", "-", "0", "1e999", "%", "+-", "deg", "'", '"', "|", ">", "#", "? ", "\n", "  ", "°"]
-    ),
-    st.sampled_from(
-        ["polarizer", "retarder", "detector", "turn", "values: [1 deg]", "unknown", "steps", "dark"]
-    ),
+    st.sampled_from(["nan", "-", "0", "1e999", "%", "+-", "deg", "'", '"', "|", ">", "#", "? ", "\n", "  ", "°"]),
+    st.sampled_from(["polarizer", "retarder", "detector", "turn", "values: [1 deg]", "unknown", "steps", "dark"]),
     st.text(max_size=5),
 )
 
@@ -127,8 +123,7 @@ def test_a_very_long_recipe_takes_time_in_proportion() -> None:
     count = 3000
     roles = "".join(f"  role {i}: rotation stage\n" for i in range(count))
     optics = "".join(
-        f"  - polarizer: {{name: p{i}, turned by: role {i}, extinction ratio: 1000:1}}\n"
-        for i in range(count)
+        f"  - polarizer: {{name: p{i}, turned by: role {i}, extinction ratio: 1000:1}}\n" for i in range(count)
     )
     sweep = "".join(f"{{role {i}: {{values: [1 deg]}}}}, " for i in range(count))
     text = replaced(

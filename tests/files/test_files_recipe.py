@@ -171,9 +171,7 @@ def test_a_recipe_keeps_its_text_and_where_it_came_from(tmp_path: Path) -> None:
 
 
 @pytest.mark.parametrize("encode", [lambda t: b"\xef\xbb\xbf" + t, lambda t: t.replace(b"\n", b"\r\n")])
-def test_a_byte_order_mark_and_foreign_line_ends_change_nothing_but_the_text(
-    encode: object, tmp_path: Path
-) -> None:
+def test_a_byte_order_mark_and_foreign_line_ends_change_nothing_but_the_text(encode: object, tmp_path: Path) -> None:
     data = encode(RECIPE.encode())  # type: ignore[operator]
     path = tmp_path / "r.yaml"
     path.write_bytes(data)

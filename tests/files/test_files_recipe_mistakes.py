@@ -225,9 +225,7 @@ def mistake(changes: Changes) -> tuple[str, str, str, str]:
         ("at least: 4 readings", "", "13:1", "the key 'at least' of 'dwell' is missing", "", ""),
     ],
 )
-def test_a_wrong_key_or_value_is_told(
-    old: str, new: str, place: str, what: str, expected: str, nearest: str
-) -> None:
+def test_a_wrong_key_or_value_is_told(old: str, new: str, place: str, what: str, expected: str, nearest: str) -> None:
     assert mistake({old: new}) == (place, what, expected, nearest)
 
 
@@ -538,9 +536,7 @@ def test_parts_that_do_not_go_together_are_told(
         ("{}", "12:22", "something is missing here", "exactly one of 'turn', 'values' or 'range'", ""),
     ],
 )
-def test_angles_that_make_no_sweep_are_told(
-    axis: str, place: str, what: str, expected: str, nearest: str
-) -> None:
+def test_angles_that_make_no_sweep_are_told(axis: str, place: str, what: str, expected: str, nearest: str) -> None:
     assert mistake({SWEEP: axis}) == (place, what, expected, nearest)
 
 

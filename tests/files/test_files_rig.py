@@ -34,9 +34,7 @@ def test_one_entry_of_a_list_may_stand_without_it() -> None:
 
 
 def test_keys_that_are_left_out_have_their_defaults() -> None:
-    options = rig(
-        {"channel: B, positive: clockwise, travel: -10 to 400 deg": "backlash: 0.5 deg"}
-    ).instruments
+    options = rig({"channel: B, positive: clockwise, travel: -10 to 400 deg": "backlash: 0.5 deg"}).instruments
 
     assert options["mount 1"].options == {
         "channel": "A",
@@ -344,17 +342,13 @@ def test_the_same_instrument_twice_is_refused() -> None:
 def test_without_any_driver_none_can_be_named() -> None:
     lines = told(lambda: parse_rig(RIG, "b.yaml", {}, None))
 
-    assert (
-        lines[0] == "b.yaml:3:21: no driver is called 'turner'; expected an installed driver; there is none"
-    )
+    assert lines[0] == "b.yaml:3:21: no driver is called 'turner'; expected an installed driver; there is none"
 
 
 def test_a_message_offers_a_few_words_of_many() -> None:
     spare = "".join(f"  spare {i}: {{driver: turner, at: 'tcp://h{i}:1'}}\n" for i in range(100))
 
-    _, _, expected, _ = mistake(
-        {"instruments:\n": f"instruments:\n{spare}", "signal: head 7": "signal: lamp"}
-    )
+    _, _, expected, _ = mistake({"instruments:\n": f"instruments:\n{spare}", "signal: head 7": "signal: lamp"})
 
     assert expected.startswith("one of 'spare 0', 'spare 1', ")
     assert expected.endswith("'spare 11' and 91 more")

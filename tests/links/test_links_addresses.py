@@ -70,9 +70,7 @@ def test_another_way_to_an_instrument_is_named(text: str, scheme: str) -> None:
 
 
 @given(
-    st.one_of(
-        st.ip_addresses().map(str), st.from_regex(r"[a-z][a-z0-9-]{0,8}(\.[a-z]{1,5})?", fullmatch=True)
-    ),
+    st.one_of(st.ip_addresses().map(str), st.from_regex(r"[a-z][a-z0-9-]{0,8}(\.[a-z]{1,5})?", fullmatch=True)),
     st.integers(min_value=1, max_value=65535),
 )
 def test_an_address_written_out_reads_back_the_same(host: str, port: int) -> None:

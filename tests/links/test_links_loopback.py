@@ -35,9 +35,7 @@ def test_writing_takes_no_time(channel: LoopbackChannel, virtual: VirtualTimelin
     assert virtual.now() == 0.0
 
 
-def test_a_reply_that_is_ready_at_the_deadline_itself_is_in_time(
-    channel: LoopbackChannel, twin: ActingTwin
-) -> None:
+def test_a_reply_that_is_ready_at_the_deadline_itself_is_in_time(channel: LoopbackChannel, twin: ActingTwin) -> None:
     twin.acts.append([Pause(3.0), b"1.5\n"])
     channel.write(b"READ?\n", 3.0)
 
@@ -98,9 +96,7 @@ def test_exactly_the_bytes_asked_for_are_read(channel: LoopbackChannel, twin: Ac
     assert channel.read_exact(3, 9.0) == b"def"
 
 
-def test_closing_forgets_what_was_read_in_part_but_not_the_twin(
-    channel: LoopbackChannel, twin: ActingTwin
-) -> None:
+def test_closing_forgets_what_was_read_in_part_but_not_the_twin(channel: LoopbackChannel, twin: ActingTwin) -> None:
     twin.acts.append([b"old", Pause(1.0), b"new\n"])
     channel.write(b"READ?\n", 9.0)
     with pytest.raises(LinkTimeoutError):

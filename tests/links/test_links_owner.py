@@ -132,9 +132,7 @@ def test_of_many_that_want_one_address_at_once_one_at_a_time_has_it() -> None:
     assert most == [1]
 
 
-def test_a_directory_that_cannot_be_used_is_told(
-    monkeypatch: pytest.MonkeyPatch, own_lock_files: Path
-) -> None:
+def test_a_directory_that_cannot_be_used_is_told(monkeypatch: pytest.MonkeyPatch, own_lock_files: Path) -> None:
     monkeypatch.setattr(tempfile, "tempdir", str(own_lock_files / "missing"))
 
     with pytest.raises(BusyError, match="see who may write"):

@@ -168,9 +168,7 @@ def test_a_full_disk_is_told_once_and_the_bytes_pass_on(twin: ActingTwin, virtua
     assert twin.heard == [b"A", b"B", b"OUTP 0"]
 
 
-def test_a_full_disk_is_told_once_for_all_channels_that_share_it(
-    twin: ActingTwin, virtual: VirtualTimeline
-) -> None:
+def test_a_full_disk_is_told_once_for_all_channels_that_share_it(twin: ActingTwin, virtual: VirtualTimeline) -> None:
     sink = FullDisk(lines=0)
     with pytest.raises(RecordError):
         tapped(twin, virtual, sink).write(b"A\n", 9.0)

@@ -198,9 +198,7 @@ def test_a_stop_request_wakes_a_connection_under_way(wall: WallTimeline) -> None
         timer.join()
 
 
-def test_a_request_that_is_held_back_does_not_make_a_read_spin(
-    channel: TcpChannel, wall: WallTimeline
-) -> None:
+def test_a_request_that_is_held_back_does_not_make_a_read_spin(channel: TcpChannel, wall: WallTimeline) -> None:
     wall.stop.request("ctrl-c")
     began_s = time.thread_time()
 
@@ -295,9 +293,7 @@ def test_what_has_arrived_is_read_even_after_the_deadline(
         (socket.IPPROTO_TCP, socket.TCP_USER_TIMEOUT, 20_000),
     ],
 )
-def test_a_dead_peer_is_noticed_by_the_system(
-    channel: TcpChannel, level: int, option: int, value: int
-) -> None:
+def test_a_dead_peer_is_noticed_by_the_system(channel: TcpChannel, level: int, option: int, value: int) -> None:
     assert channel._socket.getsockopt(level, option) == value
 
 

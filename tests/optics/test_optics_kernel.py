@@ -41,9 +41,7 @@ def test_light_behind_an_element_is_its_matrix_times_the_light(
 ) -> None:
     element = Coefficients(a, b, gc, gs)
 
-    assert through(LIGHT, turn(azimuth), element) == pytest.approx(
-        mueller(element, azimuth) @ LIGHT, abs=1e-14
-    )
+    assert through(LIGHT, turn(azimuth), element) == pytest.approx(mueller(element, azimuth) @ LIGHT, abs=1e-14)
 
 
 @given(a=unit, b=unit, gc=unit, gs=unit, azimuth=angles)
@@ -81,9 +79,7 @@ def test_slopes_with_the_coefficients_are_differences_of_whole_matrices() -> Non
 
     for k, slope in enumerate(slopes):
         one = Coefficients(*np.eye(4)[k])
-        assert slope[0] == pytest.approx(np.array(row) @ mueller(one, azimuth) @ LIGHT, abs=1e-14), (
-            element._fields[k]
-        )
+        assert slope[0] == pytest.approx(np.array(row) @ mueller(one, azimuth) @ LIGHT, abs=1e-14), element._fields[k]
 
 
 def test_the_torque_is_the_slope_of_a_common_turn() -> None:

@@ -30,9 +30,7 @@ def test_half_a_turn_of_any_mount_changes_nothing(seed: int) -> None:
 
     turned = Visits({m: a + 180.0 for m, a in visits.angle_deg.items()}, visits.is_open, visits.time_h)
 
-    assert readings(train, turned, {})["signal"] == pytest.approx(
-        readings(train, visits, {})["signal"], abs=1e-12
-    )
+    assert readings(train, turned, {})["signal"] == pytest.approx(readings(train, visits, {})["signal"], abs=1e-12)
 
 
 @given(seed=seeds, angle_deg=angles)
@@ -43,9 +41,7 @@ def test_turning_the_whole_train_in_unpolarized_light_changes_nothing(seed: int,
 
     turned = {e.axis: train.quantities[e.axis].value + angle_deg for e in train.elements}
 
-    assert readings(train, visits, turned)["signal"] == pytest.approx(
-        readings(train, visits, {})["signal"], abs=1e-11
-    )
+    assert readings(train, visits, turned)["signal"] == pytest.approx(readings(train, visits, {})["signal"], abs=1e-11)
 
 
 @given(seed=seeds, angle_deg=angles)
@@ -55,9 +51,7 @@ def test_an_axis_turned_forward_is_a_dial_offset_turned_back(seed: int, angle_de
 
     by_axis = readings(train, visits, {"part.axis": angle_deg})["signal"]
 
-    assert readings(train, visits, {"part.dial offset": -angle_deg})["signal"] == pytest.approx(
-        by_axis, abs=1e-12
-    )
+    assert readings(train, visits, {"part.dial offset": -angle_deg})["signal"] == pytest.approx(by_axis, abs=1e-12)
 
 
 @given(waves=st.floats(-3.0, 3.0), angle_deg=angles)
@@ -86,8 +80,7 @@ def test_swapping_fast_and_slow_axis_is_a_quarter_turn(waves: float, angle_deg: 
 def test_retarders_alone_lose_nothing(seed: int) -> None:
     rng = np.random.default_rng(seed)
     parts = [
-        retarder(f"plate {i}", waves=float(rng.uniform(-2, 2)), axis_deg=float(rng.uniform(0, 180)))
-        for i in range(4)
+        retarder(f"plate {i}", waves=float(rng.uniform(-2, 2)), axis_deg=float(rng.uniform(0, 180))) for i in range(4)
     ]
 
     power = reader(assemble(*parts, source=(1.0, 0.3, -0.4, 0.5)), {})({}, 2.0)[0]

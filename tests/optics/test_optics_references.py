@@ -36,9 +36,7 @@ def py_pol_power(train: Train, angles_deg: dict[str, float]) -> float:
         else:
             matrix = mueller.Mueller().retarder_linear(R=2 * np.pi * value, azimuth=azimuth)
         light = matrix * light
-    return train.quantities["source.power"].value * float(
-        np.squeeze(light.parameters.intensity(out_number=False))
-    )
+    return train.quantities["source.power"].value * float(np.squeeze(light.parameters.intensity(out_number=False)))
 
 
 def pypolar_jones(train: Train, angles_deg: dict[str, float]) -> Array:
@@ -64,9 +62,7 @@ def test_random_trains_agree_with_py_pol(seed: int) -> None:
 
     expected = py_pol_power(train, angles)
 
-    assert reader(train, {})(angles, train.quantities["source.power"].value)[0] == pytest.approx(
-        expected, abs=1e-12
-    )
+    assert reader(train, {})(angles, train.quantities["source.power"].value)[0] == pytest.approx(expected, abs=1e-12)
 
 
 @pytest.mark.parametrize("seed", SEEDS)
@@ -94,18 +90,14 @@ def test_the_scalar_reader_equals_the_array_path(seed: int) -> None:
         for i in range(visits.count)
     ]
 
-    assert readings(train, visits, {})["signal"] == pytest.approx(
-        one_by_one * visits.is_open, abs=1e-15, rel=1e-14
-    )
+    assert readings(train, visits, {})["signal"] == pytest.approx(one_by_one * visits.is_open, abs=1e-15, rel=1e-14)
 
 
 @pytest.mark.parametrize(
     ("exit_axis_deg", "expected"),
     [(0.0, 0.3679100062765548), (90.0, 0.6320899937234453), (25.0, 0.5539388929756749)],
 )
-def test_a_retarder_between_perfect_polarizers_gives_the_golden_numbers(
-    exit_axis_deg: float, expected: float
-) -> None:
+def test_a_retarder_between_perfect_polarizers_gives_the_golden_numbers(exit_axis_deg: float, expected: float) -> None:
     # Four independent routes agree on these (Jones, Mueller, py_pol, pypolar): plate at 37 deg of 0.31
     # waves, horizontal light of unit power.
     train = assemble(
@@ -119,9 +111,7 @@ def test_a_retarder_between_perfect_polarizers_gives_the_golden_numbers(
 
 def test_a_turned_retarder_between_parallel_polarizers_has_the_golden_harmonics() -> None:
     # A = 1 - s/2, B4 = s/2 of half the light, s = sin^2(delta/2), at 0.31 waves; four routes agree.
-    train = assemble(
-        retarder("plate", waves=0.31, mount="part mount"), polarizer("exit"), source=(1.0, 1.0, 0.0, 0.0)
-    )
+    train = assemble(retarder("plate", waves=0.31, mount="part mount"), polarizer("exit"), source=(1.0, 1.0, 0.0, 0.0))
     angles = np.arange(0.0, 360.0, 5.0)
 
     spectrum = np.fft.rfft(readings(train, visits_at(angles), {})["signal"]) / angles.size

@@ -87,9 +87,7 @@ def sweep(*, step_deg: float = 5.0, darks: int = 10, hours: float = 0.25) -> Vis
 
 def truth_of(train: Train, rng: np.random.Generator) -> dict[str, float]:
     """A hidden truth: nuisances from their tolerances, power, drift and stray light from the bench."""
-    drawn = {
-        q.name: q.value + q.prior_u * rng.standard_normal() for q in train.fitted if q.prior_u is not None
-    }
+    drawn = {q.name: q.value + q.prior_u * rng.standard_normal() for q in train.fitted if q.prior_u is not None}
     bench = {
         "source.power": FULL_SCALE_W * rng.uniform(0.5, 1.5),
         "source.drift": 0.02 * rng.standard_normal(),
@@ -106,9 +104,7 @@ def observe(
     for name, level in readings(train, visits, truth).items():
         sd = np.hypot(2e-7, 1e-3 * level)
         drawn = level[:, None] + sd[:, None] * rng.standard_normal((level.size, per_dwell))
-        seen[name] = Observed(
-            drawn.mean(axis=1), drawn.std(axis=1, ddof=1), np.full(level.size, float(per_dwell))
-        )
+        seen[name] = Observed(drawn.mean(axis=1), drawn.std(axis=1, ddof=1), np.full(level.size, float(per_dwell)))
     return seen
 
 

@@ -142,9 +142,7 @@ def test_a_sweep_in_the_other_direction_and_out_of_order_is_as_good() -> None:
     )
     visits, rng = sweep(), np.random.default_rng(2)
     order = rng.permutation(visits.count)
-    shuffled = Visits(
-        {"part mount": -visits.angle_deg["part mount"][order]}, visits.is_open[order], visits.time_h
-    )
+    shuffled = Visits({"part mount": -visits.angle_deg["part mount"][order]}, visits.is_open[order], visits.time_h)
 
     assert_found(fitted(train, shuffled, {"part.dial offset": -15.0}, seed=3), {"part.dial offset": -15.0})
 

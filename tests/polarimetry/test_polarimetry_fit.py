@@ -22,6 +22,7 @@ from polarimetry_cases import (
 from rigctl.errors import UndecidedError
 from rigctl.optics import Detector, Element, Quantity, Train, Visits, readings
 from rigctl.polarimetry import Estimate, Fit, Observed, as_dict, fit
+from rigctl.polarimetry.coordinates import estimate_of
 
 MALUS = {"part.dial offset": 3.0, "part.extinction ratio": 2e-3}
 
@@ -124,6 +125,17 @@ def test_a_half_wave_plate_between_parallel_polarizers_is_given_as_an_interval()
     low, high = estimate.interval
     assert 0.48 < low < high == 0.5
     assert "interval" in estimate.note
+
+
+@pytest.mark.parametrize("waves", [0.0, 0.5])
+def test_the_uncertainty_at_an_edge_reaches_to_the_far_end_of_the_interval(waves: float) -> None:
+    cosine = 1.0 if waves == 0.0 else -1.0
+    asked = quantity("part.retardance", waves, is_unknown=True)
+
+    estimate = estimate_of(asked, "cosine", value=waves, fitted=cosine, u=1e-4)
+
+    # cos(2 pi w) = 1 - 1.96e-4 lies at w = 0.00315 waves from the edge.
+    assert estimate.u == pytest.approx(0.0031511 / 1.959964, rel=1e-3)
 
 
 def test_an_extinction_ratio_without_a_dark_is_refused_and_the_rest_is_given() -> None:
@@ -321,6 +333,13 @@ def test_a_wrong_train_is_told_from_noise() -> None:
     assert split is not None
     assert split.not_harmonics < 2.0 * split.not_harmonics_dof
     assert split.not_train > 100.0 * split.not_train_dof
+
+
+def test_a_sweep_of_as_many_angles_as_harmonics_is_not_split() -> None:
+    # Five open angles fix five harmonics, darks leave freedom for the train alone.
+    result = fitted(polarizer_case(), sweep(step_deg=72.0, darks=2), part_dial_offset=3.0)
+
+    assert result.split is None
 
 
 def test_two_turning_mounts_are_not_split() -> None:

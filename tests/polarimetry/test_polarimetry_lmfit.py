@@ -18,9 +18,7 @@ CASES = (
 )
 
 
-def peer(
-    train: Train, visits: Visits, levels: Mapping[str, Observed], ours: Fit
-) -> lmfit.minimizer.MinimizerResult:
+def peer(train: Train, visits: Visits, levels: Mapping[str, Observed], ours: Fit) -> lmfit.minimizer.MinimizerResult:
     """Fit in the numbers that people read, from a start a few uncertainties off, with our weights."""
     names = {f"p{k}": estimate for k, estimate in enumerate(ours.estimates)}
     parameters = lmfit.Parameters()
@@ -40,9 +38,7 @@ def peer(
 
 @pytest.mark.parametrize(("train", "unknowns"), CASES)
 @pytest.mark.parametrize("seed", range(3))
-def test_values_and_uncertainties_agree_with_lmfit(
-    train: Train, unknowns: dict[str, float], seed: int
-) -> None:
+def test_values_and_uncertainties_agree_with_lmfit(train: Train, unknowns: dict[str, float], seed: int) -> None:
     rng, visits = np.random.default_rng(seed), sweep()
     levels = observe(train, visits, {**truth_of(train, rng), **unknowns}, rng)
 

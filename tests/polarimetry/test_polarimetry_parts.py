@@ -102,8 +102,7 @@ def test_the_ratio_is_fitted_at_the_ends_of_the_train_and_the_leak_between() -> 
         Element("part", "polarizer", "part mount"),
         Element("exit cube", "polarizer"),
         given=tuple(
-            quantity(f"{name}.extinction ratio", 1e-4, is_unknown=True)
-            for name in ("entry cube", "part", "exit cube")
+            quantity(f"{name}.extinction ratio", 1e-4, is_unknown=True) for name in ("entry cube", "part", "exit cube")
         ),
     )
 
@@ -137,9 +136,7 @@ def test_only_a_cosine_beyond_one_and_a_ratio_below_nought_are_beyond_an_edge() 
     assert beyond_edge("cosine", 0.9) < 0.0
 
 
-@pytest.mark.parametrize(
-    ("measured", "expected"), [(-2, 1.05), (-1, 1.41), (0, 1.960), (1, 2.727), (2, 3.656)]
-)
+@pytest.mark.parametrize(("measured", "expected"), [(-2, 1.05), (-1, 1.41), (0, 1.960), (1, 2.727), (2, 3.656)])
 def test_the_upper_bound_has_its_published_values(measured: float, expected: float) -> None:
     # 95 % upper limit with a flat prior on values from 0, in standard uncertainties above 0.
     assert measured + (upper_bound(measured, 1.0) - measured) == pytest.approx(expected, abs=5e-3)
@@ -190,9 +187,7 @@ def test_many_unknown_offsets_are_sought_near_their_nominal_values() -> None:
     turned = type(visits)(angles, visits.is_open, visits.time_h)
     level_w = {"signal": readings(train, turned, {})["signal"]}
 
-    problem = Problem(
-        train, in_fit_forms(train, turned), turned, level_w, {"signal": np.full(visits.count, 1e6)}
-    )
+    problem = Problem(train, in_fit_forms(train, turned), turned, level_w, {"signal": np.full(visits.count, 1e6)})
 
     assert MOST_NODES < 18**4
     assert all(np.isfinite(z).all() for z in starts(problem))
@@ -270,9 +265,7 @@ def test_the_solution_told_gives_the_same_light(offset: float, waves: float) -> 
     assert abs(told["part.dial offset"]) <= 90.0 + 1e-9
 
 
-@pytest.mark.parametrize(
-    ("dof", "low", "high"), [(10, 2.156, 25.188), (50, 27.991, 79.490), (100, 67.328, 140.169)]
-)
+@pytest.mark.parametrize(("dof", "low", "high"), [(10, 2.156, 25.188), (50, 27.991, 79.490), (100, 67.328, 140.169)])
 def test_the_band_of_chi_squared_is_that_of_the_tables(dof: int, low: float, high: float) -> None:
     # 0.5 % and 99.5 % points of chi-squared, any statistical table.
     band = Scatter(float(dof), dof, within_dof=1e12).band

@@ -24,9 +24,7 @@ def expected(prediction: Prediction, name: str) -> Estimate:
 
 
 def test_half_a_wave_is_of_second_order_between_parallel_polarizers() -> None:
-    _, slopes = readings_and_slopes(
-        plate_case(waves=0.5), sweep(), {}, ("part.retardance", "part.dial offset")
-    )
+    _, slopes = readings_and_slopes(plate_case(waves=0.5), sweep(), {}, ("part.retardance", "part.dial offset"))
 
     retardance, dial_offset = np.abs(slopes["signal"]).max(axis=0)
 
@@ -156,9 +154,7 @@ def test_a_half_wave_plate_hides_the_zero_of_its_analyser() -> None:
     (refusal,) = (r for r in refusals if "part.dial offset" in r.names)
     assert set(refusal.names) == {"part.dial offset", "exit cube.dial offset"}
     assert "only a combination" in refusal.why
-    assert (
-        refusal.remedy == "Measure exit cube.dial offset apart and state it with its tolerance in the recipe."
-    )
+    assert refusal.remedy == "Measure exit cube.dial offset apart and state it with its tolerance in the recipe."
 
 
 def test_an_analyser_of_poorly_known_zero_blurs_the_dial_offset_of_the_plate() -> None:
@@ -187,6 +183,22 @@ def test_a_blurred_retardance_is_told_in_waves() -> None:
     assert coupling.u == pytest.approx(expected(prediction, "part.retardance").u, rel=1e-9)
     (refusal,) = prediction.refusals
     assert refusal.remedy == "Add a sweep over a full turn of exit mount."
+
+
+def test_a_plate_and_an_analyser_turned_in_step_are_told_to_part() -> None:
+    # The analyser follows the light that a half-wave plate turns: the power never changes, and one more
+    # sweep with the plate 45 deg further gives the other extreme.
+    train = two_polarizers_turning().rewritten(
+        quantity("part.retardance", 0.5), quantity("part.dial offset", 0.0), quantity("exit cube.axis", 20.0)
+    )
+    visits = exit_sweep()
+    in_step = {**visits.angle_deg, "exit mount": 2.0 * visits.angle_deg["part mount"]}
+
+    (refusal,) = predict(train, Visits(in_step, visits.is_open, visits.time_h), variances(visits)).refusals
+
+    assert refusal.names == ("exit cube.dial offset",)
+    assert "source.power" in refusal.why
+    assert refusal.remedy == "Repeat the sweep with part mount 45 deg further."
 
 
 def test_a_well_known_analyser_blurs_nothing() -> None:

@@ -41,9 +41,7 @@ def append_until_refused(writer: RunWriter) -> tuple[int, RecordError]:
 
 
 @pytest.mark.parametrize("size", [6_000, 6_001, 6_100, 6_333, 20_000])
-def test_a_record_cut_short_by_the_disk_is_an_error_and_all_before_are_kept(
-    tmp_path: Path, size: int
-) -> None:
+def test_a_record_cut_short_by_the_disk_is_an_error_and_all_before_are_kept(tmp_path: Path, size: int) -> None:
     writer = create_run(tmp_path / "night.h5", small_header(VISITS), durable=True)
     with longest_file(size):
         acknowledged, error = append_until_refused(writer)
@@ -107,9 +105,7 @@ def test_a_final_view_without_room_keeps_the_journal_and_can_be_made_later(small
     assert load_run(small_disk / "night.h5").status == "complete"
 
 
-def test_a_failed_sync_is_fatal_and_never_tried_again(
-    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_a_failed_sync_is_fatal_and_never_tried_again(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     calls: list[int] = []
 
     def fail(fd: int) -> None:

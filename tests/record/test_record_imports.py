@@ -28,9 +28,7 @@ def test_nothing_but_the_record_imports_hdf5() -> None:
         for path in (ROOT / package).rglob("*.py")
     ]
 
-    importing = {
-        path.parent for path in sources if re.search(r"^\s*(import|from) h5py", path.read_text(), re.M)
-    }
+    importing = {path.parent for path in sources if re.search(r"^\s*(import|from) h5py", path.read_text(), re.M)}
 
     assert importing == {ROOT / "rigctl" / "record"}
 

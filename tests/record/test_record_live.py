@@ -39,9 +39,7 @@ def test_another_process_sees_every_record_at_once_and_touches_nothing(tmp_path:
     with write(path, durable=True):
         before = {entry.name: (entry.stat().st_mtime_ns, entry.read_bytes()) for entry in tmp_path.iterdir()}
 
-        done = subprocess.run(
-            [sys.executable, "-c", READ_ONCE, path], capture_output=True, text=True, check=True
-        )
+        done = subprocess.run([sys.executable, "-c", READ_ONCE, path], capture_output=True, text=True, check=True)
 
         assert done.stdout.split() == ["running", "True", "6"]
         after = {entry.name: (entry.stat().st_mtime_ns, entry.read_bytes()) for entry in tmp_path.iterdir()}

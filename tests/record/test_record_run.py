@@ -139,8 +139,6 @@ def test_records_of_a_kind_come_oldest_first() -> None:
         (end("finished"), "says 'finished'"),
     ],
 )
-def test_a_record_that_does_not_fit_is_refused_before_it_is_written(
-    record: dict[str, Any], message: str
-) -> None:
+def test_a_record_that_does_not_fit_is_refused_before_it_is_written(record: dict[str, Any], message: str) -> None:
     with pytest.raises(RecordError, match=message):
         run_of(record)

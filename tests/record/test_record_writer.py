@@ -148,9 +148,7 @@ def test_a_run_that_was_closed_accepts_nothing_more(tmp_path: Path) -> None:
 
 
 @pytest.mark.parametrize("durable", [True, False])
-def test_the_same_header_and_records_make_the_same_bytes_under_any_name(
-    tmp_path: Path, durable: bool
-) -> None:
+def test_the_same_header_and_records_make_the_same_bytes_under_any_name(tmp_path: Path, durable: bool) -> None:
     for name in ("a.h5", "b.h5"):
         with write(tmp_path / name, durable=durable) as writer:
             writer.close("complete", t_s=42.0)

@@ -25,9 +25,7 @@ def begun(timeline: VirtualTimeline, *, due_s: float, ready_s: float, value: flo
 
 
 def test_things_begun_together_take_as_long_as_the_slowest(timeline: VirtualTimeline) -> None:
-    three = {
-        name: begun(timeline, due_s=due, ready_s=due) for name, due in (("a", 3.0), ("b", 1.0), ("c", 2.0))
-    }
+    three = {name: begun(timeline, due_s=due, ready_s=due) for name, due in (("a", 3.0), ("b", 1.0), ("c", 2.0))}
 
     complete(timeline, three)
 

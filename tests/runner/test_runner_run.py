@@ -30,9 +30,7 @@ def is_shutter_closed(job: Job) -> bool:
 def datasets(path: Path) -> dict[str, Any]:
     found: dict[str, Any] = {}
     with h5py.File(path) as file:
-        file.visititems(
-            lambda name, item: found.update({name: item[()]}) if isinstance(item, h5py.Dataset) else None
-        )
+        file.visititems(lambda name, item: found.update({name: item[()]}) if isinstance(item, h5py.Dataset) else None)
     return found
 
 
@@ -81,9 +79,8 @@ def test_the_shutter_is_closed_and_the_mount_stopped_at_the_end(tmp_path: Path) 
 
 def test_one_seed_gives_one_set_of_data(tmp_path: Path) -> None:
     for name in ("a", "b"):
-        run_job(
-            make_job(tmp_path / name / "run.h5" if (tmp_path / name).mkdir() else tmp_path / name / "run.h5")
-        )
+        (tmp_path / name).mkdir()
+        run_job(make_job(tmp_path / name / "run.h5"))
 
     first, second = datasets(tmp_path / "a" / "run.h5"), datasets(tmp_path / "b" / "run.h5")
     assert first.keys() == second.keys()
@@ -169,9 +166,7 @@ def test_a_stop_at_any_moment_ends_with_exit_code_6_and_the_beam_blocked(
     tmp_path: Path, address: str, at: bytes, nth: int
 ) -> None:
     jobs: list[Job] = []
-    wrap = Wrapped(
-        address, lambda c: Meddler(c, lambda: jobs[0].timeline.stop.request("SIGTERM"), at=at, nth=nth)
-    )
+    wrap = Wrapped(address, lambda c: Meddler(c, lambda: jobs[0].timeline.stop.request("SIGTERM"), at=at, nth=nth))
     jobs.append(make_job(tmp_path / "run.h5", wrap=wrap))
 
     outcome = run_job(jobs[0])
@@ -257,9 +252,9 @@ def test_an_existing_file_is_never_overwritten_and_nothing_is_sent(tmp_path: Pat
 
 
 def test_darks_by_hand_ask_the_person_to_block_and_to_clear(tmp_path: Path) -> None:
-    rig = RIG.replace(
-        "  shutter 1: {driver: scpi-switch, at: tcp://127.0.0.1:5003, channel: 3}\n", ""
-    ).replace(", shutter: shutter 1", "")
+    rig = RIG.replace("  shutter 1: {driver: scpi-switch, at: tcp://127.0.0.1:5003, channel: 3}\n", "").replace(
+        ", shutter: shutter 1", ""
+    )
     job = make_job(tmp_path / "run.h5", rig=rig)
     asked: list[str] = []
 

@@ -104,9 +104,7 @@ def test_the_head_reads_what_the_optics_say_of_the_truth(
     assert read_power_w(bench, at_s=60.0) == pytest.approx(expected, rel=1e-6)
 
 
-def test_a_mount_that_counts_clockwise_turns_the_other_way(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_a_mount_that_counts_clockwise_turns_the_other_way(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     bench = FACTORY.build(recipe, make_rig(drivers, QUIET, positive=CLOCKWISE), 3)
 
     turn(bench, 17.5, at_s=1.0)
@@ -115,9 +113,7 @@ def test_a_mount_that_counts_clockwise_turns_the_other_way(
     assert read_power_w(bench, at_s=60.0) == pytest.approx(expected, rel=1e-6)
 
 
-def test_with_the_shutter_closed_only_stray_light_is_read(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_with_the_shutter_closed_only_stray_light_is_read(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     bench = FACTORY.build(recipe, make_rig(drivers, QUIET), 3)
 
     Wire(bench.twin(SHUTTER)).send(b"ROUT:CLOS (@3)\n", at_s=1.0)
@@ -126,9 +122,7 @@ def test_with_the_shutter_closed_only_stray_light_is_read(
     assert read_power_w(bench, at_s=60.0) == pytest.approx(stray_w, rel=1e-6)
 
 
-def test_with_a_hand_in_the_beam_only_stray_light_is_read(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_with_a_hand_in_the_beam_only_stray_light_is_read(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     bench = FACTORY.build(recipe, make_rig(drivers, QUIET), 3)
     bright_w = read_power_w(bench, at_s=1.0)
 
@@ -179,9 +173,7 @@ def test_another_seed_gives_other_bytes(recipe: Recipe, drivers: Mapping[str, Dr
     assert traffic(first) != traffic(second)
 
 
-def test_one_instrument_more_leaves_the_others_as_they_were(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_one_instrument_more_leaves_the_others_as_they_were(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     more = "  head 2: {driver: scpi-power-meter, at: tcp://127.0.0.1:5009}"
     alone = FACTORY.build(recipe, make_rig(drivers), 7)
     beside = FACTORY.build(recipe, make_rig(drivers, more=more), 7)
@@ -190,9 +182,7 @@ def test_one_instrument_more_leaves_the_others_as_they_were(
     assert traffic(alone) == traffic(beside)
 
 
-def test_twins_say_that_they_are_simulated_and_who_they_are(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_twins_say_that_they_are_simulated_and_who_they_are(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     bench = FACTORY.build(recipe, make_rig(drivers), 7)
 
     identities = [Wire(bench.twin(address)).ask(b"*IDN?") for address in (HEAD, SHUTTER)]
@@ -204,9 +194,7 @@ def test_twins_say_that_they_are_simulated_and_who_they_are(
     assert Wire(bench.twin(MOUNT)).ask(b"$I").startswith("[VER:1.1:simulated mount,mount 1]")
 
 
-def test_a_name_that_would_break_a_reply_is_written_plainly(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_a_name_that_would_break_a_reply_is_written_plainly(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     more = '  "Messkopf grün, 2;": {driver: scpi-power-meter, at: tcp://127.0.0.1:5009}'
     bench = FACTORY.build(recipe, make_rig(drivers, more=more), 7)
 
@@ -215,9 +203,7 @@ def test_a_name_that_would_break_a_reply_is_written_plainly(
     assert answer.split(",")[2] == "Messkopf gr_n_ 2_"
 
 
-def test_a_head_that_no_role_needs_reads_next_to_nothing(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_a_head_that_no_role_needs_reads_next_to_nothing(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     more = "  head 2: {driver: scpi-power-meter, at: tcp://127.0.0.1:5009, noise: 1 pW}"
     bench = FACTORY.build(recipe, make_rig(drivers, more=more), 7)
 
@@ -285,9 +271,7 @@ def test_a_mount_that_a_run_homes_was_left_anywhere(recipe: Recipe, drivers: Map
     assert before_w != pytest.approx(homed_w, rel=1e-3)
 
 
-def test_the_rig_file_can_set_power_drift_and_stray_light(
-    recipe: Recipe, drivers: Mapping[str, Driver]
-) -> None:
+def test_the_rig_file_can_set_power_drift_and_stray_light(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
     simulated = "power: 3 mW, drift: 1 %/h, head 1: {stray light: 7 nW}"
     truth = FACTORY.build(recipe, make_rig(drivers, simulated), 3).truth()
 

@@ -29,9 +29,7 @@ def make_head(
 ) -> HeadInBeam:
     mounts = {"analyser": Mount(dial or Trajectory(0.0), 1.0)}
     shutters = [] if shutter is None else [shutter]
-    return HeadInBeam(
-        World(Source(POWER_W, drift), malus, mounts=mounts, shutters=shutters), 0, stray_w=stray_w
-    )
+    return HeadInBeam(World(Source(POWER_W, drift), malus, mounts=mounts, shutters=shutters), 0, stray_w=stray_w)
 
 
 def stepped(at_s: float, *, to: float = 1.0) -> Trajectory:
@@ -175,9 +173,7 @@ def test_drift_is_the_same_whether_something_moved_lately_or_not() -> None:
 
 @settings(deadline=None)
 @given(begin=st.floats(0.0, 5.0), reading=st.floats(1e-3, 1.0), target=st.floats(-180.0, 180.0))
-def test_what_is_shown_never_leaves_the_span_of_the_light(
-    begin: float, reading: float, target: float
-) -> None:
+def test_what_is_shown_never_leaves_the_span_of_the_light(begin: float, reading: float, target: float) -> None:
     dial = Trajectory(0.0)
     dial.move(0.5, target, speed=40.0, acceleration=200.0)
 

@@ -48,10 +48,7 @@ def test_a_parabola_agrees_with_an_integration_step_by_step(
     shown: float, begin: float, middle: float, end: float, duration: float
 ) -> None:
     def light(u: float) -> float:
-        return (
-            begin
-            + ((4 * middle - 3 * begin - end) + 2 * (begin - 2 * middle + end) * u / duration) * u / duration
-        )
+        return begin + ((4 * middle - 3 * begin - end) + 2 * (begin - 2 * middle + end) * u / duration) * u / duration
 
     def rate(u: float, y: np.ndarray) -> list[float]:
         return [(light(u) - float(y[0])) / TAU, float(y[0])]
@@ -86,9 +83,7 @@ def test_without_a_lag_the_light_itself_is_shown() -> None:
 
 @settings(deadline=None)
 @given(shown=powers, level=powers, duration=st.floats(1e-4, 10.0))
-def test_what_is_shown_lies_between_the_old_level_and_the_new(
-    shown: float, level: float, duration: float
-) -> None:
+def test_what_is_shown_lies_between_the_old_level_and_the_new(shown: float, level: float, duration: float) -> None:
     after, energy = respond(shown, (level, level, level), duration_s=duration, time_constant_s=TAU)
 
     low, high = sorted((shown, level))

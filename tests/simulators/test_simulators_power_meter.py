@@ -48,9 +48,7 @@ def make_twin(
     return ScpiTwin(meter, identity="polrig,simulated power meter,head 1,0")
 
 
-def make_wire(
-    head: Ramp | None = None, *, noise: Iterator[float] | None = None, relative: float = 0.0
-) -> Wire:
+def make_wire(head: Ramp | None = None, *, noise: Iterator[float] | None = None, relative: float = 0.0) -> Wire:
     return Wire(make_twin(head, noise=noise, relative=relative))
 
 
@@ -88,9 +86,7 @@ def levels_of(answer: str) -> list[float]:
         (b"FORMAT:DATA ASCII", b"FORMAT:DATA?", "ASC"),
     ],
 )
-def test_a_setting_reads_back_in_the_same_message(
-    wire: Wire, setting: bytes, query: bytes, answer: str
-) -> None:
+def test_a_setting_reads_back_in_the_same_message(wire: Wire, setting: bytes, query: bytes, answer: str) -> None:
     assert wire.ask(setting + b";:" + query + b";:SYSTEM:ERROR:NEXT?") == f'{answer};0,"No error"'
 
 
@@ -317,9 +313,7 @@ def test_setting_a_range_ends_the_automatic_one(wire: Wire) -> None:
 # noise
 
 
-def noisy_levels(
-    head: Ramp, range_w: float, *, seed: int = 5, relative: float = 0.0, count: int = 4000
-) -> list[float]:
+def noisy_levels(head: Ramp, range_w: float, *, seed: int = 5, relative: float = 0.0, count: int = 4000) -> list[float]:
     wire = make_wire(head, noise=normals(seed, "head 1"), relative=relative)
     return levels_of(wire.ask(f"POW:RANG {range_w};:TRIG:COUN {count};:POW:APER 1E-3;:READ?".encode()))
 

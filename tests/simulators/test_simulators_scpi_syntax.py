@@ -161,9 +161,7 @@ def test_an_empty_message_asks_for_nothing(message: str) -> None:
     assert complaints(message) == []
 
 
-@pytest.mark.parametrize(
-    "message", ["*CLS;", ";*CLS", "*CLS;;*CLS", "POW:RANG 1,", "DATA:PAIR ,1", "?", ":", "1"]
-)
+@pytest.mark.parametrize("message", ["*CLS;", ";*CLS", "*CLS;;*CLS", "POW:RANG 1,", "DATA:PAIR ,1", "?", ":", "1"])
 def test_what_lacks_a_part_is_a_syntax_error(message: str) -> None:
     assert complaints(message)[-1] == -102
 

@@ -74,9 +74,7 @@ def test_another_relay_moves_no_shutter(wire: Wire, shutter: SimulatedShutter) -
     assert shutter.opening(9.0) == 0.0
 
 
-def test_closing_a_relay_again_does_not_start_the_shutter_again(
-    wire: Wire, shutter: SimulatedShutter
-) -> None:
+def test_closing_a_relay_again_does_not_start_the_shutter_again(wire: Wire, shutter: SimulatedShutter) -> None:
     wire.send(b"ROUTE:CLOSE (@3)\n", at_s=1.0)
 
     wire.send(b"ROUTE:CLOSE (@3)\n", at_s=1.0 + MOVES_IN_S / 2)

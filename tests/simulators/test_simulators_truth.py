@@ -25,9 +25,7 @@ def make_train(*quantities: Quantity) -> Train:
         Quantity("signal.stray light", "power", 0.0, is_free=True),
     )
     named = {quantity.name: quantity for quantity in (*usual, *quantities)}
-    return Train(
-        (Element("cube", "polarizer"), Element("part", "retarder", "mount")), (Detector("signal"),), named
-    )
+    return Train((Element("cube", "polarizer"), Element("part", "retarder", "mount")), (Detector("signal"),), named)
 
 
 def drawn(name: str, *quantities: Quantity, power_u_w: float | None = None) -> list[float]:

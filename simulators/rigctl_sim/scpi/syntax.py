@@ -65,9 +65,7 @@ class Unit:
 
 
 _NODE = re.compile(r"(\[?):?(\*?[A-Za-z]+)(#?):?(\]?)")
-_HEADER = re.compile(
-    r"(:?)((?:\*[A-Za-z]+|[A-Za-z]\w*(?::[A-Za-z]\w*)*)\??)(?:\s+(.*))?", re.ASCII | re.DOTALL
-)
+_HEADER = re.compile(r"(:?)((?:\*[A-Za-z]+|[A-Za-z]\w*(?::[A-Za-z]\w*)*)\??)(?:\s+(.*))?", re.ASCII | re.DOTALL)
 _SUFFIX = re.compile(r"(\d+)(?=[:?]|$)")
 _LONGEST_MNEMONIC = 12
 

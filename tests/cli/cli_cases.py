@@ -1,3 +1,5 @@
+"""The command in another process, and simulated instruments that it can reach."""
+
 import re
 import socket
 import subprocess
@@ -7,8 +9,6 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
-
-import pytest
 
 COMMAND = (sys.executable, "-m", "rigctl")
 RECIPE = """
@@ -42,9 +42,7 @@ class Twins:
     original: Path
 
     def port(self, instrument: str) -> int:
-        found = re.search(
-            rf"{instrument}: {{[^}}]*tcp://127.0.0.1:(\d+)", self.rig.read_text(encoding="utf-8")
-        )
+        found = re.search(rf"{instrument}: {{[^}}]*tcp://127.0.0.1:(\d+)", self.rig.read_text(encoding="utf-8"))
         assert found is not None
         return int(found[1])
 
@@ -87,9 +85,3 @@ def wait_for_visits(journal: Path, count: int, *, timeout_s: float = 30.0) -> No
             return
         time.sleep(0.02)
     raise AssertionError(f"{journal} never held {count} visits")
-
-
-@pytest.fixture
-def twins(tmp_path: Path) -> Iterator[Twins]:
-    with serving(tmp_path) as served:
-        yield served
