@@ -8,12 +8,14 @@ import time
 from pathlib import Path
 
 from rigctl.files import load_recipe, match, parse_rig
+from rigctl.links.channel import Channel
 from rigctl.links.loopback import LoopbackChannel
 from rigctl.links.tap import TappedChannel
 from rigctl.plugins import find_bench_factory, find_drivers
 from rigctl.runner.progress import Silent
 from rigctl.runner.rehearsal import rehearsal_job
 from rigctl.runner.run import Job, run_job
+from rigctl.timeline import Timeline
 
 RECIPE = Path(__file__).resolve().parents[2] / "recipes" / "quarter-wave-plate.yaml"
 VISITS = 3600
@@ -26,9 +28,20 @@ def make_job(folder: Path, seed: int, sink: io.StringIO | None = None) -> Job:
     recipe = load_recipe(folder / "bench.yaml")
     rig = parse_rig(factory.default_rig({n: r.kind for n, r in recipe.roles.items()}), "default", drivers, factory)
     match(recipe, rig, drivers)
-    tap = {} if sink is None else {"wrap": lambda channel, timeline: TappedChannel(channel, timeline, sink)}
-    path = folder / f"run-{seed}.h5"
-    return rehearsal_job(recipe, rig, drivers=drivers, factory=factory, seed=seed, path=path, progress=Silent(), **tap)
+
+    def wrap(channel: Channel, timeline: Timeline) -> Channel:
+        return channel if sink is None else TappedChannel(channel, timeline, sink)
+
+    return rehearsal_job(
+        recipe,
+        rig,
+        drivers=drivers,
+        factory=factory,
+        seed=seed,
+        path=folder / f"run-{seed}.h5",
+        progress=Silent(),
+        wrap=wrap,
+    )
 
 
 def bare_exchanges_per_second(folder: Path) -> float:
