@@ -17,7 +17,9 @@ from rigctl.links.link import Link
 
 T = TypeVar("T")
 
-RoleKind = Literal["rotation stage", "power meter", "shutter"]
+RoleKind = Literal[
+    "rotation stage", "power meter", "shutter", "current source", "temperature controller", "relay", "slide"
+]
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,7 +117,42 @@ class ShutterCapabilities:
     moves_in_s: float
 
 
-Capabilities = StageCapabilities | MeterCapabilities | ShutterCapabilities
+@dataclass(frozen=True, slots=True)
+class SourceCapabilities:
+    """What a current source can do."""
+
+    current_a: float
+    """Largest current, A."""
+    compliance_v: float
+    """Largest compliance voltage, V."""
+    resolution_a: float
+
+
+@dataclass(frozen=True, slots=True)
+class ControllerCapabilities:
+    """What a temperature controller can do; `span_c` is what its plant can reach, degC."""
+
+    span_c: tuple[float, float]
+    resolution_k: float
+    typical_rate_k_per_s: float
+    """How fast a setpoint is approached, K/s; for forecasts only."""
+
+
+@dataclass(frozen=True, slots=True)
+class SwitchCapabilities:
+    """What a slide or a relay can do."""
+
+    moves_in_s: float
+
+
+Capabilities = (
+    StageCapabilities
+    | MeterCapabilities
+    | ShutterCapabilities
+    | SourceCapabilities
+    | ControllerCapabilities
+    | SwitchCapabilities
+)
 
 
 class Instrument(Protocol):
@@ -180,11 +217,96 @@ class Shutter(Instrument, Protocol):
 
 
 @dataclass(frozen=True, slots=True)
+class SourceConditions:
+    """What a current source reads back in one exchange."""
+
+    current_a: float
+    voltage_v: float
+    is_on: bool
+    is_interlock_open: bool
+    is_at_compliance: bool
+    is_tripped: bool
+
+
+class CurrentSource(Instrument, Protocol):
+    """What drives a diode. The runner never uses it bare: every setpoint passes `rigctl.runner.limits`."""
+
+    capabilities: SourceCapabilities
+
+    def set_limit(self, current_a: float) -> float:
+        """Program the instrument's own current limit and return it as read back, A."""
+
+    def set_compliance(self, voltage_v: float) -> float:
+        """Program the compliance voltage and return it as read back, V."""
+
+    def set_current(self, current_a: float) -> float:
+        """Set the current and return the setpoint as read back, A."""
+
+    def set_output(self, is_on: bool) -> bool:
+        """Switch the output and return its state as read back."""
+
+    def conditions(self) -> SourceConditions:
+        """Read everything that tells how the diode is doing."""
+
+
+@dataclass(frozen=True, slots=True)
+class ControllerConditions:
+    """What a temperature controller reads back in one exchange; the temperature comes from the resistance."""
+
+    temperature_c: float
+    resistance_ohm: float
+    is_on: bool
+    is_at_limit: bool
+
+
+class TemperatureController(Instrument, Protocol):
+    """What keeps a diode or an oven at a temperature. Raises `InstrumentError` for a sensor open or shorted."""
+
+    capabilities: ControllerCapabilities
+
+    def set_span(self, low_c: float, high_c: float) -> None:
+        """Program the instrument's own temperature limits and read them back."""
+
+    def set_temperature(self, temperature_c: float) -> float:
+        """Set the setpoint and return it as read back, degC."""
+
+    def set_output(self, is_on: bool) -> bool:
+        """Start or end regulating and return the state as read back."""
+
+    def conditions(self) -> ControllerConditions:
+        """Read temperature, sensor resistance and state."""
+
+
+class Relay(Instrument, Protocol):
+    """A contact."""
+
+    capabilities: SwitchCapabilities
+
+    def begin_set(self, is_closed: bool) -> Begun[bool]:
+        """Start to close or open the contact; yields the state read back."""
+
+    def is_closed(self) -> bool:
+        """Read the state back now."""
+
+
+class Slide(Instrument, Protocol):
+    """What takes an element out of the beam and puts it back."""
+
+    capabilities: SwitchCapabilities
+
+    def begin_set(self, is_in: bool) -> Begun[bool]:
+        """Start to put the element in or out; yields whether it is in, as read back."""
+
+    def is_in(self) -> bool:
+        """Read the state back now."""
+
+
+@dataclass(frozen=True, slots=True)
 class Option:
     """One key that a driver or twin accepts in the rig file.
 
     `kind` is a quantity kind of `rigctl.quantities` (its value arrives in that kind's base unit), a span of one
-    (`span of angle`), a list of one (`list of power`), `text`, `whole number` or `choice`.
+    (`span of angle`), a list of one (`list of power`), `text`, `whole number`, `choice` or `thermistor`.
     """
 
     kind: str
@@ -224,6 +346,9 @@ class Bench(Protocol):
 
     def block_by_hand(self, is_blocked: bool, now_s: float) -> None:
         """A person puts something into the beam, or takes it away."""
+
+    def take_out_by_hand(self, element: str, is_out: bool, now_s: float) -> None:
+        """A person takes an element out of the beam, or puts it back."""
 
 
 class BenchFactory(Protocol):
