@@ -9,7 +9,7 @@ from dataclasses import dataclass
 
 from rigctl.errors import FramingError, LinkTimeoutError
 from rigctl.links.channel import Channel
-from rigctl.links.family import Resynced
+from rigctl.links.family import Opening, Resynced
 from rigctl_drivers.gcode_codec import CLEAR, REPORT, Ack, Alarm, Line, Note, Report, parse_line
 from rigctl_drivers.gcode_meanings import alarm_words, error_words
 
@@ -26,6 +26,7 @@ class GcodeFamily:
     name: str = "G-code"
     reply_timeout_s: float = 2.0
     longest_s: float = 10.0
+    opening: Opening = Opening(asserts_dtr=False, quiet_s=2.0)
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         """Find the step by a report, an empty line and its `ok`, and a report with nothing before it.

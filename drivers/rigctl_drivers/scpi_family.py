@@ -10,7 +10,7 @@ from struct import pack
 
 from rigctl.errors import LinkTimeoutError
 from rigctl.links.channel import Channel
-from rigctl.links.family import Resynced
+from rigctl.links.family import Opening, Resynced
 from rigctl_drivers.scpi_codec import ERROR_QUERY, no_reply, parse_complaint, parse_text
 
 MOST_STALE_LINES = 10_000
@@ -34,6 +34,7 @@ class ScpiFamily:
     name: str = "SCPI"
     reply_timeout_s: float = 2.0
     longest_s: float = 10.0
+    opening: Opening = Opening()
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         """Bring the instrument into step; `complaints` is its error queue, which is empty afterwards.

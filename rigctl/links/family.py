@@ -1,4 +1,4 @@
-"""What a driver says about the language of its wire: how replies end and how a lost step is found again.
+"""What a driver says about the language of its wire: how it is opened, how replies end, how a lost step is found.
 
 It owns the contract only; each driver package brings its own families.
 """
@@ -17,6 +17,18 @@ class Resynced:
     complaints: tuple[tuple[int, str], ...] = ()
 
 
+@dataclass(frozen=True, slots=True)
+class Opening:
+    """What opening a serial line does to the devices of a convention.
+
+    `asserts_dtr` is whether DTR and RTS are raised, which restarts many a board. `quiet_s` is how long a device
+    that restarts is deaf; what it says meanwhile is thrown away.
+    """
+
+    asserts_dtr: bool = True
+    quiet_s: float = 0.0
+
+
 class Family(Protocol):
     """Framing, resync and safe bytes of one command convention."""
 
@@ -31,6 +43,10 @@ class Family(Protocol):
     @property
     def longest_s(self) -> float:
         """How long the slowest operation may hold a reply back; the deadline of a resync."""
+
+    @property
+    def opening(self) -> Opening:
+        """How a serial line to such a device is opened."""
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         """Exchange bytes until the next reply is sure to answer the next question.

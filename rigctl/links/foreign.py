@@ -18,6 +18,9 @@ _MEANINGS = {
     errno.ETIMEDOUT: ("the instrument no longer answers the network", "check its power and its cable"),
     errno.EHOSTUNREACH: _NO_WAY,
     errno.ENETUNREACH: _NO_WAY,
+    errno.ENOENT: ("there is no such port", "plug the instrument in, and see which port it gets"),
+    errno.EACCES: ("this port may not be opened", "let the administrator add you to the group that owns it"),
+    errno.EIO: ("the port is gone", "plug the instrument in again"),
 }
 
 

@@ -40,6 +40,10 @@ class Inbox:
         """Cut off `count` bytes; None while there are fewer."""
         return self._cut(count) if len(self._bytes) >= count else None
 
+    def take_some(self, at_most: int) -> bytes:
+        """Cut off what is here, up to `at_most` bytes."""
+        return self._cut(min(at_most, len(self._bytes)))
+
     def take_all(self) -> bytes:
         """Cut off everything."""
         return self._cut(len(self._bytes)) if self._bytes else b""

@@ -12,7 +12,7 @@ from collections.abc import Callable
 from datetime import UTC, datetime
 
 from rigctl.links.channel import Channel
-from rigctl.links.family import Resynced
+from rigctl.links.family import Opening, Resynced
 from rigctl.links.link import Link
 from rigctl.links.loopback import LoopbackChannel
 from rigctl.links.tcp import TcpChannel
@@ -45,7 +45,7 @@ class PromptTwin:
 class TrustingFamily:
     """No resync: the peers here never fall out of step."""
 
-    name, reply_timeout_s, longest_s = "bench", 10.0, 10.0
+    name, reply_timeout_s, longest_s, opening = "bench", 10.0, 10.0, Opening()
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         return Resynced()

@@ -16,7 +16,7 @@ from enum import Enum
 
 from rigctl.errors import DisconnectedError
 from rigctl.links.channel import Channel
-from rigctl.links.family import Resynced
+from rigctl.links.family import Opening, Resynced
 from rigctl.links.link import Link
 from rigctl.links.loopback import LoopbackChannel
 from rigctl.links.tcp import TcpChannel
@@ -135,6 +135,7 @@ class NonceFamily:
     name: str = "test SCPI"
     reply_timeout_s: float = 10.0
     longest_s: float = 10.0
+    opening: Opening = Opening()
     nonces: random.Random = field(default_factory=lambda: random.Random(1))
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:

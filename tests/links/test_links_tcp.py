@@ -294,7 +294,7 @@ def test_what_has_arrived_is_read_even_after_the_deadline(
     ],
 )
 def test_a_dead_peer_is_noticed_by_the_system(channel: TcpChannel, level: int, option: int, value: int) -> None:
-    assert channel._socket.getsockopt(level, option) == value
+    assert channel._stream._socket.getsockopt(level, option) == value
 
 
 def test_a_link_works_above_the_thousandth_open_file(wall: WallTimeline) -> None:
