@@ -347,6 +347,9 @@ class Bench(Protocol):
     def block_by_hand(self, is_blocked: bool, now_s: float) -> None:
         """A person puts something into the beam, or takes it away."""
 
+    def cap_by_hand(self, is_capped: bool, now_s: float) -> None:
+        """A person puts a cap on every detector, or takes them off."""
+
     def take_out_by_hand(self, element: str, is_out: bool, now_s: float) -> None:
         """A person takes an element out of the beam, or puts it back."""
 

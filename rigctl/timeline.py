@@ -9,12 +9,16 @@ import math
 import os
 import select
 import time
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager, suppress
 from datetime import UTC, datetime, timedelta
 from typing import Protocol
 
 from rigctl.errors import StopRequestedError
+
+
+PULSE_S = 0.5
+"""No wait is longer than this without a pulse."""
 
 
 class StopRequest:
@@ -82,6 +86,9 @@ class Timeline(Protocol):
     def wait_until(self, instant_s: float) -> None:
         """Let time pass until an instant; raises `StopRequestedError` when a stop is asked for."""
 
+    def pulse(self) -> None:
+        """Tell whoever watches that the program lives; called at least every `PULSE_S` while anything waits."""
+
 
 def wall_time(timeline: Timeline, instant_s: float) -> datetime:
     """Date and time of an instant, with its offset from UTC."""
@@ -96,6 +103,7 @@ class WallTimeline:
     def __init__(self, stop: StopRequest | None = None) -> None:
         self.stop = stop or StopRequest()
         self.start = datetime.now(UTC)
+        self.on_pulse: Callable[[], None] = lambda: None
         self._origin = time.monotonic()
 
     def now(self) -> float:
@@ -107,7 +115,8 @@ class WallTimeline:
         self.stop.check()
         poller = select.poll()
         poller.register(self.stop.wake_fd, select.POLLIN)
-        while (left := instant_s - self.now()) > 0:
+        while (left := min(instant_s - self.now(), PULSE_S)) > 0:
+            self.pulse()
             if self.stop.is_hurried:
                 return
             # poll counts whole milliseconds: the rest is slept, so that a wait ends on time
@@ -117,6 +126,11 @@ class WallTimeline:
             else:
                 poller.poll(whole_ms - 1)
             self.stop.check()
+
+
+    def pulse(self) -> None:
+        """Call `on_pulse`, such as a watchdog's heartbeat."""
+        self.on_pulse()
 
 
 class VirtualTimeline:
@@ -137,3 +151,6 @@ class VirtualTimeline:
         """Move time forward to an instant at once."""
         self.stop.check()
         self._now = max(self._now, instant_s)
+
+    def pulse(self) -> None:
+        """Do nothing: nobody watches a rehearsal."""

@@ -10,7 +10,7 @@ from collections.abc import Sequence
 import typer
 
 from rigctl import __version__
-from rigctl.cli import check, fit, rehearse, run, simulate, verify
+from rigctl.cli import check, fit, rehearse, run, schema, simulate, verify
 from rigctl.cli.console import complain
 from rigctl.errors import PolrigError, UsageError
 
@@ -42,7 +42,7 @@ def _options(
     """Rehearse, run and fit unattended angle sweeps of polarizing optics."""
 
 
-for _command in (check, rehearse, run, simulate, fit, verify):
+for _command in (check, rehearse, run, simulate, fit, verify, schema):
     app.command(_command.NAME)(_command.command)
 
 

@@ -43,9 +43,12 @@ def command(
 
 def _answer(loaded: "Loaded") -> dict[str, Any]:
     from rigctl.runner.bench import declared_capabilities
-    from rigctl.runner.plan import count_visits, duration_s
+    from rigctl.runner.forecast import Forecast
+    from rigctl.runner.limits import refuse_beyond_limits
+    from rigctl.runner.plan import count_visits
     from rigctl.runner.prospect import predicted
 
+    refuse_beyond_limits(loaded.recipe, loaded.rig, loaded.drivers)
     capabilities = declared_capabilities(loaded.recipe, loaded.rig, loaded.drivers)
     visits = count_visits(loaded.recipe)
     prediction = predicted(loaded.recipe, capabilities)
@@ -53,7 +56,7 @@ def _answer(loaded: "Loaded") -> dict[str, Any]:
         "title": loaded.recipe.title,
         "rig": loaded.rig.title,
         "visits": visits,
-        "duration_s": duration_s(loaded.recipe, capabilities),
+        "duration_s": Forecast(loaded.recipe, capabilities).duration_s(),
         "file_bytes": BYTES_A_FILE + BYTES_A_VISIT * visits,
         "predicted": prediction,
     }

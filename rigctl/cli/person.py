@@ -10,6 +10,8 @@ from rigctl.timeline import StopRequest
 class PersonAtTerminal:
     """Asks on the terminal and waits for Enter; a stop request ends the waiting."""
 
+    is_there = True
+
     def __init__(self, stop: StopRequest) -> None:
         self._stop = stop
 
@@ -20,6 +22,22 @@ class PersonAtTerminal:
     def clear_beam(self) -> None:
         """Ask for it to be taken away."""
         self._ask("Take the block out of the beam, then press Enter.")
+
+    def cap_detectors(self) -> None:
+        """Ask for the caps."""
+        self._ask("Put a cap on every detector, then press Enter.")
+
+    def uncap_detectors(self) -> None:
+        """Ask for them to be taken off."""
+        self._ask("Take the caps off the detectors, then press Enter.")
+
+    def take_out(self, element: str) -> None:
+        """Ask for an element to be taken out."""
+        self._ask(f"Take '{element}' out of the beam, then press Enter.")
+
+    def put_in(self, element: str) -> None:
+        """Ask for it to be put back."""
+        self._ask(f"Put '{element}' back into the beam as it was, then press Enter.")
 
     def _ask(self, text: str) -> None:
         complain(f"\a\n{text}")

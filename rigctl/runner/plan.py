@@ -1,50 +1,83 @@
-"""What a recipe asks for, visit by visit, and how long it takes.
+"""What a recipe asks for, visit by visit, in the order in which it is done.
 
-Pure: a plan is a function of the recipe, and its duration of the plan and what the instruments declare.
+Pure: a plan is a function of the recipe.
 """
 
 import itertools
-from collections.abc import Iterator, Mapping
+import random
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
-from rigctl.files.recipe import Axis, Recipe, Step
-from rigctl.interfaces import Capabilities, MeterCapabilities, ShutterCapabilities, StageCapabilities
+from rigctl.files.recipe import Axis, Order, Recipe, Step
 from rigctl.record.layout import AxisLayout, StepLayout
-from rigctl.runner.approach import waypoints
 
 DARK_DWELLS = 5
 """Dwells of one dark: with four readings each, its mean is known four times better than one reading."""
-SETTLED_PART = 1e-4
-"""What may be left of a change when a dwell begins, where no uncertainty is asked for (design section 9)."""
-EXCHANGE_S = 0.002
-"""An ordinary exchange on a local network; common practice. A visit takes about four."""
+REPEAT = "repeat"
+UNITS = {"angle": "deg", "temperature": "degC", "current": "A", REPEAT: "1"}
 
 
 @dataclass(frozen=True, slots=True)
 class Visit:
-    """One stop of a sweep: its step, its place in the step's grid, and the angles asked for by role, deg."""
+    """One stop of a sweep: its step, its place in the step's grid, and what is asked for by role (or `repeat`).
+
+    Angles in deg, temperatures in degC, currents in A; a repeat counts from 1.
+    """
 
     step: str
     number: int
     index: tuple[int, ...]
-    asked_deg: Mapping[str, float]
+    asked: Mapping[str, float]
+
+
+def axis_name(axis: Axis) -> str:
+    """Return the role of an axis, or `repeat`."""
+    return axis.role or REPEAT
+
+
+def ordered(count: int, order: Order) -> Sequence[int]:
+    """Return the places of the fastest axis in the order of their visits.
+
+    `interleaved k` takes every k-th, then those between; `shuffled` is one of all orders, drawn by its number.
+    """
+    places = list(range(count))
+    if order.kind == "interleaved":
+        return [place for first in range(order.number) for place in places[first :: order.number]]
+    if order.kind == "shuffled":
+        random.Random(order.number).shuffle(places)
+    return places
 
 
 def step_visits(step: Step) -> Iterator[Visit]:
-    """Yield the visits of a step as written: the first axis turns slowest."""
-    grid = itertools.product(*(range(len(axis.angles_deg)) for axis in step.sweep))
-    for number, index in enumerate(grid):
-        asked = {axis.role: axis.angles_deg[at] for axis, at in zip(step.sweep, index, strict=True)}
-        yield Visit(step.name, number, index, asked)
+    """Yield the visits of a step: the first axis turns slowest, the last one in the step's order."""
+    sizes = [len(axis.values) for axis in step.sweep]
+    slow, fast = [range(size) for size in sizes[:-1]], ordered(sizes[-1], step.order)
+    for index in itertools.product(*slow, fast):
+        asked = {axis_name(axis): axis.values[at] for axis, at in zip(step.sweep, index, strict=True)}
+        yield Visit(step.name, _flat(index, sizes), index, asked)
+
+
+def _flat(index: Sequence[int], sizes: Sequence[int]) -> int:
+    number = 0
+    for at, size in zip(index, sizes, strict=True):
+        number = number * size + at
+    return number
 
 
 def count_visits(recipe: Recipe) -> int:
     """Return the number of visits of a recipe, darks left out."""
-    return sum(1 for step in recipe.steps for _ in step_visits(step))
+    total = 0
+    for step in recipe.steps:
+        in_step = 1
+        for axis in step.sweep:
+            in_step *= len(axis.values)
+        total += in_step
+    return total
 
 
 def _axis_layout(axis: Axis) -> AxisLayout:
-    return AxisLayout(f"{axis.role.replace(' ', '_')}_angle", axis.role, "deg", axis.angles_deg)
+    name = REPEAT if axis.kind == REPEAT else f"{axis.role.replace(' ', '_')}_{axis.kind}"
+    return AxisLayout(name, axis_name(axis), UNITS[axis.kind], axis.values)
 
 
 def step_layouts(recipe: Recipe) -> tuple[StepLayout, ...]:
@@ -58,48 +91,10 @@ def aperture_s(recipe: Recipe) -> float:
 
 
 def settle_s(step: Step, time_constant_s: float) -> float:
-    """How long to settle after a move: what is given, or what the slowest meter needs to forget the old level, s.
+    """How long to settle after a move, s: what is given, or what the slowest meter needs to forget the old level.
 
     Source
     ------
-    First-order step response: exp(-t/tau) = SETTLED_PART.
+    First-order step response: 9.21 time constants leave 1e-4 of a change, where no uncertainty is asked for.
     """
-    # 9.2 time constants leave 1e-4 of a change
-    needed = time_constant_s * 9.210340371976182
-    return max(needed, *(axis.settle_s for axis in step.sweep))
-
-
-def duration_s(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> float:
-    """Estimate how long a run takes, s; capabilities by role, an unfilled role left out."""
-    meters = [c for c in capabilities.values() if isinstance(c, MeterCapabilities)]
-    stages = {role: c for role, c in capabilities.items() if isinstance(c, StageCapabilities)}
-    shutters = [c for c in capabilities.values() if isinstance(c, ShutterCapabilities)]
-    slowest_s = max((tau for meter in meters for tau in meter.time_constant_s), default=0.0)
-    total = sum(_step_duration_s(step, recipe, stages, slowest_s=slowest_s) for step in recipe.steps)
-    if recipe.dark is not None:
-        one = DARK_DWELLS * recipe.dwell.time_s + 2 * 9.21 * slowest_s + 2 * sum(c.moves_in_s for c in shutters)
-        total += (recipe.dark.before + recipe.dark.after) * one
-    return total
-
-
-def _step_duration_s(step: Step, recipe: Recipe, stages: Mapping[str, StageCapabilities], *, slowest_s: float) -> float:
-    last: dict[str, float] = {}
-    per_visit = settle_s(step, slowest_s) + recipe.dwell.time_s + 4 * EXCHANGE_S
-    total = 0.0
-    for visit in step_visits(step):
-        moves = [0.0]
-        for axis in step.sweep:
-            target = visit.asked_deg[axis.role]
-            if last.get(axis.role) != target:
-                moves.append(_move_s(last.get(axis.role), target, axis, stages[axis.role]))
-                last[axis.role] = target
-        total += max(moves) + per_visit
-    return total
-
-
-def _move_s(last_deg: float | None, target_deg: float, axis: Axis, stage: StageCapabilities) -> float:
-    total, here = 0.0, 0.0 if last_deg is None else last_deg
-    for point in waypoints(last_deg, target_deg, axis.approach, backlash_deg=stage.backlash_deg):
-        total += stage.travel_time_s(point - here)
-        here = point
-    return total
+    return max([9.21 * time_constant_s, *(axis.settle_s for axis in step.sweep)])

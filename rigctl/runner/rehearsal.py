@@ -30,6 +30,7 @@ class SimulatedPerson:
 
     bench: Bench
     timeline: Timeline
+    is_there: bool = True
 
     def block_beam(self) -> None:
         """Put something into the beam."""
@@ -38,6 +39,22 @@ class SimulatedPerson:
     def clear_beam(self) -> None:
         """Take it away."""
         self.bench.block_by_hand(False, self.timeline.now())
+
+    def cap_detectors(self) -> None:
+        """Put the caps on."""
+        self.bench.cap_by_hand(True, self.timeline.now())
+
+    def uncap_detectors(self) -> None:
+        """Take the caps off."""
+        self.bench.cap_by_hand(False, self.timeline.now())
+
+    def take_out(self, element: str) -> None:
+        """Take an element out of the beam."""
+        self.bench.take_out_by_hand(element, True, self.timeline.now())
+
+    def put_in(self, element: str) -> None:
+        """Put an element back."""
+        self.bench.take_out_by_hand(element, False, self.timeline.now())
 
 
 def rehearsal_job(  # noqa: PLR0913  # a rehearsal is put together from this many independent parts
@@ -67,7 +84,9 @@ def rehearsal_job(  # noqa: PLR0913  # a rehearsal is put together from this man
         recipe=recipe,
         rig=rig,
         drivers=drivers,
-        open_channel=lambda address: wrap(LoopbackChannel(address, bench.twin(address), timeline), timeline),
+        open_channel=lambda address, _opening: wrap(
+            LoopbackChannel(address, bench.twin(address), timeline), timeline
+        ),
         timeline=timeline,
         person=SimulatedPerson(bench, timeline),
         progress=progress,

@@ -1,4 +1,4 @@
-"""One visit: move, settle, dwell; and one dark.
+"""One visit: bring everything there, settle, dwell.
 
 It owns the sequence of a single stop and remembers where each mount stands, so that one-sided approaches hold.
 It never retries and never writes the run file.
@@ -7,25 +7,25 @@ It never retries and never writes the run file.
 from collections.abc import Mapping
 from typing import Any
 
-from rigctl.files.recipe import Axis, Recipe, Step
+from rigctl.files.recipe import Axis, Step
 from rigctl.interfaces import Dwell, Flag
 from rigctl.record.records import dwell_record
 from rigctl.runner.approach import waypoints
 from rigctl.runner.bench import OpenBench
-from rigctl.runner.person import Person
-from rigctl.runner.plan import DARK_DWELLS, Visit, settle_s
+from rigctl.runner.plan import Visit, axis_name, settle_s
 from rigctl.runner.polling import complete
+from rigctl.runner.prepare import Climate
 from rigctl.timeline import Timeline
 
 Record = dict[str, Any]
 
 
 class Visiting:
-    """Takes visits and darks on an open bench."""
+    """Takes visits on an open bench."""
 
-    def __init__(self, bench: OpenBench, recipe: Recipe, timeline: Timeline, person: Person) -> None:
-        self.bench, self.recipe, self.timeline, self.person = bench, recipe, timeline, person
-        self._is_blocked_by_hand = False
+    def __init__(self, bench: OpenBench, timeline: Timeline, climate: Climate) -> None:
+        self.bench, self.timeline, self.climate = bench, timeline, climate
+        self.used_ranges_w: dict[str, set[float]] = {role: set() for role in bench.meters}
         self._ranges_w: dict[str, float] = {}
         self._standing_deg: dict[str, float] = {}
         self._read_deg: dict[str, float] = {}
@@ -36,9 +36,14 @@ class Visiting:
         self._ranges_w[role] = meter.set_range(min(power_w, meter.capabilities.ranges_w[-1]))
         return self._ranges_w[role]
 
+    def range_w(self, role: str) -> float:
+        """Return the range that a meter is on, W."""
+        return self._ranges_w[role]
+
     def raise_range(self, role: str) -> bool:
         """Go to a meter's next larger range; False when it is on its largest."""
-        larger = [full for full in self.bench.meters[role].capabilities.ranges_w if full > self._ranges_w[role] * 1.01]
+        able = self.bench.meters[role].capabilities
+        larger = [full for full in able.ranges_w if full > self._ranges_w[role] * 1.01]
         if larger:
             self.use_range(role, larger[0])
         return bool(larger)
@@ -48,11 +53,14 @@ class Visiting:
         self._standing_deg.clear()
 
     def take(self, visit: Visit, step: Step) -> Record:
-        """Move, settle and dwell; return the visit's record without its attempt and status."""
+        """Bring everything there, settle and dwell; return the visit's record without its attempt and status."""
         began_s = self.timeline.now()
-        self._move(visit, step)
-        self._wait(settle_s(step, self._slowest_s()))
-        dwells = self._dwell()
+        read = self._arrive(visit, step)
+        self.wait(settle_s(step, self.slowest_s()))
+        dwells = self.dwell()
+        for role, dwell in dwells.items():
+            self.used_ranges_w[role].add(dwell.range_w)
+        conditions = self.climate.conditions()
         return {
             "kind": "visit",
             "step": visit.step,
@@ -60,61 +68,53 @@ class Visiting:
             "index": list(visit.index),
             "t_begin": began_s,
             "t_end": self.timeline.now(),
-            "asked": dict(visit.asked_deg),
-            "read": {role: self._read_deg[role] for role in visit.asked_deg},
+            "asked": dict(visit.asked),
+            "read": {**read, **_read_back(step, conditions)},
             "detectors": {role: dwell_record(dwell) for role, dwell in dwells.items()},
+            "conditions": conditions,
         }
 
-    def dark(self, step: str, when: str) -> list[Record]:
-        """Block the beam, dwell several times, clear it; return a record for each dwell."""
-        how = self._block()
-        self._wait(settle_s(self.recipe.steps[0], self._slowest_s()))
-        records: list[Record] = []
-        for _ in range(DARK_DWELLS):
-            began_s = self.timeline.now()
-            detectors = {role: dwell_record(dwell) for role, dwell in self._dwell().items()}
-            times = {"t_begin": began_s, "t_end": self.timeline.now()}
-            records.append({"kind": "dark", "step": step, "when": when, "how": how, **times, "detectors": detectors})
-        return records
+    def dwell(self) -> Mapping[str, Dwell]:
+        """Have every meter read at once."""
+        begun = {role: meter.begin_dwell() for role, meter in self.bench.meters.items()}
+        return complete(self.timeline, begun)
 
-    def open_beam(self) -> None:
-        """Let the light in: open the shutter, and ask for the hand's block to be taken away where there is one."""
-        self.set_shutter(is_open=True)
-        if self._is_blocked_by_hand:
-            self.person.clear_beam()
-            self._is_blocked_by_hand = False
+    def slowest_s(self) -> float:
+        """Return the time constant of the slowest meter on the range it is on, s."""
+        slowest = 0.0
+        for role, meter in self.bench.meters.items():
+            able = meter.capabilities
+            fitting = (full >= self._ranges_w[role] * 0.99 for full in able.ranges_w)
+            slowest = max(slowest, able.time_constant_s[next(at for at, fits in enumerate(fitting) if fits)])
+        return slowest
 
-    def set_shutter(self, *, is_open: bool) -> None:
-        """Open or close the shutter, where there is one."""
-        if self.bench.shutter is not None:
-            self.bench.has_let_light_in |= is_open
-            complete(self.timeline, {self.bench.shutter_role: self.bench.shutter.begin_set(is_open)})
+    def wait(self, duration_s: float) -> None:
+        """Let time pass."""
+        self.timeline.wait_until(self.timeline.now() + duration_s)
 
-    def _block(self) -> str:
-        """Block the beam as the recipe says; by hand where the rig has no shutter."""
-        is_by_hand = is_dark_by_hand(self.recipe, self.bench.shutter is not None)
-        if not is_by_hand:
-            self.set_shutter(is_open=False)
-            return "by shutter"
-        if not self._is_blocked_by_hand:
-            self.person.block_beam()
-            self._is_blocked_by_hand = True
-        return "by hand"
-
-    def _move(self, visit: Visit, step: Step) -> None:
-        """Turn every mount that is not there yet, all together, each from its own side."""
-        ways: dict[str, list[float]] = {}
+    def _arrive(self, visit: Visit, step: Step) -> dict[str, float]:
+        """Bring temperatures, then currents, then all mounts together; return the angles reached."""
         for axis in step.sweep:
-            way = self._way(axis, visit.asked_deg[axis.role])
-            if way:
-                ways[axis.role] = way
+            wanted = visit.asked[axis_name(axis)]
+            if axis.kind == "temperature":
+                self.climate.set_temperature(axis.role, wanted, axis.steady)
+        for axis in step.sweep:
+            if axis.kind == "current":
+                self.climate.set_current(axis.role, visit.asked[axis.role], axis.ramp_a_per_s)
+        turning = [axis for axis in step.sweep if axis.kind == "angle"]
+        self._turn(turning, visit.asked)
+        return {axis.role: self._read_deg[axis.role] for axis in turning}
+
+    def _turn(self, axes: list[Axis], asked: Mapping[str, float]) -> None:
+        """Turn every mount that is not there yet, all together, each from its own side."""
+        ways = {axis.role: way for axis in axes if (way := self._way(axis, asked[axis.role]))}
         for role in ways:
             self._standing_deg.pop(role, None)
         while ways:
-            stages = {role: self.bench.stages[role].begin_move(way.pop(0)) for role, way in ways.items()}
-            self._read_deg.update(complete(self.timeline, stages))
+            moves = {role: self.bench.stages[role].begin_move(way.pop(0)) for role, way in ways.items()}
+            self._read_deg.update(complete(self.timeline, moves))
             ways = {role: way for role, way in ways.items() if way}
-        self._standing_deg.update(visit.asked_deg)
+        self._standing_deg.update({axis.role: asked[axis.role] for axis in axes})
 
     def _way(self, axis: Axis, target_deg: float) -> list[float]:
         last_deg = self._standing_deg.get(axis.role)
@@ -123,30 +123,11 @@ class Visiting:
         backlash_deg = self.bench.stages[axis.role].capabilities.backlash_deg
         return list(waypoints(last_deg, target_deg, axis.approach, backlash_deg=backlash_deg))
 
-    def _dwell(self) -> Mapping[str, Dwell]:
-        begun = {role: meter.begin_dwell() for role, meter in self.bench.meters.items()}
-        return complete(self.timeline, begun)
 
-    def _slowest_s(self) -> float:
-        """Time constant of the slowest meter on the range it is on, s."""
-        slowest = 0.0
-        for role, meter in self.bench.meters.items():
-            able = meter.capabilities
-            on_range = [
-                tau
-                for full, tau in zip(able.ranges_w, able.time_constant_s, strict=True)
-                if full >= self._ranges_w[role] * 0.99
-            ]
-            slowest = max(slowest, on_range[0])
-        return slowest
-
-    def _wait(self, duration_s: float) -> None:
-        self.timeline.wait_until(self.timeline.now() + duration_s)
-
-
-def is_dark_by_hand(recipe: Recipe, has_shutter: bool) -> bool:
-    """Whether darks of a recipe need somebody's hands."""
-    return recipe.dark is not None and (recipe.dark.by == "hand" or not has_shutter)
+def _read_back(step: Step, conditions: Mapping[str, Mapping[str, float]]) -> dict[str, float]:
+    """Return temperatures and currents of a step's axes as they were read back."""
+    names = {"temperature": "temperature_c", "current": "current_a"}
+    return {axis.role: conditions[axis.role][names[axis.kind]] for axis in step.sweep if axis.kind in names}
 
 
 def is_overloaded(record: Record) -> list[str]:
