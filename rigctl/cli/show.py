@@ -13,7 +13,15 @@ if TYPE_CHECKING:
     from rigctl.polarimetry.results import Refusal
 
 POWER_PREFIXES = ((1.0, "W"), (1e-3, "mW"), (1e-6, "uW"), (1e-9, "nW"), (1e-12, "pW"))
-UNITS = {"angle": (1.0, "deg"), "retardance": (1.0, "waves"), "ratio": (1.0, ""), "drift": (100.0, "%/h")}
+UNITS = {
+    "angle": (1.0, "deg"),
+    "retardance": (1.0, "waves"),
+    "ratio": (1.0, ""),
+    "fraction": (100.0, "%"),
+    "gain": (1.0, ""),
+    "drift": (100.0, "%/h"),
+    "coefficient": (1e6, "ppm/K"),
+}
 
 
 def scale_and_unit(kind: str, value: float) -> tuple[float, str]:

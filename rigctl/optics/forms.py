@@ -2,6 +2,7 @@
 
 It owns one formula per form of that number, each with its slope. `ratio` and `retardance` are what
 people write; `leak` and `cosine` are the same strengths written so that a fit stays linear at the edges.
+Each formula takes a number, or a column of them where it differs from visit to visit.
 """
 
 from collections.abc import Callable, Mapping
@@ -10,7 +11,7 @@ from typing import TypeAlias
 
 import numpy as np
 
-from rigctl.optics.kernel import Coefficients
+from rigctl.optics.kernel import Coefficients, as_number
 
 Formed: TypeAlias = tuple[Coefficients, Coefficients]
 TURN = 2.0 * np.pi
@@ -27,8 +28,9 @@ def from_ratio(ratio: float) -> Formed:
     ------
     Definition of the coefficients in `kernel.Coefficients`.
     """
-    root = ratio**0.5 if ratio.real > 0 else 0.0
-    slope = 0.5 / root if root else 0.0
+    is_positive = np.real(ratio) > 0
+    root = as_number(np.where(is_positive, ratio, 0.0) ** 0.5)
+    slope = as_number(np.divide(0.5, root, out=np.zeros_like(root), where=is_positive))
     return (
         Coefficients((1.0 + ratio) / 2, (1.0 - ratio) / 2, root, 0.0),
         Coefficients(0.5, -0.5, slope, 0.0),
@@ -81,6 +83,26 @@ def from_cosine(cosine: float) -> Formed:
     return Coefficients(1.0, 0.0, cosine, 0.0), Coefficients(0.0, 0.0, 1.0, 0.0)
 
 
+def from_fraction(fraction: float) -> Formed:
+    """Beam that a pick-off leaves when it takes a fraction of the light; it does not polarize.
+
+    Returns
+    -------
+    Coefficients, and their slopes with the fraction.
+
+    Source
+    ------
+    Definition of the coefficients in `kernel.Coefficients`, with k1 = k2 = 1 - fraction.
+    """
+    return Coefficients(1.0 - fraction, 0.0, 1.0 - fraction, 0.0), Coefficients(-1.0, 0.0, -1.0, 0.0)
+
+
 FORMS: Mapping[str, Callable[[float], Formed]] = MappingProxyType(
-    {"ratio": from_ratio, "leak": from_leak, "retardance": from_retardance, "cosine": from_cosine}
+    {
+        "ratio": from_ratio,
+        "leak": from_leak,
+        "retardance": from_retardance,
+        "cosine": from_cosine,
+        "fraction": from_fraction,
+    }
 )

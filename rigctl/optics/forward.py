@@ -1,83 +1,85 @@
-"""Power at each detector for every visit, with all its slopes, and the same for one moment as plain floats.
+"""Power at each detector for every visit, with all its slopes.
 
-It owns the way through the whole train, forward with the light and back with the detector's row; it
-never fits and never draws noise.
+It owns the way through the whole train, forward with the light and back with each detector's row; it never
+fits and never draws noise.
 """
 
-import math
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from rigctl.errors import PlanError
-from rigctl.optics.forms import FORMS
-from rigctl.optics.kernel import Array, Coefficients, Stokes, coefficient_slopes, through, torque
-from rigctl.optics.train import DRIFT, POWER, Element, Train
+from rigctl.optics.kernel import Array, Stokes, coefficient_slopes, through, torque
+from rigctl.optics.parts import Detector, Element, at_level
+from rigctl.optics.stages import DEGREE, Stage, planes_of, stages_of, value_at
+from rigctl.optics.train import DRIFT, POWER, Train
 from rigctl.optics.visits import Visits
-
-DEGREE = math.pi / 180.0
 
 
 @dataclass(frozen=True, slots=True)
-class _Stage:
-    """An element as the visits meet it."""
+class _Passage:
+    """A train and its visits at certain values: the elements, and the light from plane to plane."""
 
-    element: Element
-    turn: tuple[Array, Array]
-    coefficients: Coefficients
-    slopes: Coefficients
+    train: Train
+    visits: Visits
+    values: Mapping[str, float]
+    stages: Sequence[Stage]
+    planes: Sequence[Stokes[Array]]
+
+    def at(self, address: str) -> float:
+        """The value behind an address, a number or a column."""
+        return value_at(self.train, self.visits, self.values, address)
+
+    def place(self, detector: Detector) -> int:
+        """Number of the plane at which a detector takes its light."""
+        if detector.after is None:
+            return len(self.stages)
+        return self.train.elements.index(self.train.element(detector.after))
+
+    def share(self, detector: Detector) -> float | Array:
+        """Part of the light at its plane that a detector gets: a pick-off's fraction while that is in the beam."""
+        if detector.after is None:
+            return 1.0
+        stage = self.stages[self.place(detector)]
+        return stage.seen(self.at(stage.element.strength) * np.ones(self.visits.count))
+
+    def gain(self, detector: Detector) -> float:
+        """Reading of a detector per power, a number or a column."""
+        return self.at(detector.gain) if detector.gain in self.train.quantities else 1.0
+
+    def transmission(self, detector: Detector) -> Array:
+        """Power that reaches a detector from a steady source of unit power."""
+        transmitted: Array = self.planes[self.place(detector)][0] * self.share(detector)
+        return transmitted
+
+    def openness(self) -> Array:
+        """Relative power of the source without its drift, 0 when blocked."""
+        openness = np.asarray(self.visits.is_open, dtype=float)
+        return openness if self.visits.power is None else openness * self.visits.power
+
+    def rows(self, detector: Detector) -> list[Stokes[Array]]:
+        """A detector's row at each plane from the source's to its own."""
+        zero = np.zeros(self.visits.count)
+        rows: list[Stokes[Array]] = [(zero + self.share(detector), zero, zero, zero)]
+        for stage in reversed(self.stages[: self.place(detector)]):
+            rows.append(through(rows[-1], stage.turn, stage.coefficients.reversed()))
+        return rows[::-1]
 
 
-def _stage(train: Train, element: Element, visits: Visits, values: Mapping[str, float]) -> _Stage:
-    azimuth_deg = values[element.axis] + _mount_deg(element, visits) - values.get(element.dial_offset or "", 0.0)
-    twice = (2.0 * DEGREE) * azimuth_deg
-    form = FORMS[train.quantities[element.strength].kind]
-    return _Stage(element, (np.cos(twice), np.sin(twice)), *form(values[element.strength]))
+def _passage(train: Train, visits: Visits, x: Mapping[str, float]) -> _Passage:
+    values = train.values(x)
+    stages = stages_of(train, visits, values)
+    return _Passage(train, visits, values, stages, planes_of(train, visits, stages))
 
 
-def _rest_deg(element: Element, values: Mapping[str, float]) -> float:
-    """Azimuth while the mount's dial reads 0 deg."""
-    return values[element.axis] - (values[element.dial_offset] if element.dial_offset else 0.0)
-
-
-def _mount_deg(element: Element, visits: Visits) -> Array:
-    if element.mount is None:
-        return np.zeros(visits.count)
-    if element.mount not in visits.angle_deg:
-        raise PlanError(f"the visits do not say where '{element.mount}' stood", where=element.name)
-    return visits.angle_deg[element.mount]
-
-
-def _planes(source: Stokes[Array], stages: Sequence[_Stage]) -> list[Stokes[Array]]:
-    planes = [source]
-    for stage in stages:
-        planes.append(through(planes[-1], stage.turn, stage.coefficients))
-    return planes
-
-
-def _rows(count: int, stages: Sequence[_Stage]) -> list[Stokes[Array]]:
-    """The detector's row at each plane, from the source's plane on."""
-    zero = np.zeros(count)
-    rows = [(np.ones(count), zero, zero, zero)]
-    for stage in reversed(stages):
-        rows.append(through(rows[-1], stage.turn, stage.coefficients.reversed()))
-    return rows[::-1]
-
-
-def _source(train: Train, visits: Visits) -> Stokes[Array]:
-    S0, S1, S2, S3 = (np.full(visits.count, component) for component in train.source)
-    return S0, S1, S2, S3
-
-
-def transmission(train: Train, visits: Visits, x: Mapping[str, float]) -> Array:
-    """Power at the end of the train for a steady, open source of unit power, shape (n,).
+def unit_light(train: Train, visits: Visits, x: Mapping[str, float]) -> Mapping[str, Array]:
+    """What each detector reads of a source of unit power without drift, stray light left out; shape (n,).
 
     The values of `x` may be columns of shape (G, 1): the result is then of shape (G, n).
     """
-    values = train.values(x)
-    stages = [_stage(train, element, visits, values) for element in train.elements]
-    return _planes(_source(train, visits), stages)[-1][0]
+    passage = _passage(train, visits, x)
+    openness = passage.openness()
+    return {d.name: openness * passage.gain(d) * passage.transmission(d) for d in train.detectors}
 
 
 def readings(train: Train, visits: Visits, x: Mapping[str, float]) -> Mapping[str, Array]:
@@ -90,20 +92,27 @@ def readings(train: Train, visits: Visits, x: Mapping[str, float]) -> Mapping[st
     visits
         Settings of n visits.
     x
-        Values by address, in the units of their kinds.
+        Values by address, in the units of their kinds; `part.retardance @ 22 degC` is that of one level,
+        `part.retardance` that of all levels which are not given.
 
     Returns
     -------
     By the detector's name: shape (n,), W, stray light included.
     """
-    values = train.values(x)
-    beam = values[POWER] * _course(visits, values) * transmission(train, visits, x)
-    return {detector.name: beam + values[detector.stray_light] for detector in train.detectors}
+    passage = _passage(train, visits, x)
+    return {d.name: _level(passage, d, _beam(passage, d)) for d in train.detectors}
 
 
-def _course(visits: Visits, values: Mapping[str, float]) -> Array:
-    """The source's course: 0 when blocked, else 1 in the middle of the time, with its drift."""
-    return visits.is_open * (1.0 + values[DRIFT] * visits.centred_h)
+def _beam(passage: _Passage, detector: Detector) -> Array:
+    """Power of the source that counts for a detector, gain and drift included."""
+    course = 1.0 + passage.at(DRIFT) * passage.visits.centred_h
+    beam: Array = passage.openness() * (passage.at(POWER) * passage.gain(detector)) * course
+    return beam
+
+
+def _level(passage: _Passage, detector: Detector, beam: Array) -> Array:
+    level: Array = beam * passage.transmission(detector) + passage.at(detector.stray_light)
+    return level
 
 
 def readings_and_slopes(
@@ -116,7 +125,7 @@ def readings_and_slopes(
     train, visits, x
         As for `readings`.
     names
-        Addresses of the P quantities to differentiate by.
+        Addresses of the P quantities to differentiate by, those of single levels among them.
 
     Returns
     -------
@@ -124,92 +133,78 @@ def readings_and_slopes(
 
     Source
     ------
-    One pass forward with the light and one back with the detector's row; every slope is then a local
+    One pass forward with the light and one back with each detector's row; every slope is then a local
     product (see `kernel`). Checked by complex step.
     """
-    values = train.values(x)
-    stages = [_stage(train, element, visits, values) for element in train.elements]
-    planes, rows = _planes(_source(train, visits), stages), _rows(visits.count, stages)
-    course, fraction = _course(visits, values), planes[-1][0]
-    columns = {
-        POWER: course * fraction,
-        DRIFT: values[POWER] * visits.is_open * visits.centred_h * fraction,
-    }
-    beam_w = values[POWER] * course
-    for address, slope in _element_slopes(stages, planes, rows, set(names)).items():
-        columns[address] = beam_w * slope
-    beam = beam_w * fraction
-    levels = {d.name: beam + values[d.stray_light] for d in train.detectors}
-    ones, zeros = np.ones(visits.count), np.zeros(visits.count)
-    slopes = {
-        d.name: np.stack([columns.get(n, ones if n == d.stray_light else zeros) for n in names], axis=-1)
-        for d in train.detectors
-    }
+    passage = _passage(train, visits, x)
+    masks = _level_masks(train, visits)
+    levels, slopes, zeros = {}, {}, np.zeros(visits.count)
+    for detector in train.detectors:
+        beam = _beam(passage, detector)
+        levels[detector.name] = _level(passage, detector, beam)
+        columns = _columns(passage, detector, beam, {masks[n][0] if n in masks else n for n in names})
+        columns |= {n: columns[base] * mask for n, (base, mask) in masks.items() if base in columns}
+        slopes[detector.name] = np.stack([columns.get(n, zeros) for n in names], axis=-1)
     return levels, slopes
 
 
-def _element_slopes(
-    stages: Sequence[_Stage], planes: Sequence[Stokes[Array]], rows: Sequence[Stokes[Array]], names: set[str]
-) -> dict[str, Array]:
-    slopes: dict[str, Array] = {}
-    for k, stage in enumerate(stages):
-        element = stage.element
-        if element.strength in names:
-            local = coefficient_slopes(planes[k], rows[k + 1], stage.turn)
-            slopes[element.strength] = sum((s * d for s, d in zip(stage.slopes, local, strict=True)), np.zeros(()))
-        if names.intersection((element.axis, element.dial_offset)):
+def _level_masks(train: Train, visits: Visits) -> dict[str, tuple[str, Array]]:
+    """By the address at a level: the address without it, and 1 where a visit belongs to the level."""
+    apart = [(q.name, visits.levels_for(q.each, q.name)) for q in train.quantities.values() if q.each is not None]
+    return {
+        at_level(name, label): (name, 1.0 * (levels.index == k))
+        for name, levels in apart
+        for k, label in enumerate(levels.labels)
+    }
+
+
+def _columns(passage: _Passage, detector: Detector, beam: Array, names: set[str]) -> dict[str, Array]:
+    """Slopes of one detector's readings by address."""
+    visits, transmitted = passage.visits, passage.transmission(detector)
+    steady = passage.openness() * passage.gain(detector) * transmitted
+    columns = {address: beam * slope for address, slope in _element_slopes(passage, detector, names).items()}
+    columns[POWER] = steady * (1.0 + passage.at(DRIFT) * visits.centred_h)
+    columns[DRIFT] = steady * passage.at(POWER) * visits.centred_h
+    columns[detector.stray_light] = np.ones(visits.count)
+    if detector.gain in names:
+        columns[detector.gain] = columns[POWER] * passage.at(POWER) / passage.gain(detector)
+    return columns
+
+
+def _element_slopes(passage: _Passage, detector: Detector, names: set[str]) -> dict[str, Array]:
+    """Slopes of the transmission with the quantities of the elements."""
+    planes, rows, slopes = passage.planes, passage.rows(detector), dict[str, Array]()
+    for k, stage in enumerate(passage.stages[: passage.place(detector)]):
+        wanted = names.intersection(stage.slopes)
+        local = coefficient_slopes(planes[k], rows[k + 1], stage.turn) if wanted else ()
+        for address in wanted:
+            products = [slope * part for slope, part in zip(stage.slopes[address], local, strict=True)]
+            slopes[address] = sum(products, np.zeros(passage.visits.count))
+        axis, dial_offset = stage.element.axis, stage.element.dial_offset
+        if axis is not None and names.intersection((axis, dial_offset)):
             turning = DEGREE * (torque(planes[k + 1], rows[k + 1]) - torque(planes[k], rows[k]))
-            slopes[element.axis] = turning
-            if element.dial_offset:
-                slopes[element.dial_offset] = -turning
+            slopes[axis] = turning
+            if dial_offset is not None:
+                slopes[dial_offset] = -turning
+    if detector.after is not None:
+        stage = passage.stages[passage.place(detector)]
+        slopes[stage.element.strength] = stage.seen(planes[passage.place(detector)][0])
     return slopes
 
 
 def coefficient_visibility(
     train: Train, visits: Visits, x: Mapping[str, float], element: Element
 ) -> tuple[Array, Array]:
-    """Slopes of the transmission with the cosine and sine coefficients of one element.
+    """Slopes of what the detectors get with the cosine and sine coefficients of one element, one after another.
 
     Where one is zero at every visit the sweep cannot see that coefficient, and a fit is free to choose
     the form of the element's strength that stays linear.
     """
-    values = train.values(x)
-    stages = [_stage(train, e, visits, values) for e in train.elements]
-    planes, rows = _planes(_source(train, visits), stages), _rows(visits.count, stages)
-    k = train.elements.index(element)
-    _, _, cosine, sine = coefficient_slopes(planes[k], rows[k + 1], stages[k].turn)
-    return cosine * visits.is_open, sine * visits.is_open
-
-
-def reader(train: Train, x: Mapping[str, float]) -> Callable[[Mapping[str, float], float], tuple[float, ...]]:
-    """A function of plain floats for one moment, for whoever asks reading by reading.
-
-    Parameters
-    ----------
-    train, x
-        As for `readings`; both are settled once.
-
-    Returns
-    -------
-    A function of the dial angles (deg, by the mount's role) and the source's power (W) that gives the
-    power at each detector, W, in the order of the train. Light only: no stray light, no drift.
-    """
-    values = train.values(x)
-    stages = [_scalar_stage(train, element, values) for element in train.elements]
-    source, count = train.source, len(train.detectors)
-
-    def read(angles_deg: Mapping[str, float], power_w: float) -> tuple[float, ...]:
-        light = source
-        for mount, base_deg, coefficients in stages:
-            twice = (2.0 * DEGREE) * (base_deg + (angles_deg[mount] if mount else 0.0))
-            light = through(light, (math.cos(twice), math.sin(twice)), coefficients)
-        return (power_w * light[0],) * count
-
-    return read
-
-
-def _scalar_stage(
-    train: Train, element: Element, values: Mapping[str, float]
-) -> tuple[str | None, float, Coefficients]:
-    coefficients, _ = FORMS[train.quantities[element.strength].kind](values[element.strength])
-    return element.mount, float(_rest_deg(element, values)), Coefficients(*map(float, coefficients))
+    passage, k = _passage(train, visits, x), train.elements.index(element)
+    stage, cosines, sines = passage.stages[k], [], []
+    for detector in train.detectors:
+        if k < passage.place(detector):
+            _, _, cosine, sine = coefficient_slopes(passage.planes[k], passage.rows(detector)[k + 1], stage.turn)
+            cosines.append(stage.seen(cosine * visits.is_open))
+            sines.append(stage.seen(sine * visits.is_open))
+    return np.concatenate([*cosines, np.zeros(0)]), np.concatenate([*sines, np.zeros(0)])

@@ -4,13 +4,14 @@ It owns the arithmetic on four Stokes components; it never knows names, units or
 lines carry floats (the simulated bench), arrays (prediction and fit) and complex steps (tests).
 """
 
-from typing import NamedTuple, TypeAlias, TypeVar
+from typing import Any, NamedTuple, TypeAlias, TypeVar, cast
 
 import numpy as np
 import numpy.typing as npt
 
 Array: TypeAlias = npt.NDArray[np.float64]
 Flags: TypeAlias = npt.NDArray[np.bool_]
+Indices: TypeAlias = npt.NDArray[np.intp]
 Number = TypeVar("Number", float, Array)
 Stokes: TypeAlias = tuple[Number, Number, Number, Number]
 
@@ -30,6 +31,11 @@ class Coefficients(NamedTuple):
     def reversed(self) -> "Coefficients":
         """The same element met from behind: its Mueller matrix transposed."""
         return self._replace(sine=-self.sine)
+
+
+def as_number(column: npt.NDArray[Any]) -> float:
+    """A column where a number is expected: it broadcasts through the same arithmetic."""
+    return cast("float", column)
 
 
 def through(light: Stokes[Number], turn: tuple[Number, Number], element: Coefficients) -> Stokes[Number]:

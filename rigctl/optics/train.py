@@ -1,106 +1,19 @@
 """The train: what the light meets between the source and the detectors, and every quantity of it.
 
-It owns names and addresses, `<element, source or detector>.<quantity>`; it never computes a power.
+It owns which quantities belong to it and in which order; it never computes a power.
 """
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
-from types import MappingProxyType
 
 from rigctl.errors import PlanError
 from rigctl.optics.kernel import Stokes
+from rigctl.optics.parts import PICK_OFF, STRENGTHS, Detector, Element, Quantity, at_level
+from rigctl.optics.visits import Visits
 
 POWER = "source.power"
 DRIFT = "source.drift"
-STRAY_LIGHT = "stray light"
-DIAL_OFFSET = "dial offset"
-# The quantity that says what an element does, by its kind.
-STRENGTHS: Mapping[str, str] = MappingProxyType({"polarizer": "extinction ratio", "retarder": "retardance"})
 UNPOLARIZED: Stokes[float] = (1.0, 0.0, 0.0, 0.0)
-
-
-@dataclass(frozen=True, slots=True)
-class Quantity:
-    """One number of the train and what is known of it.
-
-    Parameters
-    ----------
-    name
-        Address, such as `part.retardance`.
-    kind
-        `angle` (deg), `retardance` (waves), `ratio`, `power` (W) or `drift` (1/h, relative).
-        A fit also uses `cosine` for a retardance and `leak` for an extinction ratio.
-    value
-        Nominal value.
-    u
-        Standard uncertainty. For an unknown it only says where to look; otherwise it is a prior.
-    is_unknown
-        To be found and reported.
-    is_free
-        Fitted though nobody asked for it: power, drift, stray light.
-    """
-
-    name: str
-    kind: str
-    value: float
-    u: float | None = None
-    is_unknown: bool = False
-    is_free: bool = False
-
-    @property
-    def is_fitted(self) -> bool:
-        """Whether a fit varies it."""
-        return self.is_unknown or self.is_free or bool(self.u)
-
-    @property
-    def prior_u(self) -> float | None:
-        """Standard uncertainty of what is known beforehand, or None when nothing is."""
-        return None if self.is_unknown or not self.u else self.u
-
-
-@dataclass(frozen=True, slots=True)
-class Element:
-    """A polarizer or a retarder, fixed or turned by a mount (the mount's role name)."""
-
-    name: str
-    kind: str
-    mount: str | None = None
-
-    def address(self, short_name: str) -> str:
-        """Address of one of its quantities."""
-        return f"{self.name}.{short_name}"
-
-    @property
-    def strength(self) -> str:
-        """Address of its extinction ratio or retardance."""
-        return self.address(STRENGTHS[self.kind])
-
-    @property
-    def axis(self) -> str:
-        """Address of its axis."""
-        return self.address("axis")
-
-    @property
-    def dial_offset(self) -> str | None:
-        """Address of its dial offset, if a mount turns it."""
-        return self.address(DIAL_OFFSET) if self.mount else None
-
-    @property
-    def addresses(self) -> tuple[str, ...]:
-        """Addresses of all its quantities."""
-        return (self.axis, self.strength, *([self.dial_offset] if self.dial_offset else []))
-
-
-@dataclass(frozen=True, slots=True)
-class Detector:
-    """A detector at the end of the train, under its role name."""
-
-    name: str
-
-    @property
-    def stray_light(self) -> str:
-        """Address of the light it sees that did not come through the train."""
-        return f"{self.name}.{STRAY_LIGHT}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -114,16 +27,17 @@ class Train:
     elements
         In the order in which the light meets them.
     detectors
-        All of them at the end.
+        At the end, or behind a pick-off.
     quantities
-        By address: the elements' own, `source.power`, `source.drift` and each detector's stray light.
+        By address: the elements' own, `source.power`, `source.drift`, each detector's stray light and, where it
+        is not 1, its gain; once levelled, also those of the levels.
     source
         Stokes components of the light for unit power.
 
     Raises
     ------
     PlanError
-        When a quantity is missing or belongs to nothing, or a kind is not known.
+        When a quantity is missing or belongs to nothing, a kind is not known, or a part is in the wrong place.
     """
 
     elements: tuple[Element, ...]
@@ -139,31 +53,69 @@ class Train:
     def _mistakes(self) -> Iterator[str]:
         kinds = {e.kind for e in self.elements} - STRENGTHS.keys()
         if kinds:
-            yield f"no element is called '{min(kinds)}': use polarizer or retarder"
+            yield f"no element is called '{min(kinds)}': use {', '.join(STRENGTHS)}"
             return
         addresses = self.addresses
         yield from (f"two parts of the train share '{a}'" for a in sorted(_repeated(addresses)))
         yield from (f"'{a}' has no value" for a in addresses if a not in self.quantities)
-        yield from (f"'{a}' belongs to nothing in the train" for a in sorted(set(self.quantities) - set(addresses)))
+        known = {*addresses, *(q.name for a in addresses for q in self.levels_of(a))}
+        yield from (f"'{a}' belongs to nothing in the train" for a in sorted(set(self.quantities) - known))
+        yield from self._misplaced()
+
+    def _misplaced(self) -> Iterator[str]:
+        pick_offs = [e for e in self.elements if e.kind == PICK_OFF]
+        yield from (f"a pick-off neither turns nor is warmed: '{e.name}'" for e in pick_offs if e.mount or e.warmed_by)
+        missing = sorted({d.after for d in self.detectors if d.after} - {e.name for e in pick_offs})
+        yield from (f"there is no pick-off '{name}' for a detector to stand behind" for name in missing)
 
     @property
     def addresses(self) -> tuple[str, ...]:
-        """Every address, elements first, in the order of the light."""
+        """Every address, elements first, in the order of the light; those of levels left out."""
         parts = [a for e in self.elements for a in e.addresses]
-        return (*parts, POWER, DRIFT, *(d.stray_light for d in self.detectors))
+        gains = [d.gain for d in self.detectors if d.gain in self.quantities]
+        return (*parts, POWER, DRIFT, *(d.stray_light for d in self.detectors), *gains)
+
+    def levels_of(self, address: str) -> tuple[Quantity, ...]:
+        """The quantities that stand for this one at its levels; none before the train is levelled."""
+        quantity = self.quantities.get(address)
+        if quantity is None or quantity.each is None:
+            return ()
+        return tuple(q for name, q in self.quantities.items() if name.startswith(at_level(address, "")))
 
     @property
     def fitted(self) -> tuple[Quantity, ...]:
         """The quantities that a fit varies, in the order of the light."""
-        return tuple(self.quantities[a] for a in self.addresses if self.quantities[a].is_fitted)
+        every = [q for a in self.addresses for q in self.levels_of(a) or (self.quantities[a],)]
+        return tuple(q for q in every if q.is_fitted)
+
+    def element(self, name: str) -> Element:
+        """The element of that name."""
+        return next(element for element in self.elements if element.name == name)
 
     def values(self, x: Mapping[str, float]) -> dict[str, float]:
         """Nominal values, overlaid by those of `x`."""
         return {name: q.value for name, q in self.quantities.items()} | dict(x)
 
     def rewritten(self, *quantities: Quantity) -> "Train":
-        """The same train with some quantities replaced."""
+        """The same train with some quantities replaced or added."""
         return replace(self, quantities={**self.quantities, **{q.name: q for q in quantities}})
+
+    def levelled(self, visits: Visits) -> "Train":
+        """The same train with a quantity for each level of those that have levels.
+
+        Raises
+        ------
+        PlanError
+            When the visits do not tell these levels.
+        """
+        apart = [q for q in self.quantities.values() if q.each is not None]
+        added = [
+            replace(q, name=name, each=None)
+            for q in apart
+            for name in (at_level(q.name, label) for label in visits.levels_for(q.each or "", q.name).labels)
+            if name not in self.quantities
+        ]
+        return self.rewritten(*added)
 
 
 def _repeated(names: tuple[str, ...]) -> set[str]:

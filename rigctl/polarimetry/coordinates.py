@@ -15,13 +15,25 @@ import numpy as np
 
 from rigctl.optics.forward import coefficient_visibility
 from rigctl.optics.kernel import Array
-from rigctl.optics.train import Element, Quantity, Train
+from rigctl.optics.parts import Element, Quantity
+from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
 from rigctl.polarimetry.results import Estimate
 
 # What is plausible before any sweep, in human terms, by form.
 WIDTHS: Mapping[str, float] = MappingProxyType(
-    {"angle": 30.0, "retardance": 0.25, "cosine": 1.0, "ratio": 0.1, "leak": 0.3, "power": 1.0, "drift": 1.0}
+    {
+        "angle": 30.0,
+        "retardance": 0.25,
+        "cosine": 1.0,
+        "ratio": 0.1,
+        "leak": 0.3,
+        "fraction": 0.1,
+        "gain": 0.1,
+        "coefficient": 1e-3,
+        "power": 1.0,
+        "drift": 1.0,
+    }
 )
 TURN = 2.0 * np.pi
 Z95 = 1.959963984540054  # two-sided 95 % quantile of the normal distribution

@@ -12,7 +12,8 @@ import numpy as np
 from rigctl.errors import UndecidedError
 from rigctl.optics.forward import readings
 from rigctl.optics.kernel import Array, Flags
-from rigctl.optics.train import Quantity, Train
+from rigctl.optics.parts import Quantity
+from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
 from rigctl.polarimetry.coordinates import WIDTHS, beyond_edge, estimate_of, in_fit_forms, to_fit, to_people
 from rigctl.polarimetry.descent import Descent, covariance, descend

@@ -10,7 +10,8 @@ import numpy as np
 
 from rigctl.optics.forward import readings_and_slopes
 from rigctl.optics.kernel import Array
-from rigctl.optics.train import POWER, Quantity, Train
+from rigctl.optics.parts import Quantity
+from rigctl.optics.train import POWER, Train
 from rigctl.optics.visits import Visits
 from rigctl.polarimetry.coordinates import WIDTHS, to_people
 

@@ -10,9 +10,10 @@ from typing import cast
 
 import numpy as np
 
-from rigctl.optics.forward import transmission
+from rigctl.optics.forward import unit_light
 from rigctl.optics.kernel import Array
-from rigctl.optics.train import DRIFT, POWER, Quantity
+from rigctl.optics.parts import Quantity
+from rigctl.optics.train import DRIFT, POWER
 from rigctl.polarimetry.problem import Problem
 
 # Coarse enough to be quick, fine enough that 1800 random fits ended as well as fits begun at the truth.
@@ -100,11 +101,12 @@ def _design(problem: Problem, columns: dict[str, Array]) -> tuple[Array, Array]:
     """Columns power, power x drift, and stray light of each detector; all rows in standard uncertainties."""
     visits, values = problem.visits, problem.values(problem.nominal)
     nodes = cast("Mapping[str, float]", {**values, **columns})  # columns broadcast as numbers do
-    light = np.atleast_2d(transmission(problem.train, visits, nodes)) * visits.is_open
-    steady, drifting = light * (1.0 + values[DRIFT] * visits.centred_h), light * visits.centred_h
+    seen = unit_light(problem.train, visits, nodes)
     detectors = problem.train.detectors
     blocks = []
     for k, detector in enumerate(detectors):
+        light = np.atleast_2d(seen[detector.name])
+        steady, drifting = light * (1.0 + values[DRIFT] * visits.centred_h), light * visits.centred_h
         stray = np.zeros((len(detectors), *light.shape))
         stray[k] = 1.0
         block = np.stack([steady, drifting, *stray], axis=-1)

@@ -11,8 +11,9 @@ from typing import TypeAlias
 
 import numpy as np
 
-from rigctl.optics.forward import transmission
-from rigctl.optics.train import Quantity, Train
+from rigctl.optics.forward import unit_light
+from rigctl.optics.parts import Quantity
+from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
 from rigctl.polarimetry.coordinates import WIDTHS, probes
 
@@ -75,13 +76,13 @@ def symmetries(train: Train, visits: Visits) -> Symmetries:
 
 def _comparison(train: Train, visits: Visits, unknowns: Sequence[Quantity]) -> Callable[[Move], bool]:
     """Whether a move leaves the light of all visits as it is."""
-    points = [(x, transmission(train, visits, x)) for x in probes(train)]
+    points = [(x, unit_light(train, visits, x)) for x in probes(train)]
 
     def is_still(move: Move) -> bool:
         for x, light in points:
             image = {q.name: _moved(q, x[q.name], k) for q, k in zip(unknowns, move, strict=True)}
-            change = (transmission(train, visits, {**x, **image}) - light) * visits.is_open
-            if float(np.max(np.abs(change), initial=0.0)) > SAME:
+            moved = unit_light(train, visits, {**x, **image})
+            if any(float(np.max(np.abs(moved[d] - seen), initial=0.0)) > SAME for d, seen in light.items()):
                 return False
         return True
 
