@@ -20,9 +20,10 @@ from rigctl_drivers.scpi_codec import (
     parse_length_unit_m,
     parse_number,
     parse_readings,
+    parse_register,
 )
 from rigctl_drivers.scpi_family import SCPI
-from rigctl_drivers.scpi_shell import ask, identify, not_taken, set_number, set_word
+from rigctl_drivers.scpi_shell import QUESTIONABLE, ask, identify, not_taken, set_number, set_word
 
 RANGE = "SENSE:POWER:RANGE:UPPER"
 AUTO_RANGE = "SENSE:POWER:RANGE:AUTO"
@@ -30,7 +31,6 @@ APERTURE = "SENSE:POWER:APERTURE"
 WAVELENGTH = "SENSE:CORRECTION:WAVELENGTH"
 COUNT = "TRIGGER:COUNT"
 UNIT = "UNIT:POWER"
-QUESTIONABLE = "STATUS:QUESTIONABLE:CONDITION?"
 
 BLOCK_SETTINGS = (
     ("INITIATE:CONTINUOUS", "OFF", "0"),
@@ -128,7 +128,7 @@ class ScpiPowerMeter:
         with reading(self._link) as at:
             levels_w, flags = parse_readings(block, count=self._readings, address=at)
             range_w = parse_number(full_scale, address=at)
-            is_questionable = parse_number(status, address=at) != 0
+            is_questionable = parse_register(status, address=at) != 0
         flags |= Flag.QUESTIONABLE if is_questionable else Flag(0)
         return Dwell(levels_w, flags, range_w=range_w, began_s=began_s, ended_s=ended_s)
 

@@ -20,6 +20,8 @@ _ROUNDING = 1e-3
 """Relative; a read back that is shorter than what was asked is taken as rounded up to this."""
 _PRINTED = 1e-6
 """Relative; seven digits, fewer than a number in single precision keeps."""
+_REGISTER = re.compile(r"[+-]?[0-9]{1,5}")
+_SHOWN = {NotAReading.OVER: math.inf, NotAReading.UNDER: -math.inf, NotAReading.NAN: math.nan}
 _FLAGS = {
     None: Flag(0),
     NotAReading.OVER: Flag.OVERLOAD,
@@ -128,6 +130,33 @@ def parse_number(text: str, *, address: str) -> float:
     return real.value
 
 
+def parse_numbers(text: str, *, count: int, address: str) -> tuple[float, ...]:
+    """Read the numbers of a setting that has several."""
+    parts = text.split(",")
+    if len(parts) != count:
+        raise no_reply(f"{len(parts)} numbers instead of {count}", text.encode(), address=address)
+    return tuple(parse_number(part, address=address) for part in parts)
+
+
+def parse_reading(text: str, *, address: str) -> float:
+    """Read what an instrument measures; infinite beyond what it can show, NaN where it measures nothing."""
+    real = parse_real(text, address=address)
+    return real.value if real.flag is None else _SHOWN[real.flag]
+
+
+def parse_register(text: str, *, address: str) -> int:
+    """Read the bits of a status register.
+
+    Source
+    ------
+    IEEE 488.2-1992, NR1 response data; SCPI-1999 volume 1, 5.1: registers have 16 bits, of which the highest is 0;
+    from memory.
+    """
+    if not _REGISTER.fullmatch(text) or not 0 <= int(text) < 1 << 15:
+        raise no_reply("no status register", text.encode(), address=address)
+    return int(text)
+
+
 def parse_readings(text: str, *, count: int, address: str) -> tuple[tuple[float, ...], Flag]:
     """Read a block of readings; one that is none is NaN and adds its flag."""
     reals = [parse_real(part, address=address) for part in text.split(",")]
@@ -149,7 +178,7 @@ def format_number(value: float) -> str:
     return f"{value:.9G}"
 
 
-def is_same_number(asked: float, text: str, *, scale: float = 1.0) -> bool:
+def is_same_number(asked: float, text: str, *, scale: float = 1.0, step: float = 0.0) -> bool:
     """Whether a number read back is the one asked for, rounded to the digits that the instrument shows.
 
     Parameters
@@ -160,11 +189,13 @@ def is_same_number(asked: float, text: str, *, scale: float = 1.0) -> bool:
         What was read back, as it was written; it has been parsed before.
     scale
         Size of the unit of `text` in the unit of `asked`.
+    step
+        Size of the instrument's own steps, to which it rounds, in the unit of `asked`; 0 where unknown.
     """
     mantissa, _, exponent = text.strip().upper().partition("E")
     last_digit = float(f"1E{exponent or 0}") * 10.0 ** -len(mantissa.partition(".")[2])
     allowed = min(max(0.51 * last_digit * scale, _PRINTED * abs(asked)), _ROUNDING * abs(asked))
-    return math.isclose(asked, float(text) * scale, rel_tol=0.0, abs_tol=allowed)
+    return math.isclose(asked, float(text) * scale, rel_tol=0.0, abs_tol=max(allowed, 0.51 * step))
 
 
 def is_same_word(asked: str, text: str) -> bool:
