@@ -15,7 +15,8 @@ Sign = Literal["any", "positive", "not negative"]
 class Kind:
     """One kind of quantity.
 
-    `units` maps each unit to its size in the base unit; `shown` are the units that `format_quantity` picks
+    `units` maps each unit to its size in the base unit, `offsets` those whose zero is not the base unit's to where
+    that zero lies, `least` is what nothing lies below; `shown` are the units that `format_quantity` picks
     from, ascending; `per_wavelength` maps units of length in which a kind may be given once the wavelength is
     known; `needs_unit` tells whether a bare number is refused, `sign` what the kind's nature allows.
     """
@@ -27,6 +28,8 @@ class Kind:
     per_wavelength: Mapping[str, float] = field(default_factory=dict)
     needs_unit: bool = True
     sign: Sign = "any"
+    offsets: Mapping[str, float] = field(default_factory=dict)
+    least: float = -math.inf
 
     @property
     def noun(self) -> str:
@@ -49,6 +52,8 @@ def _micro(unit: str, size: float) -> dict[str, float]:
     return {f"{prefix}{unit}": size for prefix in ("u", "\u00b5", "\u03bc")}
 
 
+ABSOLUTE_ZERO_C = -273.15
+"""Source: the definition of the degree Celsius, SI brochure, 9th edition, section 2.3.1."""
 DEG_PER_RAD = 180.0 / math.pi
 _LENGTHS = {"nm": 1e-9, **_micro("m", 1e-6)}
 _ANGLES = {"deg": 1.0, "°": 1.0, "rad": DEG_PER_RAD, "mrad": DEG_PER_RAD / 1e3}
@@ -58,6 +63,11 @@ _POWERS = {"W": 1.0, "mW": 1e-3, **_micro("W", 1e-6), "nW": 1e-9, "pW": 1e-12}
 _TIMES = {"s": 1.0, "ms": 1e-3, **_micro("s", 1e-6), "min": 60.0, "h": 3600.0, "d": 86400.0}
 _DRIFTS = {"1/h": 1.0, "%/h": 1e-2, "ppm/h": 1e-6, "1/d": 1 / 24, "%/d": 1e-2 / 24}
 _SPEEDS = {"deg/s": 1.0, "°/s": 1.0, "rad/s": DEG_PER_RAD, "rpm": 6.0}
+_CURRENTS = {"A": 1.0, "mA": 1e-3, **_micro("A", 1e-6)}
+_RAMPS = {"A/s": 1.0, "mA/s": 1e-3, **_micro("A/s", 1e-6)}
+_SLOPES = {"K/s": 1.0, "K/min": 1 / 60, "mK/s": 1e-3, "mK/min": 1e-3 / 60}
+_RESISTANCES = {"ohm": 1.0, "Ohm": 1.0, "Ω": 1.0, "kohm": 1e3, "kOhm": 1e3, "kΩ": 1e3}
+_COEFFICIENTS = {"1/K": 1.0, "%/K": 1e-2, "ppm/K": 1e-6}
 _ACCELERATIONS = {"deg/s2": 1.0, "deg/s^2": 1.0, "deg/s²": 1.0, "°/s2": 1.0, "rad/s2": DEG_PER_RAD}
 
 KINDS: Mapping[str, Kind] = {
@@ -72,6 +82,22 @@ KINDS: Mapping[str, Kind] = {
         Kind("drift", _DRIFTS, ("%/h",), "0.5 %/h"),
         Kind("angular speed", _SPEEDS, ("deg/s",), "20 deg/s", sign="positive"),
         Kind("angular acceleration", _ACCELERATIONS, ("deg/s2",), "100 deg/s2", sign="positive"),
+        Kind(
+            "temperature",
+            {"degC": 1.0, "°C": 1.0, "K": 1.0},
+            ("degC",),
+            "25 degC",
+            offsets={"K": ABSOLUTE_ZERO_C},
+            least=ABSOLUTE_ZERO_C,
+        ),
+        Kind("temperature difference", {"K": 1.0, "mK": 1e-3}, ("mK", "K"), "0.05 K"),
+        Kind("temperature slope", _SLOPES, ("mK/min", "K/min"), "0.01 K/min", sign="positive"),
+        Kind("current", _CURRENTS, ("uA", "mA", "A"), "34 mA"),
+        Kind("current slope", _RAMPS, ("uA/s", "mA/s", "A/s"), "5 mA/s", sign="positive"),
+        Kind("voltage", {"V": 1.0, "mV": 1e-3}, ("mV", "V"), "2.5 V"),
+        Kind("resistance", _RESISTANCES, ("ohm", "kohm"), "10 kohm", sign="positive"),
+        Kind("coefficient", _COEFFICIENTS, ("ppm/K",), "-100 ppm/K"),
+        Kind("frequency", {"Hz": 1.0, "kHz": 1e3}, ("Hz", "kHz"), "50 Hz", sign="positive"),
         Kind("count", {"readings": 1.0, "reading": 1.0}, (), "4 readings", needs_unit=False),
         Kind("number", {}, (), "2", needs_unit=False),
     )

@@ -85,8 +85,21 @@ def parse_measured(text: str, kind: str, *, wavelength_m: float | None = None) -
     return Measured(value, u)
 
 
+def parse_uncertainty(text: str, kind: str, *, nominal: str, wavelength_m: float | None = None) -> float:
+    """Read a standard uncertainty that stands by itself; a percentage is relative to `nominal`, as it was written."""
+    _refuse_long(text)
+    _refuse_long(nominal)
+    value = _TOLERANCE.split(nominal.strip())[0]
+    u = parse_measured(f"{value} +- {text.strip()}", kind, wavelength_m=wavelength_m).u
+    assert u is not None
+    return u
+
+
 def parse_span(text: str, kind: str, *, wavelength_m: float | None = None) -> tuple[float, float]:
-    """Read `a unit to b unit` or `a to b unit` and return both ends, the lower first."""
+    """Read `a unit to b unit` or `a to b unit` and return both ends, the lower first.
+
+    Ratios may stand in either order, as 1000:1 is more than 100:1 to most and less to some.
+    """
     _refuse_long(text)
     row = KINDS[kind]
     parts = _SPAN.split(text.strip())
@@ -95,6 +108,8 @@ def parse_span(text: str, kind: str, *, wavelength_m: float | None = None) -> tu
     if row.needs_unit and re.fullmatch(_NUMBER, parts[0]):
         parts[0] = f"{parts[0]} {_read(parts[1], row).unit}"
     low, high = (parse_quantity(part, kind, wavelength_m=wavelength_m) for part in parts)
+    if kind == "ratio":
+        low, high = sorted((low, high))
     if not low < high:
         raise _wrong(f"the span '{text}' does not go up", row, "the lower end first")
     return low, high
@@ -150,7 +165,7 @@ def _proportion(text: str, over: float, under: float) -> _Written:
 
 def _value(written: _Written, row: Kind, wavelength_m: float | None) -> float:
     """Turn a written number into the base unit and check it against what its kind allows."""
-    value = _times(written.number, _size(written, row, wavelength_m))
+    value = _times(written.number, _size(written, row, wavelength_m), above=row.offsets.get(written.unit, 0.0))
     if row.name == "ratio":
         return _ratio(written, value)
     if not math.isfinite(value):
@@ -158,14 +173,16 @@ def _value(written: _Written, row: Kind, wavelength_m: float | None) -> float:
     if (row.sign == "positive" and not value > 0) or (row.sign == "not negative" and value < 0):
         what = "is not above zero" if row.sign == "positive" else "is negative"
         raise _wrong(f"{row.noun} of {written.number:g} {written.unit} {what}", row)
+    if value < row.least:
+        raise _wrong(f"{row.noun} of {written.number:g} {written.unit} is below all there is", row)
     if row.name == "count" and not (value >= 1 and value.is_integer()):
         raise _wrong(f"{written.number:g} is not a whole number above zero", row)
     return value
 
 
-def _times(number: float, size: float) -> float:
-    """Multiply in decimal, so that 20 uW is the float 2e-5 and nothing beside it."""
-    return float(Decimal(repr(number)) * Decimal(repr(size)))
+def _times(number: float, size: float, *, above: float = 0.0) -> float:
+    """Multiply in decimal, so that 20 uW is the float 2e-5 and nothing beside it; `above` is added."""
+    return float(Decimal(repr(number)) * Decimal(repr(size)) + Decimal(repr(above)))
 
 
 def _size(written: _Written, row: Kind, wavelength_m: float | None) -> float:
@@ -209,8 +226,9 @@ def _tolerance(text: str, row: Kind, wavelength_m: float | None, *, value: float
     """Return the uncertainty written behind `+-` in the base unit; `unit` is that of the value before it."""
     match = _QUANTITY.fullmatch(text.strip())
     if match is not None and match["unit"] == "%":
-        if unit == "%":
-            raise _wrong(f"'+- {text}' behind a value in % may mean two things", row, "an uncertainty without %")
+        if unit == "%" or row.offsets:
+            why = "behind a value in % may mean two things" if unit == "%" else f"of {row.noun} has no meaning"
+            raise _wrong(f"'+- {text}' {why}", row, "an uncertainty without %")
         return abs(value) * float(match["number"]) / 100.0
     written = _read(text, row)
     if written.unit == ":1":

@@ -327,6 +327,7 @@ def test_fewer_digits_can_be_asked_for() -> None:
 def test_what_is_shown_is_read_back(kind: str, size: float, is_negative: bool) -> None:
     may_be_negative = KINDS[kind].sign == "any" and kind not in ("ratio", "count")
     value = -size if is_negative and may_be_negative else size
+    assume(value >= KINDS[kind].least)
     assume(kind != "ratio" or value <= 1.0)
     assume(kind != "count" or value >= 1.0)
     value = float(round(value)) if kind == "count" else value

@@ -11,7 +11,7 @@ from typing import Annotated, Any
 from pydantic import PlainValidator, ValidationInfo, WithJsonSchema
 from pydantic_core import PydanticCustomError
 
-from rigctl.errors import PlanError, QuantityError
+from rigctl.errors import QuantityError
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.kinds import KINDS
 from rigctl.links.addresses import parse_address
@@ -39,7 +39,9 @@ def _text(value: object, expected: str) -> str:
     raise wrong(f"a {'list' if isinstance(value, list) else 'mapping'} stands here", expected=expected)
 
 
-def _leaf(read: Callable[[str, ValidationInfo], object], expected: str) -> PlainValidator:
+def from_text(read: Callable[[str, ValidationInfo], object], expected: str) -> PlainValidator:
+    """What `read` makes of a text; what stands in a text's place is told with what was expected."""
+
     def validate(value: object, info: ValidationInfo) -> object:
         text = _text(value, expected)
         try:
@@ -69,7 +71,7 @@ def quantity(kind: str, *, is_positive: bool = False) -> PlainValidator:
         _check_sign(value, text, must_be_positive=is_positive, kind=kind)
         return value
 
-    return _leaf(read, KINDS[kind].phrase)
+    return from_text(read, KINDS[kind].phrase)
 
 
 def measured(kind: str, *, is_positive: bool = False) -> PlainValidator:
@@ -80,17 +82,17 @@ def measured(kind: str, *, is_positive: bool = False) -> PlainValidator:
         _check_sign(value.value, text, must_be_positive=is_positive, kind=kind)
         return value
 
-    return _leaf(read, KINDS[kind].phrase)
+    return from_text(read, KINDS[kind].phrase)
 
 
 def span(kind: str) -> PlainValidator:
     """Two ends of a kind, the lower first."""
-    return _leaf(lambda text, _: parse_span(text, kind), f"a span such as 0 to {KINDS[kind].example}")
+    return from_text(lambda text, _: parse_span(text, kind), f"a span such as 0 to {KINDS[kind].example}")
 
 
 def choice(*words: str) -> PlainValidator:
     """One of a few words."""
-    return _leaf(lambda text, _: read_choice(text, words), either(words))
+    return from_text(lambda text, _: read_choice(text, words), either(words))
 
 
 def shown(example: str) -> WithJsonSchema:
@@ -155,10 +157,7 @@ def read_text(text: str) -> str:
 
 def read_address(text: str) -> str:
     """Return an address; each has one spelling, so that two mentions of one are seen to be the same."""
-    try:
-        plain = str(parse_address(text))
-    except PlanError as error:
-        raise QuantityError(error.what, expected="tcp://host:port, the port from 1 to 65535") from error
+    plain = str(parse_address(text))
     if plain != text:
         raise QuantityError(
             f"{quoted(text)} is an unusual spelling",
@@ -175,10 +174,10 @@ def exactly_one(names: Sequence[str], given: Sequence[str], *, key: str = "") ->
         raise wrong(what, expected=f"exactly one of {either(map(quoted, names))}", key=key)
 
 
-NameText = Annotated[str, _leaf(lambda text, _: read_name(text), "a name"), shown("entry polarizer")]
-TitleText = Annotated[str, _leaf(_read_title, "a title"), shown("quarter-wave plate")]
-SwitchText = Annotated[bool, _leaf(_read_switch, "true or false"), shown("true")]
-DateText = Annotated[date, _leaf(_read_date, "a date"), shown("2027-03-01")]
-WholeText = Annotated[int, _leaf(lambda text, _: read_whole_number(text), "a whole number"), shown("7")]
-WordText = Annotated[str, _leaf(lambda text, _: read_text(text), "a word"), shown("part")]
-AddressText = Annotated[str, _leaf(lambda text, _: read_address(text), "an address"), shown("tcp://10.0.0.7:5025")]
+NameText = Annotated[str, from_text(lambda text, _: read_name(text), "a name"), shown("entry polarizer")]
+TitleText = Annotated[str, from_text(_read_title, "a title"), shown("quarter-wave plate")]
+SwitchText = Annotated[bool, from_text(_read_switch, "true or false"), shown("true")]
+DateText = Annotated[date, from_text(_read_date, "a date"), shown("2027-03-01")]
+WholeText = Annotated[int, from_text(lambda text, _: read_whole_number(text), "a whole number"), shown("7")]
+WordText = Annotated[str, from_text(lambda text, _: read_text(text), "a word"), shown("part")]
+AddressText = Annotated[str, from_text(lambda text, _: read_address(text), "an address"), shown("tcp://10.0.0.7:5025")]

@@ -67,8 +67,8 @@ def _stage(role: str, rig: Rig, drivers: Mapping[str, Driver]) -> StageCapabilit
 def _beyond(axis: Axis, stage: StageCapabilities) -> str:
     """Say which end of an axis a mount cannot reach; empty where it reaches all."""
     past = OVERSHOOT * stage.backlash_deg
-    low = min(axis.angles_deg) - (past if axis.approach == "from below" else 0.0)
-    high = max(axis.angles_deg) + (past if axis.approach == "from above" else 0.0)
+    low = min(axis.values) - (past if axis.approach == "from below" else 0.0)
+    high = max(axis.values) + (past if axis.approach == "from above" else 0.0)
     if low >= stage.travel_deg[0] and high <= stage.travel_deg[1]:
         return ""
     is_low = low < stage.travel_deg[0]

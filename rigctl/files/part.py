@@ -3,7 +3,7 @@
 It owns the lenient look: what is not there, or is of another shape, is an empty part.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from rigctl.files.document import Document
 from rigctl.files.mistakes import Mistakes, nearest_word
@@ -44,6 +44,10 @@ class Part:
         """Return what stands under one key."""
         value = self.value.get(key) if isinstance(self.value, dict) else None
         return Part(value, (*self.keys, key), self.places, self.mistakes)
+
+    def otherwise(self, text: str) -> "Part":
+        """Return this part, or a text in its place where nothing stands."""
+        return self if self.is_there else replace(self, value=text)
 
     def items(self) -> dict[str, "Part"]:
         """Return the parts of a mapping by key; none where no mapping stands."""

@@ -9,10 +9,10 @@ from pathlib import Path
 from rigctl.files.document import Document, parse_document, read_document
 from rigctl.files.mistakes import Mistakes
 from rigctl.files.part import Part
-from rigctl.files.rig import Calibration, InstrumentEntry, Rig, SimulatedSection
+from rigctl.files.rig import Calibration, Diode, InstrumentEntry, Rig, Room, SimulatedSection
 from rigctl.files.rig_references import Extras, read_extras
 from rigctl.files.shape import shaped
-from rigctl.files.written_rig import WrittenCalibration, WrittenInstrument, WrittenRig
+from rigctl.files.written_rig import WrittenCalibration, WrittenDiode, WrittenInstrument, WrittenRig
 from rigctl.interfaces import BenchFactory, Driver
 
 
@@ -41,7 +41,10 @@ def _rig(document: Document, mistakes: Mistakes, drivers: Mapping[str, Driver], 
     return Rig(
         title=written.rig,
         instruments={name: _entry(name, part, extras) for name, part in written.instruments.items()},
+        diodes={name: _diode(name, part) for name, part in written.diodes.items()},
         roles=dict(written.roles),
+        on_stop=dict(written.on_stop),
+        room=None if written.room is None else Room(written.room.humidity, written.room.temperature),
         simulated=SimulatedSection(written.simulated.seed, extras.bench, extras.twins),
         text=document.text,
         path=document.path,
@@ -51,9 +54,22 @@ def _rig(document: Document, mistakes: Mistakes, drivers: Mapping[str, Driver], 
 
 
 def _entry(name: str, written: WrittenInstrument, extras: Extras) -> InstrumentEntry:
-    limits = {} if written.limits is None else {"power": written.limits.power}
+    limits = {} if written.limits is None else written.limits.model_dump(exclude_none=True)
     calibration = None if written.calibration is None else _calibration(written.calibration)
     return InstrumentEntry(name, written.driver, written.at, extras.options[name], limits, calibration)
+
+
+def _diode(name: str, written: WrittenDiode) -> Diode:
+    limits = written.limits
+    return Diode(
+        name,
+        written.on,
+        limits.current,
+        limits.power,
+        limits.compliance,
+        limits.temperature,
+        label_class=written.class_on_label,
+    )
 
 
 def _calibration(written: WrittenCalibration) -> Calibration:

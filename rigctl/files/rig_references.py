@@ -11,8 +11,15 @@ from typing import Any
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.options import read_options
 from rigctl.files.part import Part
-from rigctl.interfaces import BenchFactory, Driver
+from rigctl.interfaces import BenchFactory, Driver, RoleKind
 
+LIMITS: Mapping[RoleKind, tuple[str, ...]] = {
+    "power meter": ("power",),
+    "current source": ("current", "compliance"),
+    "temperature controller": ("temperature",),
+}
+"""What an instrument of a kind may be kept from exceeding."""
+ALL_LIMITS = [key for keys in LIMITS.values() for key in keys]
 SHARED_KEYS = ("driver", "at", "limits", "calibration")
 """Keys of an instrument whatever its driver."""
 
@@ -35,6 +42,8 @@ def read_extras(rig: Part, drivers: Mapping[str, Driver], bench: BenchFactory | 
     _check_addresses(instruments, known, options)
     if instruments.items():
         _check_roles(rig.at("roles"), instruments)
+        _check_diodes(rig.at("diodes"), instruments, known)
+    _check_on_stop(rig, known)
     if bench is None:
         return Extras(options, {}, {})
     return Extras(options, *_simulated(rig, known, bench))
@@ -53,10 +62,20 @@ def _driver(instrument: Part, drivers: Mapping[str, Driver]) -> Driver | None:
 
 def _options(instrument: Part, driver: Driver) -> dict[str, Any]:
     """Read an instrument's keys by its driver's table."""
-    limits = instrument.at("limits")
-    if limits.is_there and driver.kind != "power meter":
-        limits.wrong_key(f"a {driver.kind} has no limits here", expected="limits at a power meter alone")
+    _check_limits(instrument.at("limits"), driver.kind)
     return read_options(instrument, driver.options, others=SHARED_KEYS, whose=f"the driver {driver.name}")
+
+
+def _check_limits(limits: Part, kind: RoleKind) -> None:
+    """Refuse limits that a kind of instrument does not have."""
+    known = LIMITS.get(kind, ())
+    if limits.is_there and not known:
+        limits.wrong_key(f"a {kind} has no limits here", expected=f"limits at a {either(LIMITS)}")
+    elif limits.is_there and limits.value in ({}, ""):
+        limits.wrong("no limit stands here", expected=either(map(quoted, known)))
+    for key, part in limits.items().items():
+        if known and key not in known and key in ALL_LIMITS:
+            part.wrong_key(f"a {kind} has no limit of {key}", expected=either(map(quoted, known)))
 
 
 def _check_addresses(
@@ -90,6 +109,39 @@ def _check_roles(roles: Part, instruments: Part) -> None:
         elif name in filled:
             part.wrong(f"{quoted(name)} fills the role {quoted(filled[name])} already", expected="one role each")
         filled[name] = role
+
+
+def _check_diodes(diodes: Part, instruments: Part, drivers: Mapping[str, Driver]) -> None:
+    """Refuse a diode on what is no current source, and two diodes on one."""
+    sources = [name for name, driver in drivers.items() if driver.kind == "current source"]
+    driven: dict[str, str] = {}
+    for diode, entry in diodes.items().items():
+        part = entry.at("on")
+        name = part.text
+        if name is None:
+            continue
+        expected = f"a current source, here {either(map(quoted, sources))}" if sources else "a current source"
+        if name not in instruments.items():
+            what = f"no instrument is called {quoted(name)}"
+            part.wrong(what, expected=expected, nearest=nearest_word(name, sources))
+        elif name in drivers and name not in sources:
+            part.wrong(f"{quoted(name)} is a {drivers[name].kind}", expected=expected)
+        elif name in driven:
+            what = f"{quoted(name)} drives {quoted(driven[name])} already"
+            part.wrong(what, expected="one diode on each source: that which is on the bench")
+        driven[name] = diode
+
+
+def _check_on_stop(rig: Part, drivers: Mapping[str, Driver]) -> None:
+    """Refuse to say what is done at the end with what is no temperature controller."""
+    roles = rig.at("roles").items()
+    for role, part in rig.at("on stop").items().items():
+        if role not in roles:
+            near = nearest_word(role, roles)
+            part.wrong_key(f"the rig fills no role {quoted(role)}", expected="a role of this rig", nearest=near)
+        elif (driver := drivers.get(roles[role].text or "")) and driver.kind != "temperature controller":
+            what = f"the role {quoted(role)} is filled by a {driver.kind}"
+            part.wrong_key(what, expected="a temperature controller: the others are always switched off")
 
 
 def _simulated(

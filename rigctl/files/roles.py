@@ -10,10 +10,10 @@ from typing import get_args
 from rigctl.files.leaves import LABEL, is_label
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.part import Part
-from rigctl.files.recipe import BY_HAND
+from rigctl.files.recipe import BY_HAND, EACH_STEP
 from rigctl.interfaces import RoleKind
 
-RESERVED_ROLES = (BY_HAND, "source")
+RESERVED_ROLES = (BY_HAND, EACH_STEP, "repeat", "source")
 """Words that mean something else where a role may stand."""
 
 
@@ -29,8 +29,8 @@ class Roles:
         role = self.part.at(name)
         return role.text if role.text is not None else role.at("is").text
 
-    def use(self, part: Part, kind: str, *, name: str | None = None, may_be_optional: bool = False) -> str | None:
-        """Check that a part names a role of a kind, and return the role where it is declared.
+    def use(self, part: Part, *kinds: str, name: str | None = None, may_be_optional: bool = False) -> str | None:
+        """Check that a part names a role of one of some kinds, and return the role where it is declared.
 
         The name is the part's text, or `name` where the role is the part's key.
         """
@@ -39,12 +39,12 @@ class Roles:
         if wanted is None or not isinstance(self.part.value, dict):
             return None
         if wanted not in self.part.value:
-            self._complain_of_unknown(wanted, kind, complain)
+            self._complain_of_unknown(wanted, kinds, complain)
             return None
         self.used.add(wanted)
         found = self.kind(wanted)
-        if found in get_args(RoleKind) and found != kind:
-            complain(f"the role {quoted(wanted)} is a {found}", expected=f"a role that is a {kind}")
+        if found in get_args(RoleKind) and found not in kinds:
+            complain(f"the role {quoted(wanted)} is a {found}", expected=f"a role that is a {either(kinds)}")
         elif not may_be_optional:
             self._refuse_optional(wanted)
         return wanted
@@ -68,13 +68,15 @@ class Roles:
                 what = f"the role {quoted(name)} is a {self.kind(name)} that nothing in the recipe uses"
                 part.wrong_key(what, expected="a detector or an element that names it")
 
-    def _complain_of_unknown(self, wanted: str, kind: str, complain: Callable[..., None]) -> None:
-        """Tell that a role is not declared, and which of the wanted kind are."""
+    def _complain_of_unknown(self, wanted: str, kinds: Collection[str], complain: Callable[..., None]) -> None:
+        """Tell that a role is not declared, and which of the wanted kinds are."""
         names = self.part.items()
-        fitting = [name for name in names if self.kind(name) == kind]
+        fitting = [name for name in names if self.kind(name) in kinds]
         here = f", here {either(map(quoted, fitting))}" if fitting else ", under 'roles'"
         near = nearest_word(wanted, fitting) or nearest_word(wanted, names)
-        complain(f"no role is called {quoted(wanted)}", expected=f"a role that is a {kind}{here}", nearest=near)
+        complain(
+            f"no role is called {quoted(wanted)}", expected=f"a role that is a {either(kinds)}{here}", nearest=near
+        )
 
     def _refuse_optional(self, name: str) -> None:
         """Refuse that a role may be left out without which the recipe measures nothing."""

@@ -21,7 +21,7 @@ def needed_s(recipe: Recipe, stage: StageCapabilities) -> float:
     """Motion, settling and dwell of every visit but the first, which starts from an unknown angle."""
     (axis,) = recipe.steps[0].sweep
     total = 0.0
-    for last, target in zip(axis.angles_deg, axis.angles_deg[1:], strict=False):
+    for last, target in zip(axis.values, axis.values[1:], strict=False):
         here = last
         for point in waypoints(last, target, axis.approach, backlash_deg=stage.backlash_deg):
             total += stage.travel_time_s(point - here)

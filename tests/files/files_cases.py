@@ -1,7 +1,7 @@
 """A good recipe, a good rig file, and drivers and a bench that stand in for real ones."""
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any, NoReturn
 
 import pytest
@@ -21,7 +21,7 @@ from rigctl.interfaces import (
     StageCapabilities,
 )
 from rigctl.links.channel import Channel
-from rigctl.links.family import Resynced
+from rigctl.links.family import Opening, Resynced
 
 RECIPE = """\
 recipe: sheet polarizer on a turning mount
@@ -57,6 +57,7 @@ class StubFamily:
     name: str
     reply_timeout_s: float = 1.0
     longest_s: float = 1.0
+    opening: Opening = field(default_factory=Opening)
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         return Resynced()

@@ -90,7 +90,7 @@ def test_a_damaged_recipe_is_read_or_its_mistakes_are_told(text: str) -> None:
     recipe = read_recipe(text)
 
     if recipe is not None:
-        assert all(axis.angles_deg for step in recipe.steps for axis in step.sweep)
+        assert all(axis.values for step in recipe.steps for axis in step.sweep)
         assert recipe.optics[-1].kind == "detector"
 
 

@@ -112,11 +112,11 @@ def test_a_sweep_alone_is_one_step_called_data() -> None:
     step = recipe().steps[0]
 
     assert (len(recipe().steps), step.name) == (1, "data")
-    assert step.sweep == (Axis("part mount", tuple(5.0 * i for i in range(72)), "from below", 0.15),)
+    assert step.sweep == (Axis("part mount", "angle", tuple(5.0 * i for i in range(72)), "from below", 0.15),)
 
 
 def test_steps_keep_their_names_and_order() -> None:
-    assert [(step.name, step.sweep[0].angles_deg) for step in plate().steps] == [
+    assert [(step.name, step.sweep[0].values) for step in plate().steps] == [
         ("coarse", (0.0, 45.0, 0.0)),
         ("fine", (40.0, 42.5, 45.0, 47.5, 50.0)),
     ]
@@ -148,10 +148,10 @@ def test_the_dwell_has_a_time_and_a_number_of_readings() -> None:
 def test_darks_are_taken_by_a_shutter_or_by_hand_or_not_at_all() -> None:
     by_hand = recipe({"{by: shutter, before: true, after: true}": "{by: hand, after: no}"})
 
-    assert [r.dark for r in (recipe(), by_hand, plate())] == [
-        Dark("shutter", before=True, after=True),
-        Dark("hand", before=True, after=False),
-        None,
+    assert [r.darks for r in (recipe(), by_hand, plate())] == [
+        (Dark("dark", "shutter"),),
+        (Dark("dark", "hand", before=True, after=False),),
+        (),
     ]
 
 
@@ -212,14 +212,19 @@ def test_the_json_schema_names_every_key_and_no_other() -> None:
     schema = WrittenRecipe.model_json_schema()
 
     assert sorted(schema["properties"]) == [
+        "background",
         "dark",
         "dwell",
         "optics",
+        "prepare",
         "recipe",
         "roles",
         "source",
         "steps",
         "sweep",
+        "target uncertainty",
+        "tolerance",
+        "zero",
     ]
     assert schema["additionalProperties"] is False
     assert "extinction ratio" in json.dumps(schema)

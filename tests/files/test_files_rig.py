@@ -170,7 +170,7 @@ def mistake(changes: Changes) -> tuple[str, str, str, str]:
             "10.0.0.7",
             "4:31",
             "'10.0.0.7' is no address",
-            "tcp://host:port, the port from 1 to 65535",
+            "tcp://host:port, serial:///path?baud=rate or visa://resource",
             "",
         ),
         (
@@ -183,10 +183,10 @@ def mistake(changes: Changes) -> tuple[str, str, str, str]:
         ),
         (
             "tcp://10.0.0.7:5025",
-            "serial:///dev/ttyUSB0",
+            "usb:///dev/ttyUSB0",
             "4:31",
-            "'serial:///dev/ttyUSB0': this version reaches no instruments by 'serial'",
-            "tcp://host:port, the port from 1 to 65535",
+            "'usb:///dev/ttyUSB0': this version reaches no instruments by 'usb'",
+            "tcp://host:port, serial:///path?baud=rate or visa://resource",
             "",
         ),
         (
@@ -210,7 +210,7 @@ def mistake(changes: Changes) -> tuple[str, str, str, str]:
             "limits: 5 mW",
             "4:83",
             "'5 mW' stands here",
-            "a mapping with keys such as 'power'",
+            "a mapping with keys such as 'power', 'current', 'compliance' or 'temperature'",
             "",
         ),
         (
@@ -218,7 +218,7 @@ def mistake(changes: Changes) -> tuple[str, str, str, str]:
             "limits: {power: 5 mW}",
             "3:54",
             "a rotation stage has no limits here",
-            "limits at a power meter alone",
+            "limits at a power meter, current source or temperature controller",
             "",
         ),
         (

@@ -5,15 +5,15 @@ from hypothesis import given
 from hypothesis import strategies as st
 from pydantic_core import PydanticCustomError
 
-from rigctl.files.angles import MOST_ANGLES, angles_of, nearest_steps
+from rigctl.files.ladders import MOST_VALUES, nearest_steps, values_of
 
 
 def turn(turns: float, step: float, start: float | None = None) -> tuple[float, ...]:
-    return angles_of(turn=turns, values=None, span=None, step=step, start=start)
+    return values_of("angle", turn=turns, step=step, start=start)
 
 
 def reach(low: float, high: float, step: float) -> tuple[float, ...]:
-    return angles_of(turn=None, values=None, span=(low, high), step=step, start=None)
+    return values_of("angle", span=(low, high), step=step)
 
 
 def test_a_turn_leaves_its_end_out() -> None:
@@ -41,10 +41,10 @@ def test_angles_are_the_numbers_that_people_would_write() -> None:
 def test_values_keep_their_order_and_may_repeat() -> None:
     values = [3.0, 1.0, 3.0]
 
-    assert angles_of(turn=None, values=values, span=None, step=None, start=None) == (3.0, 1.0, 3.0)
+    assert values_of("angle", values=values) == (3.0, 1.0, 3.0)
 
 
-@given(visits=st.integers(min_value=1, max_value=MOST_ANGLES), turns=st.integers(min_value=1, max_value=5))
+@given(visits=st.integers(min_value=1, max_value=MOST_VALUES), turns=st.integers(min_value=1, max_value=5))
 def test_any_whole_number_of_visits_makes_a_turn(visits: int, turns: int) -> None:
     angles = turn(turns, 360.0 * turns / visits)
 
@@ -66,7 +66,7 @@ def test_any_whole_number_of_visits_makes_a_turn(visits: int, turns: int) -> Non
 def test_the_nearest_steps_that_divide_are_short_numbers_where_there_are_such(
     length: float, step: float, near: tuple[float, ...]
 ) -> None:
-    assert nearest_steps(length, step) == pytest.approx(near)
+    assert nearest_steps(length, step, "angle") == pytest.approx(near)
 
 
 @given(step=st.floats(min_value=0.01, max_value=400.0))
@@ -74,5 +74,5 @@ def test_a_step_that_is_refused_comes_with_one_that_is_not(step: float) -> None:
     try:
         turn(1, step)
     except PydanticCustomError:
-        for near in nearest_steps(360.0, step):
+        for near in nearest_steps(360.0, step, "angle"):
             assert len(turn(1, near)) * near == pytest.approx(360.0)

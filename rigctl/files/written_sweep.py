@@ -1,0 +1,204 @@
+"""Sweeps and preparations as they are written: what is set, to which values, and how it gets there.
+
+It owns the shape of each. How a value reads depends on the kind of its role, so the roles' kinds stand in the
+context of the validation.
+"""
+
+from typing import Annotated, Any, cast, get_args
+
+from pydantic import Field, ValidationInfo, ValidatorFunctionWrapHandler, WrapValidator, model_validator
+
+from rigctl.errors import QuantityError
+from rigctl.files.ladders import QUANTITY, STEP_QUANTITY, joined, there_and_back, values_of
+from rigctl.files.leaves import SwitchText, choice, exactly_one, from_text, quantity, shown, wrong
+from rigctl.files.mistakes import quoted
+from rigctl.files.recipe import Approach, AxisKind
+from rigctl.files.written import Written
+from rigctl.quantities import parse_quantity, parse_span
+
+KINDS = "axis_kinds"
+"""Key of the validation context: the kind of axis of each role, as far as it can be read."""
+KIND = "axis_kind"
+"""Key of the validation context: the kind of axis that is being read."""
+REPEAT = "repeat"
+"""An axis that sets nothing and takes its visits anew."""
+ANY: tuple[AxisKind, ...] = ("angle", "temperature", "current")
+"""Kinds that are tried where the role is not known: the unit tells."""
+KEYS: dict[str, tuple[AxisKind, str]] = {
+    "turn": ("angle", "a mount"),
+    "start": ("angle", "a mount"),
+    "approach": ("angle", "a mount"),
+    "steady": ("temperature", "a temperature controller"),
+    "ramp": ("current", "a current source"),
+}
+"""Keys that only one kind of role has."""
+
+
+def _kind(info: ValidationInfo) -> AxisKind | None:
+    context: dict[str, Any] = info.context or {}
+    return cast("AxisKind | None", context.get(KIND))
+
+
+def _read_stop(text: str, info: ValidationInfo) -> float:
+    """Read a value by the kind of its role, or by its unit where the role is not known."""
+    kind = _kind(info)
+    value = _by_unit(text) if kind is None else parse_quantity(text, QUANTITY[kind])
+    if kind == "current" and value < 0:
+        raise wrong(f"a current of {text} would go through the diode backwards", expected="a current from zero on")
+    return value
+
+
+def _by_unit(text: str) -> float:
+    found = QuantityError("", expected="")
+    for kind in reversed(ANY):
+        try:
+            return parse_quantity(text, QUANTITY[kind])
+        except QuantityError as error:
+            found = error
+    raise found
+
+
+def _read_step(text: str, info: ValidationInfo) -> float:
+    kind = _kind(info)
+    return _by_unit(text) if kind is None else parse_quantity(text, STEP_QUANTITY[kind])
+
+
+def _read_reach(text: str, info: ValidationInfo) -> tuple[float, float]:
+    kind = _kind(info) or "angle"
+    low, high = parse_span(text, QUANTITY[kind])
+    if kind == "current" and low < 0:
+        raise wrong(f"a current from {text} would go through the diode backwards", expected="a current from zero on")
+    return low, high
+
+
+Stop = Annotated[float, from_text(_read_stop, "a value such as 5 deg"), shown("5 deg")]
+Gap = Annotated[float, from_text(_read_step, "a step such as 5 deg"), shown("5 deg")]
+Reach = Annotated[tuple[float, float], from_text(_read_reach, "a span such as 0 to 90 deg"), shown("0 deg to 90 deg")]
+Angle = Annotated[float, quantity("angle"), shown("0 deg")]
+Number = Annotated[float, quantity("number", is_positive=True), shown("1")]
+Duration = Annotated[float, quantity("time"), shown("150 ms")]
+Time = Annotated[float, quantity("time", is_positive=True), shown("15 min")]
+Within = Annotated[float, quantity("temperature difference", is_positive=True), shown("0.05 K")]
+Slope = Annotated[float, quantity("temperature slope"), shown("0.01 K/min")]
+Ramp = Annotated[float, quantity("current slope"), shown("5 mA/s")]
+ApproachText = Annotated[Approach, choice(*get_args(Approach)), shown("from below")]
+Stops = Annotated[list[Stop], Field(min_length=1)]
+
+
+class WrittenSteady(Written):
+    """When a temperature counts as reached."""
+
+    within: Within
+    slope: Slope | None = None
+    for_: Annotated[Time, Field(alias="for")]
+    give_up_after: Time
+
+    @model_validator(mode="after")
+    def _can_be_reached(self) -> "WrittenSteady":
+        if self.give_up_after < self.for_:
+            what = "gives up before the temperature can have been steady for so long"
+            raise wrong(what, expected="a time longer than 'for'", key="give up after")
+        return self
+
+
+class WrittenSegment(Written):
+    """One piece of an axis."""
+
+    values: Stops | None = None
+    range: Reach | None = None
+    step: Gap | None = None
+    there_and_back: SwitchText = False
+
+    @model_validator(mode="after")
+    def _has_values(self, info: ValidationInfo) -> "WrittenSegment":
+        self.stops(_kind(info) or "angle")
+        return self
+
+    def stops(self, kind: AxisKind) -> tuple[float, ...]:
+        """Return the values in the order of the visits."""
+        stops = values_of(kind, values=self.values, span=self.range, step=self.step)
+        return there_and_back(stops) if self.there_and_back else stops
+
+
+class WrittenAxis(Written):
+    """The values of one role in a sweep, and how it gets to each."""
+
+    turn: Number | None = None
+    values: Stops | None = None
+    range: Reach | None = None
+    step: Gap | None = None
+    start: Angle | None = None
+    segments: Annotated[list[WrittenSegment], Field(min_length=1)] | None = None
+    there_and_back: SwitchText = False
+    approach: ApproachText = "either"
+    settle: Duration = 0.0
+    steady: WrittenSteady | None = None
+    ramp: Ramp | None = None
+
+    @model_validator(mode="after")
+    def _has_values(self, info: ValidationInfo) -> "WrittenAxis":
+        _check_keys(self, _kind(info))
+        self.stops(_kind(info) or "angle")
+        return self
+
+    def stops(self, kind: AxisKind) -> tuple[float, ...]:
+        """Return the values in the order of the visits."""
+        if self.segments is None:
+            stops = values_of(
+                kind, turn=self.turn, values=self.values, span=self.range, step=self.step, start=self.start
+            )
+        else:
+            given = sorted({"turn", "values", "range"} & self.model_fields_set)
+            exactly_one(("turn", "values", "range", "segments"), [*given, "segments"])
+            stops = joined(segment.stops(kind) for segment in self.segments)
+        return there_and_back(stops) if self.there_and_back else stops
+
+
+class WrittenPreparation(Written):
+    """What a role is set to before the steps."""
+
+    to: Stop
+    steady: WrittenSteady | None = None
+    ramp: Ramp | None = None
+    warm_up: Annotated[Duration, Field(alias="warm-up")] = 0.0
+
+    @model_validator(mode="after")
+    def _has_its_keys(self, info: ValidationInfo) -> "WrittenPreparation":
+        _check_keys(self, _kind(info))
+        return self
+
+
+def _check_keys(written: Written, kind: AxisKind | None) -> None:
+    """Refuse keys that the kind of role does not have."""
+    for key in KEYS:
+        if kind is not None and key in written.model_fields_set and KEYS[key][0] != kind:
+            raise wrong(f"{quoted(key)} goes with {KEYS[key][1]} alone", key=key)
+
+
+def _typed(value: object, handler: ValidatorFunctionWrapHandler, info: ValidationInfo) -> Any:
+    """Read an entry by the kind of its role."""
+    role = next(iter(value), "") if isinstance(value, dict) else ""
+    context: dict[str, Any] = info.context or {}
+    context[KIND] = "repeat" if role == REPEAT else context.get(KINDS, {}).get(role)
+    if isinstance(value, dict) and role == REPEAT:
+        value = {**value, REPEAT: {"values": _numbers(value[REPEAT])}}
+    return handler(value)
+
+
+def _numbers(value: object) -> list[str]:
+    """Numbers of the repeats, from 1."""
+    try:
+        count = parse_quantity(value, "count") if isinstance(value, str) else 0.0
+    except QuantityError as error:
+        raise wrong(error.what, expected="a whole number such as 3", key=REPEAT) from error
+    if not count:
+        raise wrong("keys or a list stand here", expected="a whole number such as 3", key=REPEAT)
+    return [str(number) for number in range(1, round(count) + 1)]
+
+
+Entry = Annotated[dict[str, WrittenAxis], WrapValidator(_typed)]
+Sweep = Annotated[list[Entry], Field(min_length=1)]
+Preparations = Annotated[
+    list[Annotated[dict[str, WrittenPreparation], WrapValidator(_typed)]],
+    Field(min_length=1),
+]
