@@ -55,7 +55,8 @@ class Header:
     """Everything that is known before the first instrument is touched.
 
     `truth` is the hidden truth of a rehearsal by quantity, each in the base unit of its kind; it is empty on
-    hardware. `detectors` are role names, the principal one first. `start` bears its offset from UTC.
+    hardware. `detectors` are role names, the principal one first; `monitor` is the one of them that watches the
+    source's power, where there is one. `start` bears its offset from UTC.
     """
 
     uuid: str
@@ -71,6 +72,7 @@ class Header:
     truth: Mapping[str, float] = field(default_factory=dict)
     operator: str = ""
     part: str = ""
+    monitor: str = ""
 
     def step(self, name: str) -> StepLayout:
         """Return the step of a name; `RecordError` when there is none."""
@@ -97,13 +99,15 @@ class Header:
 def check_header(header: Header) -> None:
     """Raise `RecordError` for a header that no file can hold.
 
-    It must have an offset from UTC, at least one step and one detector, at least one value on every axis, and
-    no name twice.
+    It must have an offset from UTC, at least one step and one detector, at least one value on every axis, no
+    name twice, and its monitor must be one of several detectors.
     """
     if header.start.tzinfo is None:
         raise RecordError("the start time has no offset from UTC")
     if not header.steps or not header.detectors:
         raise RecordError("a run needs at least one step and one detector")
+    if header.monitor and (header.monitor not in header.detectors or len(header.detectors) == 1):
+        raise RecordError(f"the monitor '{header.monitor}' is none of several detectors")
     _refuse_twice("step", [step.name for step in header.steps])
     _refuse_twice("detector", header.detectors)
     for step in header.steps:

@@ -6,7 +6,7 @@ built from what the journal holds.
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from rigctl.errors import RecordError
@@ -21,21 +21,25 @@ KEYS = {
     "event": ("t", "text", "level"),
     "visit": ("step", "visit", "index", "attempt", "start", "t_begin", "t_end", "asked", "status"),
     "dark": ("step", "when", "how", "t_begin", "t_end", "detectors"),
+    "reading": ("t", "role", "values"),
     "end": ("t", "status", "code", "why"),
 }
 """The kinds of record, and what each must say."""
 VISIT_STATUSES = ("ok", "saturated", "failed")
 END_STATUSES = ("complete", "stopped", "failed")
-DARK_WHEN = ("before", "after")
-DARK_HOW = ("by hand", "by shutter")
+DARK_WHAT = ("dark", "background", "zero")
+DARK_WHEN = ("before", "during", "after")
+DARK_HOW = ("by hand", "by shutter", "source off")
 
 
 @dataclass(frozen=True, slots=True)
 class Visit:
-    """One attempt at a visit; instants in s since the start, angles by role in deg.
+    """One attempt at a visit; instants in s since the start, asked and read by role in the units of its axis.
 
-    `number` counts visits in the order they were planned, `index` is the place in the step's grid, `start`
-    says how often the run had been started. A role that was not read is missing or NaN.
+    `number` is the visit's place in the plan, `index` that in the step's grid, `start` says how often the run had
+    been started. A role that was not read is missing or NaN. `conditions` are what sources and controllers said
+    meanwhile, by role and quantity; `present` tells which of the elements that move stood in the beam, and
+    `is_confirmed` whether anybody saw to that.
     """
 
     step: str
@@ -50,11 +54,17 @@ class Visit:
     dwells: Mapping[str, Dwell]
     status: str
     why: str
+    conditions: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
+    present: Mapping[str, bool] = field(default_factory=dict)
+    is_confirmed: bool = True
 
 
 @dataclass(frozen=True, slots=True)
 class Dark:
-    """Readings of every detector with the beam blocked at the source."""
+    """Readings of every detector without the light.
+
+    `what` is `dark` (the beam blocked at the source), `background` (the source off) or `zero` (detectors capped).
+    """
 
     step: str
     when: str
@@ -62,6 +72,7 @@ class Dark:
     began_s: float
     ended_s: float
     dwells: Mapping[str, Dwell]
+    what: str = "dark"
 
 
 def dwell_record(dwell: Dwell) -> dict[str, Any]:
@@ -90,6 +101,9 @@ def parse_visit(record: Mapping[str, Any]) -> Visit:
         dwells=_dwells(record.get("detectors", {})),
         status=record["status"],
         why=record.get("why", ""),
+        conditions={role: _reals(values) for role, values in record.get("conditions", {}).items()},
+        present=record.get("present", {}),
+        is_confirmed=record.get("confirmed", True),
     )
 
 
@@ -102,6 +116,7 @@ def parse_dark(record: Mapping[str, Any]) -> Dark:
         began_s=_real(record["t_begin"]),
         ended_s=_real(record["t_end"]),
         dwells=_dwells(record["detectors"]),
+        what=record.get("what", "dark"),
     )
 
 
@@ -118,6 +133,7 @@ def check_visit(visit: Visit, header: Header) -> None:
 def check_dark(dark: Dark, header: Header) -> None:
     """Raise `RecordError` for a dark that has no place in the layout."""
     header.step(dark.step)
+    require_word(dark.what, DARK_WHAT)
     require_word(dark.when, DARK_WHEN)
     require_word(dark.how, DARK_HOW)
     _require_detectors(dark.dwells, header)

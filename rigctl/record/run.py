@@ -77,7 +77,7 @@ class Run:
     def duration_s(self) -> float:
         """From the start to the last thing recorded, s."""
         times = [visit.ended_s for visit in self.attempts[-1:]] + [dark.ended_s for dark in self.darks[-1:]]
-        times += [float(record["t"]) for kind in ("event", "end") for record in self._by_kind[kind][-1:]]
+        times += [float(record["t"]) for kind in ("event", "reading", "end") for record in self._by_kind[kind][-1:]]
         return max(times, default=0.0)
 
     def visits(self, step: str) -> list[Visit]:

@@ -13,7 +13,7 @@ from rigctl.interfaces import Dwell
 from rigctl.record.detectors import detector_variables
 from rigctl.record.layout import StepLayout
 from rigctl.record.names import AXIS_SUFFIXES, free_names
-from rigctl.record.records import DARK_HOW, DARK_WHEN, Visit
+from rigctl.record.records import DARK_HOW, DARK_WHAT, DARK_WHEN, Visit
 from rigctl.record.run import Run
 from rigctl.record.variables import Array, Frame, Variable
 
@@ -21,7 +21,7 @@ STATUSES = ("not_measured", "ok", "retried", "saturated", "failed")
 """Meaning of the numbers in `status`, from 0."""
 
 _VISIT_VARIABLES = ("time", "status", "visit", "attempt")
-_DARK_VARIABLES = ("dark", "time", "step", "when", "how")
+_DARK_VARIABLES = ("dark", "time", "step", "what", "when", "how")
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,8 +64,9 @@ def dark_table(run: Run) -> Table:
     own = (
         frame.times([_middle(dark.dwells, dark.began_s, dark.ended_s) for dark in darks]),
         frame.words("step", [steps.index(dark.step) for dark in darks], steps, "step it belongs to"),
-        frame.words("when", [DARK_WHEN.index(d.when) for d in darks], DARK_WHEN, "before or after the step"),
-        frame.words("how", [DARK_HOW.index(d.how) for d in darks], DARK_HOW, "what blocked the beam"),
+        frame.words("what", [DARK_WHAT.index(d.what) for d in darks], DARK_WHAT, "which light was kept away"),
+        frame.words("when", [DARK_WHEN.index(d.when) for d in darks], DARK_WHEN, "when, seen from the step"),
+        frame.words("how", [DARK_HOW.index(d.how) for d in darks], DARK_HOW, "what kept the light away"),
     )
     return _table((axis,), detector_variables(frame, [dark.dwells for dark in darks], _DARK_VARIABLES), own)
 

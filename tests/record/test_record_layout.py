@@ -49,6 +49,8 @@ def test_a_good_header_is_accepted() -> None:
         ({"steps": ()}, "at least one step"),
         ({"detectors": ()}, "one detector"),
         ({"detectors": ("a", "b", "a")}, "detector 'a'"),
+        ({"monitor": "lamp"}, "monitor 'lamp'"),
+        ({"monitor": "signal", "detectors": ("signal",)}, "monitor 'signal'"),
         ({"steps": (PLATE, PLATE)}, "step 'plate'"),
         ({"steps": (StepLayout("p", ()),)}, "'p' has no visit"),
         ({"steps": (StepLayout("p", (AxisLayout("a", "m", "deg", ()),)),)}, "'p' has no visit"),

@@ -45,6 +45,26 @@ def test_a_visit_keeps_everything_its_record_says() -> None:
     assert (found.dwells["signal"].began_s, found.dwells["signal"].ended_s) == (27.0, 27.4)
 
 
+def test_a_visit_keeps_conditions_presence_and_whether_anybody_saw_to_it() -> None:
+    conditions = {"diode": {"current_a": 0.034, "voltage_v": None}}
+    record = visit(0, [0]) | {"conditions": conditions, "present": {"part": False}, "confirmed": False}
+
+    (found,) = run_of(record).attempts
+
+    assert found.conditions["diode"]["current_a"] == 0.034
+    assert math.isnan(found.conditions["diode"]["voltage_v"])
+    assert found.present == {"part": False}
+    assert not found.is_confirmed
+
+
+def test_a_record_that_does_not_tell_of_presence_or_kind_of_dark_is_read_as_it_was_meant() -> None:
+    run = run_of(visit(0, [0]), dark("before", 1.0))
+
+    assert run.attempts[0].is_confirmed
+    assert run.attempts[0].present == {}
+    assert run.darks[0].what == "dark"
+
+
 def test_a_lost_reading_comes_back_as_nan_with_its_flag() -> None:
     record = visit(0, [0])
     record["detectors"]["signal"]["levels_w"][1] = None
@@ -110,6 +130,7 @@ def test_its_duration_reaches_to_the_last_thing_recorded() -> None:
     assert run_of(event).duration_s == 12.5
     assert run_of(event, visit(0, [0])).duration_s == 21.25
     assert run_of(event, visit(0, [0]), dark("after", 30.0)).duration_s == 31.0
+    assert run_of(event, {"kind": "reading", "t": 50.0, "role": "oven", "values": {}}).duration_s == 50.0
     assert run_of(event, end("complete")).duration_s == 99.0
 
 
@@ -133,7 +154,9 @@ def test_records_of_a_kind_come_oldest_first() -> None:
             visit(0, [0]) | {"detectors": {"signl": dark("before", 1.0)["detectors"]["signal"]}},
             "says 'signl'",
         ),
-        (dark("during", 1.0), "says 'during'"),
+        (dark("amid", 1.0), "says 'amid'"),
+        (dark("during", 1.0) | {"what": "dusk"}, "says 'dusk'"),
+        ({"kind": "reading", "t": 1.0, "role": "oven"}, "lacks values"),
         (dark("before", 1.0) | {"how": "by foot"}, "says 'by foot'"),
         (dark("before", 1.0) | {"step": "plait"}, "no step 'plait'"),
         (end("finished"), "says 'finished'"),

@@ -31,6 +31,13 @@ def units(table: Table, name: str) -> object:
     return next(v.attributes.get("units") for v in (*table.axes, *table.variables) if v.name == name)
 
 
+def words(table: Table, name: str) -> list[str]:
+    """What the numbers of a variable stand for."""
+    variable = next(v for v in table.variables if v.name == name)
+    meanings = str(variable.attributes["flag_meanings"]).split()
+    return [meanings[number] for number in variable.values.ravel()]
+
+
 def test_an_empty_step_is_all_nan_with_status_not_measured() -> None:
     table = step_table(run_of([]), "empty pair")
 
@@ -146,7 +153,7 @@ def test_darks_are_in_the_order_of_time_with_all_readings() -> None:
     table = dark_table(run_of(records()))
 
     assert table["time"].tolist() == pytest.approx([1.705, 40.705])
-    assert table["when"].tolist() == [0, 1]
+    assert words(table, "when") == ["before", "after"]
     assert table["step"].tolist() == [0, 0]
     np.testing.assert_allclose(table["signal"], [3e-9, 3e-9])
     assert table["reference_monitor_levels"].shape == (2, 3)
@@ -157,6 +164,15 @@ def test_a_dark_of_the_second_step_says_so() -> None:
 
     assert table["step"].tolist() == [1]
     assert table["how"].tolist() == [1]
+
+
+@pytest.mark.parametrize(("what", "how"), [("dark", "by_shutter"), ("background", "source_off"), ("zero", "by_hand")])
+def test_a_dark_a_background_and_a_zero_are_kept_apart(what: str, how: str) -> None:
+    record = dark("during", 1.0) | {"what": what, "how": how.replace("_", " ")}
+
+    table = dark_table(run_of([record]))
+
+    assert (words(table, "what"), words(table, "when"), words(table, "how")) == ([what], ["during"], [how])
 
 
 def test_words_behind_numbers_are_told_as_cf_flags() -> None:
