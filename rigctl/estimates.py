@@ -1,23 +1,27 @@
 """From a run to estimates: the readings of every step and dark, put before the fit of the recipe's train.
 
-It owns which records count: the last good attempt at each visit, and every dark. It computes nothing itself.
+It owns which records count: the last good attempt at each confirmed visit, and every dark and background; and how a
+monitor's readings take the source's wander out of the signal's. It fits nothing itself.
 """
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import prod
 from typing import TYPE_CHECKING
 
 from rigctl.errors import UndecidedError
 from rigctl.files import parse_recipe
 from rigctl.files.arrangement import train_of
+from rigctl.files.labels import level_labels, range_labels
+from rigctl.files.recipe import Recipe
 from rigctl.interfaces import Dwell
+from rigctl.record.records import Dark, Visit
 from rigctl.record.run import Run
 
 if TYPE_CHECKING:
-    from rigctl.optics import Train, Visits
+    from rigctl.optics import Row, Train, Visits
+    from rigctl.optics.kernel import Array
     from rigctl.polarimetry import Fit, Observed
-
-SECONDS_PER_HOUR = 3600.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -29,16 +33,7 @@ class Data:
     observed: "Mapping[str, Observed]"
     saturated: int
     missing: int
-
-
-@dataclass(frozen=True, slots=True)
-class _Row:
-    """One visit or dark: angles read, deg; whether the beam was let in; middle of the dwell, s."""
-
-    angle_deg: Mapping[str, float]
-    is_open: bool
-    middle_s: float
-    dwells: Mapping[str, Dwell]
+    unconfirmed: int
 
 
 def run_data(run: Run) -> Data:
@@ -49,23 +44,48 @@ def run_data(run: Run) -> Data:
     UndecidedError
         When no visit was completed.
     """
+    from rigctl.optics import visits_of
+
     recipe = parse_recipe(run.header.recipe.text, run.header.recipe.file_name)
     train = train_of(recipe)
-    rows = [*_visit_rows(run), *_dark_rows(run)]
-    if not any(row.is_open for row in rows):
+    visits = [visit for step in run.header.steps for visit in run.visits(step.name)]
+    good = [visit for visit in visits if visit.is_confirmed]
+    if not good:
         raise UndecidedError("no visit was completed", where=run.header.title, do="Run the recipe again.")
+    darks = [dark for dark in run.darks if dark.what != "zero"]
+    rows = [*(_visit_row(visit, recipe) for visit in good), *map(_dark_row, darks)]
+    dwells = [*(visit.dwells for visit in good), *(dark.dwells for dark in darks)]
+    monitor = monitor_role(recipe, run.header.detectors)
+    detectors = [d.name for d in train.detectors if d.name in run.header.detectors and d.name != monitor]
     placed = [visit for step in run.header.steps for visit in run.placed(step.name)]
-    planned = sum(_size(step.shape) for step in run.header.steps)
-    good = sum(visit.status == "ok" for visit in placed)
     saturated = sum(visit.status == "saturated" for visit in placed)
-    detectors = [name for name in run.header.detectors if name in {d.name for d in train.detectors}]
+    planned = sum(prod(step.shape) for step in run.header.steps)
     return Data(
-        train=train,
-        visits=_visits(rows, train),
-        observed={name: _observed([row.dwells[name] for row in rows]) for name in detectors},
+        train=_seen_by(train, detectors),
+        visits=visits_of(rows, train),
+        observed={name: _observed(dwells, len(good), name, monitor) for name in detectors},
         saturated=saturated,
-        missing=planned - good - saturated,
+        missing=planned - len(visits) - saturated,
+        unconfirmed=len(visits) - len(good),
     )
+
+
+def _seen_by(train: "Train", names: Sequence[str]) -> "Train":
+    """Return a train without the detectors that are not named."""
+    gone = [f"{detector.name}." for detector in train.detectors if detector.name not in names]
+    kept = {name: q for name, q in train.quantities.items() if not name.startswith(tuple(gone))}
+    return replace(train, detectors=tuple(d for d in train.detectors if d.name in names), quantities=kept)
+
+
+def monitor_role(recipe: Recipe, detectors: Sequence[str]) -> str | None:
+    """Return the power meter at a pick-off, where the rig fills it."""
+    return next((part.to for part in recipe.optics if part.kind == "pick-off" and part.to in detectors), None)
+
+
+def asks_for_anything(run: Run) -> bool:
+    """Whether a run's recipe calls anything unknown."""
+    recipe = parse_recipe(run.header.recipe.text, run.header.recipe.file_name)
+    return any(part.unknown for part in recipe.optics)
 
 
 def truth_of(run: Run) -> Mapping[str, float]:
@@ -73,7 +93,7 @@ def truth_of(run: Run) -> Mapping[str, float]:
 
     The simulated source is given by its power at the start, the fit's by that in the middle of the visits.
     """
-    from rigctl.optics.train import DRIFT, POWER
+    from rigctl.optics.parts import DRIFT, POWER
 
     truth = dict(run.header.truth)
     if POWER in truth and DRIFT in truth:
@@ -90,20 +110,30 @@ def fit_run(run: Run) -> "Fit":
     return fit(data.train, data.visits, data.observed)
 
 
-def _size(shape: Sequence[int]) -> int:
-    total = 1
-    for length in shape:
-        total *= length
-    return total
+def _visit_row(visit: Visit, recipe: Recipe) -> "Row":
+    from rigctl.optics import Row
+
+    step = next(step for step in recipe.steps if step.name == visit.step)
+    kinds = {axis.role: axis.kind for axis in step.sweep}
+    ranges = {role: dwell.range_w for role, dwell in visit.dwells.items()}
+    temperatures = {
+        role: values["temperature_c"] for role, values in visit.conditions.items() if "temperature_c" in values
+    }
+    return Row(
+        time_s=_middle_s(visit.dwells),
+        is_open=True,
+        angle_deg={role: value for role, value in visit.read.items() if kinds.get(role) == "angle"},
+        temperature_c=temperatures,
+        present=visit.present,
+        labels={**level_labels(step, visit.asked), **range_labels(ranges)},
+    )
 
 
-def _visit_rows(run: Run) -> list[_Row]:
-    visits = [visit for step in run.header.steps for visit in run.visits(step.name)]
-    return [_Row(visit.read, True, _middle_s(visit.dwells), visit.dwells) for visit in visits]
+def _dark_row(dark: Dark) -> "Row":
+    from rigctl.optics import Row
 
-
-def _dark_rows(run: Run) -> list[_Row]:
-    return [_Row({}, False, _middle_s(dark.dwells), dark.dwells) for dark in run.darks]
+    ranges = {role: dwell.range_w for role, dwell in dark.dwells.items()}
+    return Row(_middle_s(dark.dwells), False, labels=range_labels(ranges))
 
 
 def _middle_s(dwells: Mapping[str, Dwell]) -> float:
@@ -111,29 +141,43 @@ def _middle_s(dwells: Mapping[str, Dwell]) -> float:
     return sum(middles) / len(middles)
 
 
-def _visits(rows: Sequence[_Row], train: "Train") -> "Visits":
-    """Rows as arrays; a mount's angle does not matter while the beam is blocked, so a dark bears zero."""
-    import numpy as np
+def _observed(
+    dwells: Sequence[Mapping[str, Dwell]], lit: int, name: str, monitor: str | None
+) -> "Observed":
+    """Mean, sample standard deviation and number of each dwell's readings; flagged readings left out.
 
-    from rigctl.optics import Visits
+    With a monitor, each reading of a lit dwell is divided by what the monitor read in the same moment, over its mean
+    in the run: what both have in common is the source's.
 
-    mounts = {element.mount for element in train.elements if element.mount is not None}
-    return Visits(
-        angle_deg={mount: np.array([row.angle_deg.get(mount, 0.0) for row in rows]) for mount in sorted(mounts)},
-        is_open=np.array([row.is_open for row in rows]),
-        time_h=np.array([row.middle_s / SECONDS_PER_HOUR for row in rows]),
-    )
-
-
-def _observed(dwells: Sequence[Dwell]) -> "Observed":
-    """Mean, sample standard deviation and number of the readings of each dwell; flagged readings left out."""
+    Parameters
+    ----------
+    lit
+        The first so many dwells are visits, the others darks.
+    """
     import numpy as np
 
     from rigctl.polarimetry import Observed
 
-    levels = [np.array([level for level in dwell.levels_w if level == level]) for dwell in dwells]
+    readings = [np.array(dwell[name].levels_w) for dwell in dwells]
+    if monitor is not None:
+        readings = _without_wander(readings, [np.array(dwell[monitor].levels_w) for dwell in dwells], lit)
+    readings = [values[np.isfinite(values)] for values in readings]
     return Observed(
-        power_w=np.array([np.mean(values) if values.size else np.nan for values in levels]),
-        sd_w=np.array([np.std(values, ddof=1) if values.size > 1 else np.nan for values in levels]),
-        n=np.array([values.size for values in levels]),
+        power_w=np.array([np.mean(values) if values.size else np.nan for values in readings]),
+        sd_w=np.array([np.std(values, ddof=1) if values.size > 1 else np.nan for values in readings]),
+        n=np.array([values.size for values in readings]),
     )
+
+
+def _without_wander(signal: "list[Array]", monitor: "list[Array]", lit: int) -> "list[Array]":
+    """Divide the light of each lit dwell by the monitor's, over its mean; the darks of both are taken off first."""
+    import numpy as np
+
+    dark_s = np.nanmean(np.concatenate(signal[lit:])) if signal[lit:] else 0.0
+    dark_m = np.nanmean(np.concatenate(monitor[lit:])) if monitor[lit:] else 0.0
+    mean = np.nanmean(np.concatenate(monitor[:lit])) - dark_m
+    divided = [
+        dark_s + (s - dark_s) * mean / ((m if m.size == s.size else np.nanmean(m)) - dark_m)
+        for s, m in zip(signal[:lit], monitor[:lit], strict=True)
+    ]
+    return [*divided, *signal[lit:]]

@@ -4,54 +4,63 @@ Pure: a function of the recipe's nominal values, and of what the meters declare.
 """
 
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from rigctl.files.arrangement import train_of
-from rigctl.files.recipe import Recipe
+from rigctl.files.labels import level_labels
+from rigctl.files.recipe import Recipe, Step
 from rigctl.interfaces import Capabilities, MeterCapabilities
-from rigctl.runner.plan import DARK_DWELLS, duration_s, step_visits
+from rigctl.runner.forecast import Forecast
+from rigctl.runner.plan import DARK_DWELLS, step_visits
 
 if TYPE_CHECKING:
-    from rigctl.optics import Train, Visits
+    from rigctl.optics import Row
     from rigctl.polarimetry import Prediction
 
-SECONDS_PER_HOUR = 3600.0
+def planned_rows(recipe: Recipe, *, duration_s: float) -> "list[Row]":
+    """Return the visits of a recipe and its darks, evenly spread in time, as rows for a train."""
+    from rigctl.optics import Row
+
+    rows: list[Row] = []
+    movable = {name for step in recipe.steps for name in step.without}
+    darks = [dark for dark in recipe.darks if dark.kind != "zero"]
+    for step in recipe.steps:
+        present = {name: name not in step.without for name in movable}
+        rows += [Row(0.0, False)] * DARK_DWELLS * sum(dark.before for dark in darks)
+        for visit in step_visits(step):
+            labels = level_labels(step, visit.asked)
+            temperatures = {axis.role: visit.asked[axis.role] for axis in step.sweep if axis.kind == "temperature"}
+            angles = {axis.role: visit.asked[axis.role] for axis in step.sweep if axis.kind == "angle"}
+            rows.append(Row(0.0, True, angles, temperatures, present, labels))
+        rows += [Row(0.0, False)] * DARK_DWELLS * sum(dark.after for dark in darks)
+    pace_s = duration_s / max(len(rows) - 1, 1)
+    return [replace(row, time_s=pace_s * place) for place, row in enumerate(rows)]
 
 
-def planned_visits(recipe: Recipe, train: "Train", *, duration_s: float) -> "Visits":
-    """Return the visits of a recipe as the train takes them, its darks among them, evenly spread in time."""
-    import numpy as np
-
-    from rigctl.optics import Visits
-
-    asked = [visit.asked_deg for step in recipe.steps for visit in step_visits(step)]
-    before, after = (
-        (0, 0) if recipe.dark is None else (DARK_DWELLS * recipe.dark.before, DARK_DWELLS * recipe.dark.after)
-    )
-    rows: list[Mapping[str, float]] = [{}] * before + asked + [{}] * after
-    mounts = sorted({element.mount for element in train.elements if element.mount is not None})
-    place = np.arange(len(rows))
-    return Visits(
-        angle_deg={mount: np.array([row.get(mount, 0.0) for row in rows]) for mount in mounts},
-        is_open=(place >= before) & (place < len(rows) - after),
-        time_h=np.linspace(0.0, duration_s / SECONDS_PER_HOUR, len(rows)),
-    )
-
-
-def expected_peak_w(recipe: Recipe, role: str) -> float:
-    """Return the largest power that the recipe's nominal values give at a detector in any visit, W.
+def expected_peak_w(recipe: Recipe, role: str, step: Step | None = None) -> float:
+    """Return the largest power that the recipe's nominal values give at a detector, W.
 
     Three standard uncertainties of the source's power are added, so that a source on the bright side does not
     overload the range.
+
+    Parameters
+    ----------
+    step
+        Only its visits count; None: those of the whole recipe.
     """
-    from rigctl.optics import readings
+    from rigctl.optics import readings, visits_of
 
     train = train_of(recipe)
-    nominal = {name: quantity.value for name, quantity in train.quantities.items()}
-    peak_w = float(readings(train, planned_visits(recipe, train, duration_s=0.0), nominal)[role].max())
+    if role not in {detector.name for detector in train.detectors}:
+        return 0.0
+    steps = recipe.steps if step is None else (step,)
+    rows = [row for row in planned_rows(replace(recipe, steps=steps, darks=()), duration_s=0.0) if row.is_open]
+    visits = visits_of(rows, train)
+    nominal = train.levelled(visits).values({})
     power = recipe.source.power
     margin = 1.5 if power is None else 1.0 + 3.0 * (power.u or 0.0) / power.value
-    return peak_w * margin
+    return float(readings(train.levelled(visits), visits, nominal)[role].max()) * margin
 
 
 def predicted(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> "Prediction":
@@ -64,14 +73,14 @@ def predicted(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> "Pred
     """
     import numpy as np
 
-    from rigctl.optics import readings
+    from rigctl.optics import readings, visits_of
     from rigctl.polarimetry import predict
 
-    train = train_of(recipe)
-    visits = planned_visits(recipe, train, duration_s=duration_s(recipe, capabilities))
-    nominal = {name: quantity.value for name, quantity in train.quantities.items()}
+    bare = train_of(recipe)
+    visits = visits_of(planned_rows(recipe, duration_s=Forecast(recipe, capabilities).duration_s()), bare)
+    train = bare.levelled(visits)
     variances = {}
-    for name, power_w in readings(train, visits, nominal).items():
+    for name, power_w in readings(train, visits, train.values({})).items():
         meter = capabilities[name]
         assert isinstance(meter, MeterCapabilities)
         noise_w = np.hypot(_noise_on_range_w(meter, expected_peak_w(recipe, name)), meter.relative_noise * power_w)
