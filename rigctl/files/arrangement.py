@@ -3,6 +3,8 @@
 It owns which quantities a train has, and what is known of each: unknown, free, held by a prior, or exact.
 """
 
+from collections.abc import Collection, Iterator
+
 from rigctl.files.recipe import OpticalElement, Recipe
 from rigctl.optics import Detector, Element, Quantity, Train
 from rigctl.quantities import Measured
@@ -12,19 +14,39 @@ POWER_UNSTATED_W = 1e-3
 ZERO = Measured(0.0)
 
 
-def train_of(recipe: Recipe) -> Train:
-    """Return the train of a recipe, every quantity at its nominal value."""
+def train_of(recipe: Recipe, *, filled: Collection[str] | None = None) -> Train:
+    """Return the train of a recipe, every quantity at its nominal value.
+
+    Parameters
+    ----------
+    filled
+        Roles that the rig fills: a pick-off whose optional power meter is missing takes its part of the light all
+        the same, but nothing reads it. None: all of them.
+    """
     optics = [part for part in recipe.optics if part.kind != "detector"]
-    detectors = [part for part in recipe.optics if part.kind == "detector"]
+    detectors = tuple(_detectors(recipe, filled))
     quantities = [*_source_quantities(recipe)]
     for part in optics:
         quantities += _element_quantities(part)
-    quantities += [_stray_light(part) for part in detectors]
+    at_end = {part.name: part for part in recipe.optics if part.kind == "detector"}
+    quantities += [_stray_light(detector.name, at_end.get(detector.name)) for detector in detectors]
     return Train(
-        elements=tuple(Element(part.name, part.kind, part.turned_by) for part in optics),
-        detectors=tuple(Detector(part.name) for part in detectors),
+        elements=tuple(map(_element, optics)),
+        detectors=detectors,
         quantities={quantity.name: quantity for quantity in quantities},
     )
+
+
+def _detectors(recipe: Recipe, filled: Collection[str] | None) -> Iterator[Detector]:
+    """Yield every detector in the order of the light: those of pick-offs before those at the end."""
+    for part in recipe.optics:
+        role = part.to or part.role
+        if role is not None and (filled is None or role in filled):
+            yield Detector(role, after=part.name if part.kind == "pick-off" else None)
+
+
+def _element(part: OpticalElement) -> Element:
+    return Element(part.name, part.kind, part.turned_by, part.warmed_by, part.reference_temperature_c)
 
 
 def _source_quantities(recipe: Recipe) -> list[Quantity]:
@@ -38,22 +60,28 @@ def _source_quantities(recipe: Recipe) -> list[Quantity]:
 
 
 def _element_quantities(part: OpticalElement) -> list[Quantity]:
-    found = [_quantity(part, "axis", "angle", part.axis or ZERO)]
-    if part.kind == "polarizer":
-        found.append(_quantity(part, "extinction ratio", "ratio", part.extinction_ratio or ZERO))
-    else:
-        found.append(_quantity(part, "retardance", "retardance", part.retardance or ZERO))
-    if part.turned_by is not None:
-        found.append(_quantity(part, "dial offset", "angle", part.dial_offset or ZERO))
-    return found
+    """Return what is known of an element: every quantity that its kind, its mount and its oven give it."""
+    has = {
+        "axis": ("angle", part.axis),
+        "extinction ratio": ("ratio", part.extinction_ratio),
+        "retardance": ("retardance", part.retardance),
+        "fraction": ("fraction", part.fraction),
+        "dial offset": ("angle", part.dial_offset),
+        "temperature coefficient": ("coefficient", part.temperature_coefficient),
+    }
+    return [_quantity(part, name, kind, value) for name, (kind, value) in has.items() if value is not None]
 
 
 def _quantity(part: OpticalElement, name: str, kind: str, measured: Measured) -> Quantity:
-    is_unknown = name in part.unknown
-    return Quantity(f"{part.name}.{name}", kind, measured.value, measured.u, is_unknown=is_unknown)
+    address, is_unknown, each = f"{part.name}.{name}", name in part.unknown, part.each.get(name)
+    return Quantity(address, kind, measured.value, measured.u, is_unknown=is_unknown, each=each)
 
 
-def _stray_light(part: OpticalElement) -> Quantity:
-    stray, is_unknown = part.stray_light or ZERO, "stray light" in part.unknown
-    name = f"{part.name}.stray light"
-    return Quantity(name, "power", stray.value, stray.u, is_unknown=is_unknown, is_free=stray.u is None)
+def _stray_light(role: str, part: OpticalElement | None) -> Quantity:
+    """Return the light beside the beam; where nothing is said of it, it is fitted freely."""
+    stray = ZERO if part is None else part.stray_light or ZERO
+    is_unknown = part is not None and "stray light" in part.unknown
+    each = None if part is None else part.each.get("stray light")
+    return Quantity(
+        f"{role}.stray light", "power", stray.value, stray.u, is_unknown=is_unknown, is_free=stray.u is None, each=each
+    )
