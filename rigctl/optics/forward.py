@@ -10,9 +10,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigctl.optics.kernel import Array, Stokes, coefficient_slopes, through, torque
-from rigctl.optics.parts import Detector, Element, at_level
+from rigctl.optics.parts import DRIFT, POWER, Detector, Element, at_level
 from rigctl.optics.stages import DEGREE, Stage, planes_of, stages_of, value_at
-from rigctl.optics.train import DRIFT, POWER, Train
+from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
 
 
@@ -137,7 +137,7 @@ def readings_and_slopes(
     product (see `kernel`). Checked by complex step.
     """
     passage = _passage(train, visits, x)
-    masks = _level_masks(train, visits)
+    masks = level_masks(train, visits)
     levels, slopes, zeros = {}, {}, np.zeros(visits.count)
     for detector in train.detectors:
         beam = _beam(passage, detector)
@@ -148,7 +148,7 @@ def readings_and_slopes(
     return levels, slopes
 
 
-def _level_masks(train: Train, visits: Visits) -> dict[str, tuple[str, Array]]:
+def level_masks(train: Train, visits: Visits) -> dict[str, tuple[str, Array]]:
     """By the address at a level: the address without it, and 1 where a visit belongs to the level."""
     apart = [(q.name, visits.levels_for(q.each, q.name)) for q in train.quantities.values() if q.each is not None]
     return {

@@ -7,6 +7,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
 
+POWER = "source.power"
+DRIFT = "source.drift"
 STRAY_LIGHT = "stray light"
 GAIN = "gain"
 DIAL_OFFSET = "dial offset"
@@ -16,12 +18,18 @@ POLARIZER, RETARDER, PICK_OFF = "polarizer", "retarder", "pick-off"
 STRENGTHS: Mapping[str, str] = MappingProxyType(
     {POLARIZER: "extinction ratio", RETARDER: "retardance", PICK_OFF: "fraction"}
 )
+LEVEL_MARK = " @ "
 USUAL_REFERENCE_C = 25.0  # where catalogues state their values
 
 
 def at_level(address: str, label: str) -> str:
     """Address of a quantity at one of its levels, such as `part.retardance @ 22 degC`."""
-    return f"{address} @ {label}"
+    return f"{address}{LEVEL_MARK}{label}"
+
+
+def base_of(address: str) -> str:
+    """Address without its level."""
+    return address.partition(LEVEL_MARK)[0]
 
 
 @dataclass(frozen=True, slots=True)

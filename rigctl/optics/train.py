@@ -3,16 +3,14 @@
 It owns which quantities belong to it and in which order; it never computes a power.
 """
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Collection, Iterator, Mapping
 from dataclasses import dataclass, replace
 
 from rigctl.errors import PlanError
 from rigctl.optics.kernel import Stokes
-from rigctl.optics.parts import PICK_OFF, STRENGTHS, Detector, Element, Quantity, at_level
+from rigctl.optics.parts import DRIFT, PICK_OFF, POWER, STRENGTHS, Detector, Element, Quantity, at_level, base_of
 from rigctl.optics.visits import Visits
 
-POWER = "source.power"
-DRIFT = "source.drift"
 UNPOLARIZED: Stokes[float] = (1.0, 0.0, 0.0, 0.0)
 
 
@@ -99,6 +97,13 @@ class Train:
     def rewritten(self, *quantities: Quantity) -> "Train":
         """The same train with some quantities replaced or added."""
         return replace(self, quantities={**self.quantities, **{q.name: q for q in quantities}})
+
+    def read_by(self, names: Collection[str]) -> "Train":
+        """The same train with only the named detectors; their pick-offs stay in the light's way."""
+        kept = tuple(d for d in self.detectors if d.name in names)
+        gone = {a for d in self.detectors if d not in kept for a in (d.stray_light, d.gain)}
+        quantities = {name: q for name, q in self.quantities.items() if base_of(name) not in gone}
+        return replace(self, detectors=kept, quantities=quantities)
 
     def levelled(self, visits: Visits) -> "Train":
         """The same train with a quantity for each level of those that have levels.

@@ -37,7 +37,8 @@ def descend(problem: Problem, z: Array, *, most_steps: int = MOST_STEPS) -> Desc
     Source
     ------
     K. Levenberg, Q. Appl. Math. 2, 164 (1944) and D. W. Marquardt, J. SIAM 11, 431 (1963), citations from
-    memory: damped least squares in columns of unit length; undamped while that succeeds.
+    memory: damped least squares in columns of unit length; undamped while that succeeds. No step goes farther
+    than what is plausible for a quantity: where one is nearly blind it would be thrown beyond all meaning.
     """
     here = Descent(z, *problem.rows(z))
     for _ in range(most_steps):
@@ -58,8 +59,10 @@ def _step(problem: Problem, here: Descent) -> Descent | None:
     if float(np.linalg.norm(along)) <= CLOSE * max(1.0, np.sqrt(here.chi2)):
         return None
     damping = here.damping / EASE if here.damping > LEAST_DAMPING else 0.0
+    farthest = problem.widths(here.z)
     while damping < MOST_DAMPING:
         step = Vt.T @ (along * s / (s * s + damping + np.finfo(float).tiny)) / scale
+        step /= max(1.0, float(np.max(np.abs(step) / farthest)))
         there = Descent(here.z + step, *problem.rows(here.z + step), damping)
         if there.chi2 < here.chi2:
             return there

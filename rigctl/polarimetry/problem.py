@@ -10,8 +10,8 @@ import numpy as np
 
 from rigctl.optics.forward import readings_and_slopes
 from rigctl.optics.kernel import Array
-from rigctl.optics.parts import Quantity
-from rigctl.optics.train import POWER, Train
+from rigctl.optics.parts import POWER, Quantity, base_of
+from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
 from rigctl.polarimetry.coordinates import WIDTHS, to_people
 
@@ -75,11 +75,10 @@ class Problem:
 
     def widths(self, z: Array) -> Array:
         """What is plausible for each quantity before any sweep, shape (P,)."""
-        values = self.values(z)
-        power_w = abs(values[POWER]) or 1.0
-        by_power = {POWER: power_w}
-        stray_w = STRAY_WIDTH * power_w
-        return np.array([by_power.get(q.name, stray_w) if q.kind == "power" else WIDTHS[q.kind] for q in self.fitted])
+        source_w = {q.name: abs(float(v)) for q, v in zip(self.fitted, z, strict=True) if base_of(q.name) == POWER}
+        brightest_w = max(source_w.values(), default=abs(self.train.quantities[POWER].value)) or 1.0
+        powers = {q.name: STRAY_WIDTH * brightest_w for q in self.fitted} | dict.fromkeys(source_w, brightest_w)
+        return np.array([powers[q.name] if q.kind == "power" else WIDTHS[q.kind] for q in self.fitted])
 
     def values(self, z: Array) -> dict[str, float]:
         """Every quantity of the train in the forms of the fit."""

@@ -12,8 +12,7 @@ import numpy as np
 
 from rigctl.optics.forward import unit_light
 from rigctl.optics.kernel import Array
-from rigctl.optics.parts import Quantity
-from rigctl.optics.train import DRIFT, POWER
+from rigctl.optics.parts import DRIFT, POWER, Quantity
 from rigctl.polarimetry.problem import Problem
 
 # Coarse enough to be quick, fine enough that 1800 random fits ended as well as fits begun at the truth.
