@@ -1,6 +1,6 @@
 """A detector head in the light: what it shows, averaged over a reading.
 
-It owns the lag and the stray light. Noise, ranges and overload belong to the instrument that reads the head.
+It owns the lag and the stray light. Noise of its own, ranges and overload belong to the instrument that reads the head.
 """
 
 from typing import Protocol
@@ -44,18 +44,24 @@ class HeadInBeam:
 
         Source
         ------
-        First-order lag; a ramp (the source's drift) is shown late by one time constant.
+        First-order lag; a ramp (the source's drift) is shown late by one time constant. The source's noise is
+        averaged over the reading itself, whatever the lag, so that heads of any make see the same.
         """
+        light_w = self._mean_light_w(begin_s, end_s, time_constant_s)
+        stray_w = self._stray_w * self._world.uncapped(0.5 * (begin_s + end_s))
+        return light_w * (1.0 + self._world.flicker(begin_s, end_s)) + stray_w
+
+    def _mean_light_w(self, begin_s: float, end_s: float, time_constant_s: float) -> float:
         remembers_from_s = begin_s - FORGOTTEN * time_constant_s
         if self._world.rests_from_s() <= remembers_from_s:
             middle_s = 0.5 * (begin_s + end_s)
-            return self._world.light_w(middle_s - time_constant_s, self._detector) + self._stray_w
+            return self._world.light_w(middle_s - time_constant_s, self._detector)
         if not remembers_from_s <= self._shown_at_s <= begin_s:
             self._shown_at_s = remembers_from_s
             self._shown_w = self._world.light_w(remembers_from_s, self._detector)
         if self._shown_at_s < begin_s:
             self._follow(begin_s, time_constant_s)
-        return self._follow(end_s, time_constant_s) / (end_s - begin_s) + self._stray_w
+        return self._follow(end_s, time_constant_s) / (end_s - begin_s)
 
     def _follow(self, end_s: float, time_constant_s: float) -> float:
         """Go on to an instant; return the integral of what was shown on the way, J."""

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 from rigctl_sim.head import Head
 from rigctl_sim.scpi.complaint import Complaint
 from rigctl_sim.scpi.parameters import boolean, choice, number, range_or_word, whole_number
+from rigctl_sim.scpi.response import nr3
 from rigctl_sim.scpi.status import Status
 from rigctl_sim.scpi.syntax import Command, Wait
 
@@ -84,8 +85,8 @@ class SimulatedPowerMeter:
         Numbers of the standard normal distribution, its own.
     """
 
-    def __init__(self, make: MeterMake, head: Head, noise: Iterator[float]) -> None:
-        self.status = Status()
+    def __init__(self, make: MeterMake, head: Head, noise: Iterator[float], *, status: Status | None = None) -> None:
+        self.status = status or Status()
         self._make, self._head, self._noise = make, head, noise
         self._settings = self._first_settings()
         self._begin_s: float | None = None
@@ -147,13 +148,13 @@ class SimulatedPowerMeter:
         wavelength = number("M", *_WAVELENGTH_M, default=633e-9)
         return (
             Command("[SENSe#]:POWer[:DC]:APERture", lambda _, t: self._set(aperture_s=t), (aperture,)),
-            Command("[SENSe#]:POWer[:DC]:APERture?", lambda _: _nr3(self._settings.aperture_s)),
+            Command("[SENSe#]:POWer[:DC]:APERture?", lambda _: nr3(self._settings.aperture_s)),
             Command("[SENSe#]:AVERage[:STATe]", lambda _, is_on: self._set(is_averaged=is_on), (boolean,)),
             Command("[SENSe#]:AVERage[:STATe]?", lambda _: f"{self._settings.is_averaged:d}"),
             Command("[SENSe#]:AVERage:COUNt", lambda _, n: self._set(averaged=n), (averaged,)),
             Command("[SENSe#]:AVERage:COUNt?", lambda _: str(self._settings.averaged)),
             Command("[SENSe#]:CORRection:WAVelength", lambda _, w: self._set(wavelength_m=w), (wavelength,)),
-            Command("[SENSe#]:CORRection:WAVelength?", lambda _: _nr3(self._settings.wavelength_m)),
+            Command("[SENSe#]:CORRection:WAVelength?", lambda _: nr3(self._settings.wavelength_m)),
             Command("UNIT:POWer", lambda _, _word: None, (choice("W"),)),
             Command("UNIT:POWer?", lambda _: "W"),
             Command("FORMat[:DATA]", lambda _, _word: None, (choice("ASCii"),)),
@@ -176,7 +177,7 @@ class SimulatedPowerMeter:
     def _range(self, _at_s: float, word: str = "") -> str:
         ranges = self._make.ranges_w
         named = {"MIN": ranges[0], "MAX": ranges[-1], "DEF": ranges[-1]}
-        return _nr3(named.get(word, ranges[self._settings.range_number]))
+        return nr3(named.get(word, ranges[self._settings.range_number]))
 
     def _set_continuous(self, at_s: float, is_on: bool) -> None:
         self._set(is_continuous=is_on)
@@ -235,8 +236,3 @@ class SimulatedPowerMeter:
         scatter = math.hypot(make.noise_w[number], make.relative_noise * power)
         level = power + scatter * next(self._noise)
         return OVERLOAD if level > min(make.ranges_w[number], make.saturation_w) else level
-
-
-def _nr3(value: float) -> str:
-    """Write a number as NR3 response data: IEEE 488.2, 8.7.4."""
-    return f"{value:.6E}"

@@ -1,6 +1,6 @@
-"""A simulated relay card with shutters behind its channels.
+"""A simulated relay card with shutters and slides behind its channels.
 
-It owns which relays are closed. A shutter moves for a while after its relay has switched.
+It owns which relays are closed. What a relay drives moves for a while after the relay has switched.
 """
 
 from collections.abc import Iterable, Mapping
@@ -13,26 +13,34 @@ from rigctl_sim.trajectory import Trajectory
 
 
 @dataclass(frozen=True, slots=True)
-class SimulatedShutter:
-    """A shutter on a relay; `opening` is 1 when light passes, `opens_at_rest` while the relay is open."""
+class Mover:
+    """What a relay drives between two places, 0 and 1.
 
-    opening: Trajectory
-    opens_at_rest: bool
+    Parameters
+    ----------
+    place
+        Of a shutter 1 when light passes, of a slide 1 when its element is in the beam.
+    rests_at_one
+        Where it is while the relay is open.
+    """
+
+    place: Trajectory
+    rests_at_one: bool
     moves_in_s: float
 
     def follow(self, is_closed: bool, at_s: float) -> None:
         """Move to where a closed or an open relay drives it."""
-        target = float(self.opens_at_rest != is_closed)
-        if target != self.opening.rests_at:
-            self.opening.glide(at_s, target, self.moves_in_s)
+        target = float(self.rests_at_one != is_closed)
+        if target != self.place.rests_at:
+            self.place.glide(at_s, target, self.moves_in_s)
 
 
 class SimulatedSwitch:
-    """Relays by their channel, all open after power-on; the shutters by channel."""
+    """Relays by their channel, all open after power-on; what they drive by channel, if it moves."""
 
-    def __init__(self, channels: int, shutters: Mapping[int, SimulatedShutter]) -> None:
-        self.status = Status()
-        self._channels, self._shutters = channels, dict(shutters)
+    def __init__(self, channels: int, movers: Mapping[int, Mover], *, status: Status | None = None) -> None:
+        self.status = status or Status()
+        self._channels, self._movers = channels, dict(movers)
         self._closed: set[int] = set()
 
     def commands(self) -> Iterable[Command]:
@@ -68,8 +76,8 @@ class SimulatedSwitch:
 
     def _drive(self, channels: tuple[int, ...], at_s: float) -> None:
         for channel in channels:
-            if channel in self._shutters:
-                self._shutters[channel].follow(channel in self._closed, at_s)
+            if channel in self._movers:
+                self._movers[channel].follow(channel in self._closed, at_s)
 
     def _answer(self, channels: tuple[int, ...], is_closed: bool) -> str:
         return ",".join([f"{(channel in self._closed) == is_closed:d}" for channel in channels])

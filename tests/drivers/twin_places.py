@@ -20,7 +20,7 @@ from rigctl_sim.machine import Axis, AxisMake, Machine
 from rigctl_sim.noise import normals
 from rigctl_sim.power_meter import MeterMake, SimulatedPowerMeter
 from rigctl_sim.scpi.twin import ScpiTwin
-from rigctl_sim.switch import SimulatedShutter, SimulatedSwitch
+from rigctl_sim.switch import Mover, SimulatedSwitch
 from rigctl_sim.trajectory import Trajectory
 
 T = TypeVar("T")
@@ -58,7 +58,7 @@ def meter_twin() -> Twin:
 
 
 def switch_twin() -> Twin:
-    shutters = {3: SimulatedShutter(Trajectory(0.0), opens_at_rest=False, moves_in_s=0.02)}
+    shutters = {3: Mover(Trajectory(0.0), rests_at_one=False, moves_in_s=0.02)}
     return ScpiTwin(SimulatedSwitch(8, shutters), identity="polrig,simulated switch,relays,1.0")
 
 

@@ -10,13 +10,17 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigctl_sim.head import HeadBesideBeam, HeadInBeam
+from rigctl_sim.light_source import Source, Steady
+from rigctl_sim.source_noise import SourceNoise
 from rigctl_sim.trajectory import Trajectory
-from rigctl_sim.world import Mount, Source, World
+from rigctl_sim.world import Mount, Way, World
 
 POWER_W, STRAY_W, TAU_S = 1e-3, 4e-7, 0.05
 
 
-def malus(angles: Mapping[str, float], power_w: float) -> tuple[float]:
+def malus(
+    angles: Mapping[str, float], power_w: float, _temperatures: Mapping[str, float], _absent: frozenset[str]
+) -> tuple[float]:
     return (power_w * math.cos(math.radians(angles["analyser"])) ** 2,)
 
 
@@ -26,10 +30,12 @@ def make_head(
     shutter: Trajectory | None = None,
     drift: float = 0.0,
     stray_w: float = 0.0,
+    noise: float = 0.0,
 ) -> HeadInBeam:
     mounts = {"analyser": Mount(dial or Trajectory(0.0), 1.0)}
     shutters = [] if shutter is None else [shutter]
-    return HeadInBeam(World(Source(POWER_W, drift), malus, mounts=mounts, shutters=shutters), 0, stray_w=stray_w)
+    source = Source(Steady(POWER_W), drift, SourceNoise(1, noise))
+    return HeadInBeam(World(source, malus, Way(mounts, shutters)), 0, stray_w=stray_w)
 
 
 def stepped(at_s: float, *, to: float = 1.0) -> Trajectory:

@@ -4,27 +4,27 @@ import pytest
 from twin_wire import Wire, torn, whole
 
 from rigctl_sim.scpi.twin import ScpiTwin
-from rigctl_sim.switch import SimulatedShutter, SimulatedSwitch
+from rigctl_sim.switch import Mover, SimulatedSwitch
 from rigctl_sim.trajectory import Trajectory
 
 MOVES_IN_S = 0.02
 
 
-def make_shutter(*, opens_at_rest: bool = False) -> SimulatedShutter:
-    return SimulatedShutter(Trajectory(float(opens_at_rest)), opens_at_rest, MOVES_IN_S)
+def make_shutter(*, opens_at_rest: bool = False) -> Mover:
+    return Mover(Trajectory(float(opens_at_rest)), opens_at_rest, MOVES_IN_S)
 
 
-def make_twin(shutters: dict[int, SimulatedShutter] | None = None) -> ScpiTwin:
+def make_twin(shutters: dict[int, Mover] | None = None) -> ScpiTwin:
     return ScpiTwin(SimulatedSwitch(8, shutters or {}), identity="polrig,simulated switch,switch 1,0")
 
 
 @pytest.fixture
-def shutter() -> SimulatedShutter:
+def shutter() -> Mover:
     return make_shutter()
 
 
 @pytest.fixture
-def wire(shutter: SimulatedShutter) -> Wire:
+def wire(shutter: Mover) -> Wire:
     return Wire(make_twin({3: shutter}))
 
 
@@ -60,34 +60,34 @@ def test_a_channel_that_is_none_is_refused(wire: Wire, message: bytes, code: int
     assert wire.ask(b"SYST:ERR?;:CLOS:STAT?").startswith(f"{code},")
 
 
-def test_the_shutter_opens_within_its_time(wire: Wire, shutter: SimulatedShutter) -> None:
+def test_the_shutter_opens_within_its_time(wire: Wire, shutter: Mover) -> None:
     wire.send(b"ROUTE:CLOSE (@3)\n", at_s=1.0)
 
-    assert shutter.opening(1.0) == 0.0
-    assert shutter.opening(1.0 + MOVES_IN_S / 2) == pytest.approx(0.5)
-    assert shutter.opening(1.0 + MOVES_IN_S) == 1.0
+    assert shutter.place(1.0) == 0.0
+    assert shutter.place(1.0 + MOVES_IN_S / 2) == pytest.approx(0.5)
+    assert shutter.place(1.0 + MOVES_IN_S) == 1.0
 
 
-def test_another_relay_moves_no_shutter(wire: Wire, shutter: SimulatedShutter) -> None:
+def test_another_relay_moves_no_shutter(wire: Wire, shutter: Mover) -> None:
     wire.send(b"ROUTE:CLOSE (@1,2,4)\n", at_s=1.0)
 
-    assert shutter.opening(9.0) == 0.0
+    assert shutter.place(9.0) == 0.0
 
 
-def test_closing_a_relay_again_does_not_start_the_shutter_again(wire: Wire, shutter: SimulatedShutter) -> None:
+def test_closing_a_relay_again_does_not_start_the_shutter_again(wire: Wire, shutter: Mover) -> None:
     wire.send(b"ROUTE:CLOSE (@3)\n", at_s=1.0)
 
     wire.send(b"ROUTE:CLOSE (@3)\n", at_s=1.0 + MOVES_IN_S / 2)
 
-    assert shutter.opening.rests_from_s == 1.0 + MOVES_IN_S
+    assert shutter.place.rests_from_s == 1.0 + MOVES_IN_S
 
 
-def test_a_shutter_may_turn_back_on_its_way(wire: Wire, shutter: SimulatedShutter) -> None:
+def test_a_shutter_may_turn_back_on_its_way(wire: Wire, shutter: Mover) -> None:
     wire.send(b"ROUTE:CLOSE (@3)\n", at_s=1.0)
     wire.send(b"ROUTE:OPEN (@3)\n", at_s=1.0 + MOVES_IN_S / 2)
 
-    assert shutter.opening(9.0) == 0.0
-    assert shutter.opening(1.0 + MOVES_IN_S) == pytest.approx(0.25)
+    assert shutter.place(9.0) == 0.0
+    assert shutter.place(1.0 + MOVES_IN_S) == pytest.approx(0.25)
 
 
 def test_a_shutter_that_is_open_at_rest_closes_with_its_relay() -> None:
@@ -96,15 +96,15 @@ def test_a_shutter_that_is_open_at_rest_closes_with_its_relay() -> None:
 
     wire.send(b"ROUTE:CLOSE (@1)\n", at_s=1.0)
 
-    assert (shutter.opening(1.0), shutter.opening(2.0)) == (1.0, 0.0)
+    assert (shutter.place(1.0), shutter.place(2.0)) == (1.0, 0.0)
 
 
-def test_a_reset_brings_every_shutter_to_rest(wire: Wire, shutter: SimulatedShutter) -> None:
+def test_a_reset_brings_every_shutter_to_rest(wire: Wire, shutter: Mover) -> None:
     wire.send(b"ROUTE:CLOSE (@3)\n", at_s=1.0)
 
     wire.send(b"*RST\n", at_s=2.0)
 
-    assert shutter.opening(3.0) == 0.0
+    assert shutter.place(3.0) == 0.0
 
 
 def test_two_shutters_on_one_card_are_two() -> None:
@@ -113,7 +113,7 @@ def test_two_shutters_on_one_card_are_two() -> None:
 
     wire.send(b"ROUTE:CLOSE (@2)\n", at_s=1.0)
 
-    assert (first.opening(2.0), second.opening(2.0)) == (0.0, 1.0)
+    assert (first.place(2.0), second.place(2.0)) == (0.0, 1.0)
 
 
 @pytest.mark.parametrize(

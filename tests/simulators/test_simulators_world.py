@@ -6,16 +6,24 @@ from itertools import pairwise
 
 import pytest
 
+from rigctl_sim.light_source import Source, Steady
+from rigctl_sim.source_noise import SourceNoise
 from rigctl_sim.trajectory import Trajectory
-from rigctl_sim.world import STEP_DEG, Mount, Source, World
+from rigctl_sim.world import STEP_DEG, Mount, Way, World
 
 POWER_W = 2e-3
 
 
-def malus(angles: Mapping[str, float], power_w: float) -> tuple[float, float]:
+def malus(
+    angles: Mapping[str, float], power_w: float, _temperatures: Mapping[str, float], _absent: frozenset[str]
+) -> tuple[float, float]:
     """A crossed pair of detectors behind one turning polarizer."""
     cosine = math.cos(math.radians(angles["analyser"]))
     return power_w * cosine**2, power_w * (1.0 - cosine**2)
+
+
+def make_source(drift_per_h: float = 0.0) -> Source:
+    return Source(Steady(POWER_W), drift_per_h, SourceNoise(1, 0.0))
 
 
 def make_world(
@@ -27,7 +35,7 @@ def make_world(
 ) -> World:
     mounts = {"analyser": Mount(dial or Trajectory(0.0), sense)}
     shutters = [] if shutter is None else [shutter]
-    return World(Source(POWER_W, drift), malus, mounts=mounts, shutters=shutters)
+    return World(make_source(drift), malus, Way(mounts, shutters))
 
 
 def test_the_light_follows_the_dial() -> None:
@@ -51,12 +59,14 @@ def test_each_detector_has_its_own_light() -> None:
 def test_a_mount_that_counts_the_other_way_turns_the_other_way() -> None:
     seen: list[float] = []
 
-    def reader(angles: Mapping[str, float], power_w: float) -> tuple[float]:
+    def reader(
+        angles: Mapping[str, float], power_w: float, _temperatures: Mapping[str, float], _absent: frozenset[str]
+    ) -> tuple[float]:
         seen.append(angles["analyser"])
         return (power_w,)
 
     mounts = {"analyser": Mount(Trajectory(30.0), -1.0)}
-    World(Source(POWER_W, 0.0), reader, mounts=mounts, shutters=()).light_w(0.0, 0)
+    World(make_source(), reader, Way(mounts)).light_w(0.0, 0)
 
     assert seen == [-30.0]
 
@@ -108,13 +118,15 @@ def test_the_past_stays_as_it_was_when_something_moves_later() -> None:
 def test_light_at_rest_is_worked_out_once() -> None:
     calls: list[float] = []
 
-    def reader(angles: Mapping[str, float], power_w: float) -> tuple[float]:
+    def reader(
+        angles: Mapping[str, float], power_w: float, _temperatures: Mapping[str, float], _absent: frozenset[str]
+    ) -> tuple[float]:
         calls.append(power_w)
         return (power_w,)
 
     dial = Trajectory(0.0)
     mounts = {"analyser": Mount(dial, 1.0)}
-    world = World(Source(POWER_W, 0.0), reader, mounts=mounts, shutters=())
+    world = World(make_source(), reader, Way(mounts))
 
     for instant in range(10):
         world.light_w(float(instant), 0)

@@ -18,6 +18,7 @@ TEXTS = {
     -168: "Block data not allowed",
     -170: "Expression error",
     -213: "Init ignored",
+    -221: "Settings conflict",
     -222: "Data out of range",
     -224: "Illegal parameter value",
     -230: "Data corrupt or stale",

@@ -44,6 +44,8 @@ def number(unit: str, low: float, high: float, *, default: float) -> Parameter:
         The suffix without prefix, in capitals; empty where none is allowed.
     """
     named = _by_form({"MINimum": low, "MAXimum": high, "DEFault": default})
+    # the bounds themselves must pass whatever rounding the prefix brought
+    rounding = 1e-12 * max(abs(low), abs(high))
 
     def read(text: str) -> float:
         if _WORD.fullmatch(text):
@@ -51,8 +53,7 @@ def number(unit: str, low: float, high: float, *, default: float) -> Parameter:
                 raise Complaint(-141)
             return named[text.upper()]
         value = _number(text, unit)
-        # the bounds themselves must pass whatever rounding the prefix brought
-        if not low * (1 - 1e-12) <= value <= high * (1 + 1e-12):
+        if not low - rounding <= value <= high + rounding:
             raise Complaint(-222)
         return value
 

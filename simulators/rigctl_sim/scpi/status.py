@@ -33,12 +33,18 @@ class Register:
     condition: int = 0
     event: int = 0
     enable: int = 0
+    _holders: dict[int, set[int]] = field(default_factory=dict)
 
-    def set_bit(self, bit: int, is_set: bool) -> None:
-        """Set or clear one bit of the condition, by its weight."""
-        if is_set and not self.condition & bit:
+    def set_bit(self, bit: int, is_set: bool, *, channel: int = 1) -> None:
+        """Set or clear one bit of the condition, by its weight; it stays set while any channel sets it."""
+        holders = self._holders.setdefault(bit, set())
+        if is_set:
+            holders.add(channel)
+        else:
+            holders.discard(channel)
+        if holders and not self.condition & bit:
             self.event |= bit
-        self.condition = self.condition | bit if is_set else self.condition & ~bit
+        self.condition = self.condition | bit if holders else self.condition & ~bit
 
     def read_event(self) -> int:
         """Return the event register and clear it."""

@@ -6,7 +6,7 @@ nothing.
 
 import itertools
 import re
-from collections.abc import Callable, Iterable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 
 from rigctl_sim.scpi.complaint import Complaint
@@ -33,7 +33,7 @@ class Command:
     ----------
     pattern
         As the standard prints it: capitals are the short form, brackets stand around nodes that may be left
-        out, `#` after a mnemonic allows the numeric suffix 1, a final `?` makes it a query:
+        out, `#` stands where a mnemonic may bear the number of its channel, a final `?` makes it a query:
         `[SENSe#]:POWer[:DC]:RANGe?`.
     act
         Called with the instant and the parameters; what a query answers is its text.
@@ -41,12 +41,15 @@ class Command:
         Readers of the parameters, in order.
     needs
         How many of them must be there; None: all.
+    channel
+        The numeric suffix that means it; 1 may be left out.
     """
 
     pattern: str
     act: Act
     takes: tuple[Parameter, ...] = ()
     needs: int | None = None
+    channel: int = 1
 
     @property
     def is_query(self) -> bool:
@@ -88,9 +91,12 @@ class Grammar:
     _MOST_KEPT = 512
 
     def __init__(self, commands: Iterable[Command]) -> None:
-        self._commands: Mapping[str, tuple[Command, tuple[bool, ...]]] = {
-            spelling: (command, may) for command in commands for spelling, may in _spellings(command.pattern)
-        }
+        self._commands: dict[str, dict[int, Command]] = {}
+        self._may_have_suffix: dict[str, tuple[bool, ...]] = {}
+        for command in commands:
+            for spelling, may in _spellings(command.pattern):
+                self._commands.setdefault(spelling, {})[command.channel] = command
+                self._may_have_suffix[spelling] = may
         self._kept: dict[bytes, tuple[Unit, ...]] = {}
 
     def parse(self, message: bytes) -> tuple[Unit, ...]:
@@ -114,19 +120,23 @@ class Grammar:
             yield Unit(None, complaint=complaint.code)
 
     def _find(self, header: str) -> Command:
+        """Find a command by its header; SCPI-1999 volume 1, 6.2.5.2: a suffix left out is 1."""
         bare = _SUFFIX.sub("", header)
-        found = self._commands.get(bare)
-        if found is None:
+        channels = self._commands.get(bare)
+        if channels is None:
             too_long = any(len(word) > _LONGEST_MNEMONIC for word in re.split(r"[:?]", header))
             raise Complaint(-112 if too_long else -113)
-        command, may_have_suffix = found
-        for word, may in zip(header.rstrip("?").split(":"), may_have_suffix, strict=True):
+        wanted = set()
+        for word, may in zip(header.rstrip("?").split(":"), self._may_have_suffix[bare], strict=True):
             suffix = _SUFFIX.search(word)
             if suffix and not may:
                 raise Complaint(-113)
-            if suffix and int(suffix[1]) != 1:
-                raise Complaint(-114)
-        return command
+            if may:
+                wanted.add(int(suffix[1]) if suffix else 1)
+        channel = wanted.pop() if wanted else 1
+        if wanted or channel not in channels:
+            raise Complaint(-114)
+        return channels[channel]
 
 
 def _unit(command: Command, parameters: list[str]) -> Unit:
