@@ -11,6 +11,7 @@ from dataclasses import dataclass, field
 from enum import IntFlag
 from typing import Any, Generic, Literal, Protocol, TypeVar
 
+from rigctl.kinds import Sign
 from rigctl.links.channel import Twin
 from rigctl.links.family import Family
 from rigctl.links.link import Link
@@ -307,12 +308,14 @@ class Option:
 
     `kind` is a quantity kind of `rigctl.quantities` (its value arrives in that kind's base unit), a span of one
     (`span of angle`), a list of one (`list of power`), `text`, `whole number`, `choice` or `thermistor`.
+    `sign` is what a number of it may be where the kind itself allows more.
     """
 
     kind: str
     default: Any = None
     choices: tuple[str, ...] = ()
     meaning: str = ""
+    sign: Sign = "any"
 
 
 Options = Mapping[str, Any]

@@ -69,6 +69,6 @@ class Contact:
 def contact_options(*, moves_in_s: float) -> dict[str, Option]:
     """Return the options that every device on a contact has."""
     return {
-        CHANNEL: Option("whole number", default=1, meaning="number of the relay in its unit"),
+        CHANNEL: Option("whole number", default=1, meaning="number of the relay in its unit", sign="positive"),
         MOVES_IN: Option("time", default=moves_in_s, meaning="time from one state to the other"),
     }

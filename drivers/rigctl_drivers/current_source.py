@@ -150,10 +150,12 @@ DRIVER = Driver(
     kind="current source",
     family=SCPI,
     options={
-        "channel": Option("whole number", default=1, meaning="number of the source in its instrument"),
-        "largest current": Option("current", default=0.2, meaning="most that the source can drive"),
-        "largest compliance": Option("voltage", default=5.0, meaning="most voltage that the source can give"),
-        "resolution": Option("current", default=10e-6, meaning="smallest step of the setpoint"),
+        "channel": Option("whole number", default=1, meaning="number of the source in its instrument", sign="positive"),
+        "largest current": Option("current", default=0.2, meaning="most that the source can drive", sign="positive"),
+        "largest compliance": Option(
+            "voltage", default=5.0, meaning="most voltage that the source can give", sign="positive"
+        ),
+        "resolution": Option("current", default=10e-6, meaning="smallest step of the setpoint", sign="positive"),
     },
     capabilities=capabilities,
     open=ScpiCurrentSource,

@@ -241,8 +241,10 @@ DRIVER = Driver(
         "travel": Option("span of angle", default=(-3600.0, 3600.0), meaning="angles that may be asked for"),
         "speed": Option("angular speed", default=20.0, meaning="speed of a move"),
         "acceleration": Option("angular acceleration", default=100.0, meaning="gain of speed in a move"),
-        "backlash": Option("angle", default=0.1, meaning="play of the gear between the two senses"),
-        "resolution": Option("angle", default=0.001, meaning="smallest step of the mount"),
+        "backlash": Option(
+            "angle", default=0.1, meaning="play of the gear between the two senses", sign="not negative"
+        ),
+        "resolution": Option("angle", default=0.001, meaning="smallest step of the mount", sign="positive"),
         "homing": Option(
             "choice",
             default=NEVER,

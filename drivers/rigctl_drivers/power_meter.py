@@ -170,15 +170,23 @@ DRIVER = Driver(
             "list of power",
             default=(2e-6, 2e-5, 2e-4, 2e-3, 2e-2),
             meaning="full scale of each range of the head",
+            sign="positive",
         ),
         "time constant": Option("time", default=10e-3, meaning="how fast the head follows the light"),
-        "noise": Option("power", default=20e-12, meaning="standard deviation of a reading on the smallest range"),
+        "noise": Option(
+            "power",
+            default=20e-12,
+            meaning="standard deviation of a reading on the smallest range",
+            sign="not negative",
+        ),
         "relative noise": Option(
             "ratio",
             default=5e-4,  # common practice for a diode on a quiet driver
             meaning="scatter of a reading that grows with the power, the source's included",
         ),
-        "saturation": Option("power", meaning="power at which the head itself saturates; default: top range"),
+        "saturation": Option(
+            "power", meaning="power at which the head itself saturates; default: top range", sign="positive"
+        ),
     },
     capabilities=capabilities,
     open=ScpiPowerMeter,

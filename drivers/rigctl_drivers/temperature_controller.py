@@ -139,8 +139,8 @@ class ScpiTemperatureController:
         hottest_c = max(self.capabilities.span_c[1], ROOM_C[1]) + BEYOND_K
         if not coldest_c <= temperature_c <= hottest_c:
             raise self._trouble(
-                f"the sensor reads {resistance_ohm:.4g} ohm, which is no temperature between {coldest_c:g} and "
-                f"{hottest_c:g} degC: it is {'open' if temperature_c < coldest_c else 'shorted'}, or another sensor",
+                f"the sensor reads {resistance_ohm:.4g} ohm, or {temperature_c:.4g} degC, which is no temperature between "
+                f"{coldest_c:g} and {hottest_c:g} degC: it is open, shorted or not the one of the rig file",
                 do="look at the sensor and its leads; compare `thermistor` in the rig file with its data sheet",
             )
         if self._is_sensor_programmed and not abs(shown_c - temperature_c) <= DISAGREE_K:
@@ -185,12 +185,16 @@ DRIVER = Driver(
     kind="temperature controller",
     family=SCPI,
     options={
-        "channel": Option("whole number", default=1, meaning="number of the controller in its instrument"),
+        "channel": Option(
+            "whole number", default=1, meaning="number of the controller in its instrument", sign="positive"
+        ),
         "thermistor": Option(
             "thermistor", meaning="constants of the sensor; default: temperatures are what the instrument shows"
         ),
         "span": Option("span of temperature", default=(5.0, 80.0), meaning="what its plant can reach"),
-        "resolution": Option("temperature difference", default=1e-3, meaning="smallest step of the setpoint"),
+        "resolution": Option(
+            "temperature difference", default=1e-3, meaning="smallest step of the setpoint", sign="positive"
+        ),
         "typical rate": Option(
             "temperature slope", default=0.05, meaning="how fast a setpoint is approached, for forecasts"
         ),

@@ -1,24 +1,28 @@
 """Whether a rig can do what a recipe asks for.
 
-It owns the checks between the two files; it opens no instrument.
+It owns which instrument stands for which role, and the order of the checks between the two files; it opens no
+instrument. Limits are no business of it: the runner holds them wherever a setpoint passes.
 """
 
 from collections.abc import Iterator, Mapping
 
 from rigctl.errors import FileError, Mistake
 from rigctl.files.mistakes import nearest_word, quoted
-from rigctl.files.recipe import Axis, Recipe
+from rigctl.files.reaching import unreachable
+from rigctl.files.recipe import Recipe
 from rigctl.files.rig import Rig
-from rigctl.interfaces import Driver, StageCapabilities
-from rigctl.quantities import format_quantity
-
-OVERSHOOT = 2.0
-"""A one-sided approach goes past its angle by so many backlashes and comes back."""
+from rigctl.interfaces import Driver
 
 
 def match(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> None:
     """Compare a recipe with a rig; raises `FileError` with places in either file."""
-    mistakes = [*_unfilled(recipe, rig), *_wrong_kinds(recipe, rig, drivers), *_too_far(recipe, rig, drivers)]
+    mistakes = [
+        *_unfilled(recipe, rig),
+        *_filled_twice(recipe, rig),
+        *_wrong_kinds(recipe, rig, drivers),
+        *_without_diode(recipe, rig, drivers),
+    ]
+    mistakes += unreachable(recipe, rig, drivers)
     if mistakes:
         raise FileError(mistakes)
 
@@ -33,6 +37,19 @@ def _unfilled(recipe: Recipe, rig: Rig) -> Iterator[Mistake]:
             yield Mistake(recipe.path, line, column, name, what, expected=expected, nearest=near)
 
 
+def _filled_twice(recipe: Recipe, rig: Rig) -> Iterator[Mistake]:
+    """An instrument may fill roles of several recipes, but not two of one."""
+    filled: dict[str, str] = {}
+    for role, name in rig.roles.items():
+        if role not in recipe.roles:
+            continue
+        if name in filled:
+            line, column = rig.place("roles", role)
+            what = f"{quoted(name)} fills the role {quoted(filled[name])} already"
+            yield Mistake(rig.path, line, column, role, what, expected=f"one role each, as {recipe.path} needs both")
+        filled[name] = role
+
+
 def _wrong_kinds(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Iterator[Mistake]:
     for name, role in recipe.roles.items():
         entry = rig.entry(name)
@@ -43,36 +60,14 @@ def _wrong_kinds(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Ite
             yield Mistake(rig.path, line, column, name, what, expected=f"a {role.kind}, as {recipe.path} asks")
 
 
-def _too_far(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Iterator[Mistake]:
-    for step_number, step in enumerate(recipe.steps):
-        for axis_number, axis in enumerate(step.sweep):
-            stage = _stage(axis.role, rig, drivers)
-            what = "" if stage is None else _beyond(axis, stage)
-            if stage is None or not what:
-                continue
-            low, high = (format_quantity(end, "angle") for end in stage.travel_deg)
-            above = ("sweep",) if recipe.places.has("sweep") else ("steps", step_number, "sweep")
-            line, column = recipe.place(*above, axis_number, axis.role)
-            expected = f"angles within its travel of {low} to {high}"
-            yield Mistake(recipe.path, line, column, axis.role, what, expected=expected)
-
-
-def _stage(role: str, rig: Rig, drivers: Mapping[str, Driver]) -> StageCapabilities | None:
-    """What the mount of a role can do; None where something else, or nothing, fills the role."""
-    entry = rig.entry(role)
-    capabilities = None if entry is None else drivers[entry.driver].capabilities(entry.options)
-    return capabilities if isinstance(capabilities, StageCapabilities) else None
-
-
-def _beyond(axis: Axis, stage: StageCapabilities) -> str:
-    """Say which end of an axis a mount cannot reach; empty where it reaches all."""
-    past = OVERSHOOT * stage.backlash_deg
-    low = min(axis.values) - (past if axis.approach == "from below" else 0.0)
-    high = max(axis.values) + (past if axis.approach == "from above" else 0.0)
-    if low >= stage.travel_deg[0] and high <= stage.travel_deg[1]:
-        return ""
-    is_low = low < stage.travel_deg[0]
-    furthest = format_quantity(low if is_low else high, "angle")
-    is_overshoot = past > 0 and axis.approach == ("from below" if is_low else "from above")
-    note = f", as its approach {axis.approach} goes past the angle and back" if is_overshoot else ""
-    return f"the mount {quoted(axis.role)} would have to go to {furthest}{note}"
+def _without_diode(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]) -> Iterator[Mistake]:
+    """Whatever drives a diode must tell which: without it, nobody knows what it may not exceed."""
+    for name, role in recipe.roles.items():
+        entry = rig.entry(name)
+        if entry is None or role.kind != "current source" or drivers[entry.driver].kind != role.kind:
+            continue
+        if rig.diode(name) is None:
+            line, column = rig.place("roles", name)
+            what = f"no diode stands on {quoted(entry.name)}, so its limits are not known"
+            expected = f"an entry under 'diodes' with 'on: {entry.name}' and its limits"
+            yield Mistake(rig.path, line, column, name, what, expected=expected)

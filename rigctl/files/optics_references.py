@@ -23,9 +23,10 @@ QUANTITIES = {
     "detector": {"stray light": "power"},
 }
 """The quantities of each kind of element, and the kind of each."""
+COEFFICIENT = "temperature coefficient"
 OWNED = {
     "dial offset": ("turned by", "an element that no mount turns has no dial offset", "'turned by', or 'axis' instead"),
-    "temperature coefficient": (
+    COEFFICIENT: (
         "warmed by", "an element that nothing warms has no temperature coefficient", "'warmed by'",
     ),
     "reference temperature": ("warmed by", "an element that nothing warms has no reference temperature", "'warmed by'"),
@@ -119,6 +120,9 @@ def _check_each(kind: str, part: Part, roles: Roles) -> None:
         elif name not in unknown and kind != "detector" and "+-" not in (part.at(name).text or ""):
             what = f"{quoted(name)} is exact, so it cannot differ"
             level.wrong_key(what, expected="a quantity that is unknown or has a tolerance")
+        if name == "retardance" and level.text == part.at("warmed by").text and COEFFICIENT in unknown:
+            what = "the coefficient follows from the retardance at each level, so both cannot be found"
+            level.wrong(what, expected="'each', or an unknown temperature coefficient")
         if level.text is not None and level.text != EACH_STEP:
             roles.use(level, "temperature controller")
 

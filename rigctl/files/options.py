@@ -12,9 +12,11 @@ from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.part import Part
 from rigctl.files.shape import noun
 from rigctl.interfaces import Option
+from rigctl.kinds import KINDS
 from rigctl.quantities import parse_quantity, parse_span
+from rigctl.thermistor import parse_thermistor
 
-_LIST, _SPAN = "list of ", "span of "
+LIST, SPAN, WHOLE = "list of ", "span of ", "whole number"
 
 
 def read_options(part: Part, table: Mapping[str, Option], *, others: Collection[str], whose: str) -> dict[str, Any]:
@@ -40,7 +42,7 @@ def _value(part: Part, option: Option) -> Any:
     if not part.is_there:
         return option.default
     parse = _parser(option)
-    if option.kind.startswith(_LIST):
+    if option.kind.startswith(LIST):
         if not part.words():
             part.wrong(f"{noun(part.value)} stands here", expected="a list with at least one entry")
         return tuple(_parsed(entry, parse) for entry in part.words())
@@ -64,10 +66,22 @@ def _parser(option: Option) -> Callable[[str], Any]:
     """Return what reads one text of an option."""
     if option.kind == "text":
         return read_text
-    if option.kind == "whole number":
-        return read_whole_number
+    if option.kind == "thermistor":
+        return parse_thermistor
     if option.kind == "choice":
         return lambda text: read_choice(text, option.choices)
-    if option.kind.startswith(_SPAN):
-        return lambda text: parse_span(text, option.kind.removeprefix(_SPAN))
-    return lambda text: parse_quantity(text, option.kind.removeprefix(_LIST))
+    if option.kind.startswith(SPAN):
+        return lambda text: parse_span(text, option.kind.removeprefix(SPAN))
+    return lambda text: _signed(text, option)
+
+
+def _signed(text: str, option: Option) -> float:
+    """Read a number or a quantity, and refuse one below what the option allows."""
+    kind = option.kind.removeprefix(LIST)
+    value = read_whole_number(text) if kind == WHOLE else parse_quantity(text, kind)
+    expected = "a number such as 1" if kind == WHOLE else KINDS[kind].phrase
+    if option.sign == "positive" and not value > 0:
+        raise QuantityError(f"{quoted(text)} is not above zero", expected=expected)
+    if option.sign == "not negative" and value < 0:
+        raise QuantityError(f"{quoted(text)} is negative", expected=expected)
+    return value

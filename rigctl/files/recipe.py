@@ -8,7 +8,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Literal
 
-from rigctl.files.places import Places
+from rigctl.files.places import Keys, Places
 from rigctl.interfaces import RoleKind
 from rigctl.quantities import Measured
 
@@ -189,6 +189,10 @@ class Recipe:
     path: str
     sha256: str
     places: Places
+
+    def keys_of_step(self, number: int) -> Keys:
+        """The keys that lead to a step in the file; a sweep alone stands in the recipe itself."""
+        return () if self.places.has("sweep") else ("steps", number)
 
     def place(self, *keys: str | int) -> tuple[int, int]:
         """Line and column of what stands under these keys of the file, or of the nearest part above it."""

@@ -3,6 +3,7 @@
 It owns the order of the checks and the way from what is written to what is meant.
 """
 
+import math
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -33,6 +34,8 @@ from rigctl.files.written_recipe import GO_ON, WrittenRecipe, WrittenRole, Writt
 from rigctl.files.written_sweep import KINDS, REPEAT, Sweep, WrittenAxis, WrittenSteady
 from rigctl.quantities import parse_measured
 
+MOST_VISITS = 1_000_000
+"""At one second a visit eleven days; a step that asks for more is a slip."""
 UNNAMED_STEP = "data"
 """The step of a recipe that has a sweep and no steps."""
 
@@ -59,7 +62,7 @@ def _recipe(document: Document, mistakes: Mistakes) -> Recipe:
     mistakes.raise_if_any()
     if written is None:
         mistakes.refuse("is no recipe")
-    return Recipe(
+    recipe = Recipe(
         title=written.recipe,
         roles={name: Role(role.kind, role.optional) for name, role in written.roles.items()},
         source=_source(written),
@@ -75,6 +78,22 @@ def _recipe(document: Document, mistakes: Mistakes) -> Recipe:
         sha256=document.sha256,
         places=document.places,
     )
+    _check_sizes(recipe, mistakes)
+    mistakes.raise_if_any()
+    return recipe
+
+
+def _check_sizes(recipe: Recipe, mistakes: Mistakes) -> None:
+    """Refuse steps that nobody could live to see end, and strides that pass over everything."""
+    for number, step in enumerate(recipe.steps):
+        keys, along = recipe.keys_of_step(number), len(step.sweep[-1].values)
+        count = math.prod(len(axis.values) for axis in step.sweep)
+        if count > MOST_VISITS:
+            expected = f"at most {MOST_VISITS} in a step"
+            mistakes.add(recipe.place(*keys, "sweep"), "sweep", f"the sweep makes {count} visits", expected=expected)
+        if step.order.kind == "interleaved" and step.order.number > along:
+            what = f"a stride of {step.order.number} passes over all {along} values of the last axis"
+            mistakes.add(recipe.place(*keys, "order"), "order", what, expected=f"interleaved {along} or less")
 
 
 def _wavelength_m(document: Document) -> float | None:
