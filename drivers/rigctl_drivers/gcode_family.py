@@ -18,6 +18,10 @@ MOST_STALE_LINES = 10_000
 STALE_ALARM = "ALARM"
 """Begins the text of a complaint that is an alarm rather than the refusal of a line."""
 
+BOARD = Opening(asserts_dtr=False, quiet_s=2.0)
+"""Boards of this kind restart when DTR is raised, some whatever is done about it, and greet within two seconds;
+common practice."""
+
 
 @dataclass(frozen=True, slots=True)
 class GcodeFamily:
@@ -26,7 +30,7 @@ class GcodeFamily:
     name: str = "G-code"
     reply_timeout_s: float = 2.0
     longest_s: float = 10.0
-    opening: Opening = Opening(asserts_dtr=False, quiet_s=2.0)
+    opening: Opening = BOARD
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         """Find the step by a report, an empty line and its `ok`, and a report with nothing before it.

@@ -21,6 +21,9 @@ MOST_COMPLAINTS = 50
 EMPTY_LINE = -102
 """What a parser that knows no empty message calls one, though IEEE 488.2-1992 allows it; met in practice."""
 
+READY_AT_ONCE = Opening()
+"""An instrument that is on stays on when its line is opened."""
+
 
 @dataclass(frozen=True, slots=True)
 class ScpiFamily:
@@ -34,7 +37,7 @@ class ScpiFamily:
     name: str = "SCPI"
     reply_timeout_s: float = 2.0
     longest_s: float = 10.0
-    opening: Opening = Opening()
+    opening: Opening = READY_AT_ONCE
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
         """Bring the instrument into step; `complaints` is its error queue, which is empty afterwards.

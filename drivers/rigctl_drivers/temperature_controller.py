@@ -139,8 +139,8 @@ class ScpiTemperatureController:
         hottest_c = max(self.capabilities.span_c[1], ROOM_C[1]) + BEYOND_K
         if not coldest_c <= temperature_c <= hottest_c:
             raise self._trouble(
-                f"the sensor reads {resistance_ohm:.4g} ohm, or {temperature_c:.4g} degC, which is no temperature between "
-                f"{coldest_c:g} and {hottest_c:g} degC: it is open, shorted or not the one of the rig file",
+                f"the sensor reads {resistance_ohm:.4g} ohm, or {temperature_c:.4g} degC, which is no temperature "
+                f"between {coldest_c:g} and {hottest_c:g} degC: it is open, shorted or not the one of the rig file",
                 do="look at the sensor and its leads; compare `thermistor` in the rig file with its data sheet",
             )
         if self._is_sensor_programmed and not abs(shown_c - temperature_c) <= DISAGREE_K:
