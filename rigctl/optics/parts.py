@@ -27,6 +27,11 @@ def at_level(address: str, label: str) -> str:
     return f"{address}{LEVEL_MARK}{label}"
 
 
+def range_key(detector: str) -> str:
+    """Key of `Visits.levels` under which the ranges of a detector are told."""
+    return f"range of {detector}"
+
+
 def base_of(address: str) -> str:
     """Address without its level."""
     return address.partition(LEVEL_MARK)[0]
@@ -154,4 +159,4 @@ class Detector:
     @property
     def range_key(self) -> str:
         """Key of `Visits.levels` under which its ranges are told."""
-        return f"range of {self.name}"
+        return range_key(self.name)

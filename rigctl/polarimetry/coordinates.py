@@ -35,6 +35,16 @@ WIDTHS: Mapping[str, float] = MappingProxyType(
         "drift": 1.0,
     }
 )
+# Between which numbers to probe for what holds at large.
+PROBES: Mapping[str, tuple[float, float]] = MappingProxyType(
+    {
+        "angle": (0.0, 180.0),
+        "retardance": (0.1, 0.4),
+        "ratio": (0.01, 0.1),
+        "fraction": (0.01, 0.1),
+        "coefficient": (1e-3, 2e-3),
+    }
+)
 TURN = 2.0 * np.pi
 Z95 = 1.959963984540054  # two-sided 95 % quantile of the normal distribution
 UNSEEN = 1e-12  # rounding of a transmission
@@ -50,18 +60,35 @@ def beyond_edge(form: str, value: float) -> float:
 
 def in_fit_forms(train: Train, visits: Visits) -> Train:
     """The train with every fitted strength in the form in which this sweep is nearly linear in it."""
-    forms = [_form(train, visits, e) for e in train.elements if train.quantities[e.strength].is_fitted]
+    forms = [q for e in train.elements if train.quantities[e.strength].is_fitted for q in _forms(train, visits, e)]
     return train.rewritten(*forms)
 
 
-def _form(train: Train, visits: Visits, element: Element) -> Quantity:
+def _forms(train: Train, visits: Visits, element: Element) -> list[Quantity]:
+    """An element's strength, at all its levels, in the form for this sweep."""
     quantity = train.quantities[element.strength]
     sees_cosine, sees_sine = _visibility(train, visits, element)
-    if quantity.kind == "ratio" and sees_cosine:
-        return replace(quantity, kind="leak", value=max(float(np.sqrt(max(quantity.value, 0.0))), LEAST_LEAK))
-    if quantity.kind == "retardance" and quantity.prior_u is None and not sees_sine:
-        return replace(quantity, kind="cosine", value=float(np.cos(TURN * quantity.value)))
-    return quantity
+    form = quantity.kind
+    if form == "ratio" and sees_cosine:
+        form = "leak"
+    elif (
+        form == "retardance" and quantity.prior_u is None and not sees_sine and not changes_with_warmth(train, element)
+    ):
+        form = "cosine"
+    return [_in_form(q, form) for q in (quantity, *train.levels_of(quantity.name))]
+
+
+def _in_form(quantity: Quantity, form: str) -> Quantity:
+    value = to_fit(form, quantity.value)
+    return replace(quantity, kind=form, value=max(value, LEAST_LEAK) if form == "leak" else value)
+
+
+def changes_with_warmth(train: Train, element: Element) -> bool:
+    """Whether an element's strength may differ between temperatures without a level for each."""
+    if element.temperature_coefficient is None:
+        return False
+    coefficient = train.quantities[element.temperature_coefficient]
+    return coefficient.is_fitted or coefficient.value != 0.0
 
 
 def _visibility(train: Train, visits: Visits, element: Element) -> tuple[bool, bool]:
@@ -82,7 +109,7 @@ def probes(train: Train) -> list[dict[str, float]]:
 def _probe(quantity: Quantity, rng: np.random.Generator) -> float:
     if quantity.prior_u is not None:
         return quantity.value + quantity.prior_u * rng.uniform(0.5, 1.0)
-    low, high = {"angle": (0.0, 180.0), "retardance": (0.1, 0.4), "ratio": (0.01, 0.1)}.get(quantity.kind, (0.1, 0.2))
+    low, high = PROBES.get(quantity.kind, (0.1, 0.2))
     return float(rng.uniform(low, high))
 
 

@@ -12,9 +12,10 @@ import numpy as np
 from rigctl.errors import UndecidedError
 from rigctl.optics.forward import readings
 from rigctl.optics.kernel import Array, Flags
-from rigctl.optics.parts import Quantity
+from rigctl.optics.parts import Quantity, range_key
 from rigctl.optics.train import Train
-from rigctl.optics.visits import Visits
+from rigctl.optics.visits import Levels, Visits
+from rigctl.polarimetry.arranging import arranged
 from rigctl.polarimetry.coordinates import WIDTHS, beyond_edge, estimate_of, in_fit_forms, to_fit, to_people
 from rigctl.polarimetry.descent import Descent, covariance, descend
 from rigctl.polarimetry.knowledge import guarded, refusals
@@ -24,7 +25,7 @@ from rigctl.polarimetry.scatter import Scatter, scatter
 from rigctl.polarimetry.split import split_chi2
 from rigctl.polarimetry.start import starts
 from rigctl.polarimetry.symmetry import Symmetries, symmetries
-from rigctl.polarimetry.variance import pooled_noise
+from rigctl.polarimetry.variance import reading_variances
 
 REWEIGHTINGS = 2  # the weights follow the fitted power, and settle in two rounds
 GUESS, SILENCE = 1e-3, 1e-9  # relative noise of dwells without scatter: at first, and at least
@@ -44,7 +45,7 @@ def fit(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Fit:
     visits
         Settings of n visits, dark ones included.
     levels
-        What each detector of the train read there.
+        What each detector read there; a detector of the train that is not among them was not read.
 
     Returns
     -------
@@ -55,22 +56,25 @@ def fit(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Fit:
     UndecidedError
         When there is no reading at all.
     """
-    problem = _problem(train, visits, levels)
-    moves = symmetries(train, visits)
+    problem = _problem(arranged(train, visits, levels.keys()), visits, levels)
+    moves = symmetries(problem.asked, visits)
     best, rivals = _search(problem, moves)
     for _ in range(REWEIGHTINGS):
         problem = guarded(_reweighted(problem, levels, best.z), best.z)
         best = descend(problem, best.z)
     chosen = moves.nearest(_people(problem, best.z))
     best = descend(problem, _fit_numbers(problem, best.z, chosen))
-    verdict = scatter(best.chi2, problem.dof, {d.name: levels[d.name] for d in train.detectors})
+    verdict = scatter(best.chi2, problem.dof, {d.name: levels[d.name] for d in problem.asked.detectors}, visits)
     return _result(problem, best, chosen, (*moves.sentences(), *rivals), verdict=verdict)
 
 
 def _problem(train: Train, visits: Visits, levels: Mapping[str, Observed]) -> Problem:
     names = [d.name for d in train.detectors]
     level_w = {name: np.where(_counts(levels[name]), levels[name].power_w, 0.0) for name in names}
-    weight = {name: _weight(levels[name], w, GUESS * float(np.max(np.abs(w)) or 1.0)) for name, w in level_w.items()}
+    weight = {
+        name: _weight(levels[name], w, visits.levels.get(range_key(name)), GUESS * float(np.max(np.abs(w)) or 1.0))
+        for name, w in level_w.items()
+    }
     problem = Problem(train, in_fit_forms(train, visits), visits, level_w, weight)
     if not problem.row_count:
         raise UndecidedError("there is no reading to fit", do="Run the recipe, or resume the run.")
@@ -81,15 +85,14 @@ def _counts(observed: Observed) -> Flags:
     return np.isfinite(observed.power_w) & (observed.n >= 1)
 
 
-def _weight(observed: Observed, mean_w: Array, silent_w: float) -> Array:
+def _weight(observed: Observed, mean_w: Array, ranges: Levels | None, silent_w: float) -> Array:
     """1 over the standard uncertainty of each mean; 0 where nothing was read.
 
-    Without any scatter within the dwells each mean is taken to be uncertain by `silent_w`.
+    On a range whose dwells show no scatter each mean is taken to be uncertain by `silent_w`.
     """
-    noise, counts = pooled_noise(observed, mean_w), _counts(observed)
-    if noise is None:
-        return np.where(counts, 1.0 / silent_w, 0.0)
-    return np.where(counts, np.sqrt(np.where(counts, observed.n, 1.0) / noise.variance_w2(mean_w)), 0.0)
+    variance_w2, counts = reading_variances(observed, mean_w, ranges), _counts(observed)
+    of_mean_w2 = np.where(np.isnan(variance_w2), silent_w**2, variance_w2 / np.where(counts, observed.n, 1.0))
+    return np.where(counts, of_mean_w2**-0.5, 0.0)
 
 
 def _silent_w(misses_w: Array, level_w: Array) -> float:
@@ -102,7 +105,8 @@ def _reweighted(problem: Problem, levels: Mapping[str, Observed], z: Array) -> P
     for name, fitted_w in readings(problem.train, problem.visits, problem.values(z)).items():
         level_w = problem.level_w[name]
         misses_w = (level_w - fitted_w)[problem.weight[name] > 0.0]
-        weight[name] = _weight(levels[name], fitted_w, _silent_w(misses_w, level_w))
+        ranges = problem.visits.levels.get(range_key(name))
+        weight[name] = _weight(levels[name], fitted_w, ranges, _silent_w(misses_w, level_w))
     return replace(problem, weight=weight)
 
 
@@ -152,7 +156,7 @@ def _people(problem: Problem, z: Array) -> dict[str, float]:
 
 def _fit_numbers(problem: Problem, z: Array, chosen: Mapping[str, float]) -> Array:
     """The numbers of the fit at the chosen solution; a cosine beyond its edge stays there."""
-    moved = {"angle", "retardance"}
+    moved = {"angle", "retardance", "coefficient"}
     return np.array(
         [to_fit(q.kind, chosen[q.name]) if q.kind in moved else v for q, v in zip(problem.fitted, z, strict=True)]
     )

@@ -4,31 +4,20 @@ It owns the judgement from the slopes alone; it never looks at a residual. A dir
 sweep tells less about it than any practitioner knew before.
 """
 
-from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from collections.abc import Sequence
 
 import numpy as np
 
 from rigctl.optics.kernel import Array
-from rigctl.optics.visits import Visits
 from rigctl.polarimetry.coordinates import estimate_of, to_people
 from rigctl.polarimetry.descent import covariance
 from rigctl.polarimetry.problem import Problem
+from rigctl.polarimetry.remedies import Remedy, remedies
 from rigctl.polarimetry.results import Coupling, Refusal
 
 SHARE = 0.1  # least part of a quantity in a blind direction that counts
 BLURRED = 30.0  # times worse than with the others known
-DARK_READINGS = 10
-TURN_STEP_DEG = 10.0
-KNOWN_WELL = 1e-3  # of what is plausible
-
-
-@dataclass(frozen=True, slots=True)
-class _Remedy:
-    """Something to do, and the problem once it is done."""
-
-    sentence: str
-    problem: Problem
+CLEARLY = 3.0  # times better known
 
 
 def blind(problem: Problem, z: Array) -> Array:
@@ -90,48 +79,13 @@ def _echelon(rows: Array) -> Array:
     return rows
 
 
-def _first_cure(problem: Problem, z: Array, unknown: Sequence[str], members: Sequence[str]) -> _Remedy | None:
+def _first_cure(problem: Problem, z: Array, unknown: Sequence[str], members: Sequence[str]) -> Remedy | None:
     """The first remedy, the most practical first, after which none of the unknowns is blind."""
-    for remedy in _remedies(problem.holding(()), z, [n for n in members if n not in unknown[:1]]):
+    for remedy in remedies(problem.holding(()), z, [n for n in members if n not in unknown[:1]]):
         shares = dict(zip(remedy.problem.names, np.linalg.norm(blind(remedy.problem, z), axis=0), strict=True))
         if all(shares[name] <= SHARE for name in unknown if name in shares):
             return remedy
     return None
-
-
-def _remedies(problem: Problem, z: Array, others: Sequence[str]) -> Iterator[_Remedy]:
-    visits = problem.visits
-    if not visits.has_dark:
-        sentence = f"Add {DARK_READINGS} readings with the beam blocked."
-        yield _Remedy(sentence, problem.extended(_dark(visits)))
-    for mount, angles in visits.angle_deg.items():
-        if not np.ptp(angles):
-            yield _Remedy(f"Add a sweep over a full turn of {mount}.", problem.extended(_turn(visits, mount)))
-        elif len(visits.angle_deg) > 1:
-            for angle_deg in (45.0, 90.0):
-                sentence = f"Repeat the sweep with {mount} {angle_deg:g} deg further."
-                yield _Remedy(sentence, problem.extended(_shifted(visits, mount, angle_deg)))
-    widths = dict(zip(problem.names, problem.widths(z), strict=True))
-    for name in others:
-        sentence = f"Measure {name} apart and state it with its tolerance in the recipe."
-        yield _Remedy(sentence, problem.told(name, KNOWN_WELL * widths[name]))
-
-
-def _dark(visits: Visits) -> Visits:
-    angles = {mount: np.full(DARK_READINGS, column[0]) for mount, column in visits.angle_deg.items()}
-    middle_h = np.full(DARK_READINGS, float(np.median(visits.time_h)))
-    return Visits(angles, np.zeros(DARK_READINGS, dtype=bool), middle_h)
-
-
-def _turn(visits: Visits, mount: str) -> Visits:
-    turn = np.arange(0.0, 360.0, TURN_STEP_DEG)
-    angles = {name: np.full(turn.size, column[0]) for name, column in visits.angle_deg.items()}
-    middle_h = np.full(turn.size, float(np.median(visits.time_h)))
-    return Visits({**angles, mount: turn}, np.ones(turn.size, dtype=bool), middle_h)
-
-
-def _shifted(visits: Visits, mount: str, angle_deg: float) -> Visits:
-    return Visits({**visits.angle_deg, mount: visits.angle_deg[mount] + angle_deg}, visits.is_open, visits.time_h)
 
 
 def _u_by_name(problem: Problem, z: Array, names: Sequence[str]) -> dict[str, float]:
@@ -148,7 +102,7 @@ def _readable_u(problem: Problem, z: Array, k: int, u: float) -> float:
 
 
 def couplings(problem: Problem, z: Array, slopes: Array) -> tuple[Coupling, ...]:
-    """The unknowns that are found, but far worse than if the others were known."""
+    """The unknowns that are found, but far worse than if the others were known, each with its remedy."""
     matrix = covariance(slopes)
     u, lengths = np.sqrt(np.diag(matrix)), np.linalg.norm(slopes, axis=0)
     correlation = np.abs(matrix) / np.outer(u, u) - np.eye(u.size)
@@ -158,5 +112,15 @@ def couplings(problem: Problem, z: Array, slopes: Array) -> tuple[Coupling, ...]
         if quantity.is_unknown and quantity.name not in problem.held and blur > BLURRED:
             readable_u = _readable_u(problem, z, k, float(u[k]))
             other = problem.names[int(np.argmax(correlation[k]))]
-            found.append(Coupling(quantity.name, readable_u, readable_u / blur, other))
+            sentence, better_u = _parting(problem, z, quantity.name, other, readable_u)
+            found.append(Coupling(quantity.name, readable_u, readable_u / blur, other, sentence, better_u))
     return tuple(found)
+
+
+def _parting(problem: Problem, z: Array, name: str, other: str, u: float) -> tuple[str, float | None]:
+    """The first remedy that makes an unknown clearly better known, and its uncertainty then."""
+    for remedy in remedies(problem, z, [other]):
+        better_u = _u_by_name(remedy.problem, z, [name])[name]
+        if better_u < u / CLEARLY:
+            return remedy.sentence, better_u
+    return "", None

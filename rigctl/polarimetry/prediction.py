@@ -10,6 +10,7 @@ import numpy as np
 from rigctl.optics.kernel import Array
 from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
+from rigctl.polarimetry.arranging import arranged
 from rigctl.polarimetry.coordinates import in_fit_forms
 from rigctl.polarimetry.descent import covariance
 from rigctl.polarimetry.fitting import estimates
@@ -29,7 +30,8 @@ def predict(train: Train, visits: Visits, var_w2: Mapping[str, Array]) -> Predic
     visits
         Settings of n visits, dark ones included.
     var_w2
-        By detector: expected variance of each visit's mean, shape (n,), W^2.
+        By detector: expected variance of each visit's mean, shape (n,), W^2; a detector of the train that is not
+        among them is not read.
 
     Returns
     -------
@@ -39,6 +41,7 @@ def predict(train: Train, visits: Visits, var_w2: Mapping[str, Array]) -> Predic
     ------
     Bound of the linearized least squares, (J'J)^-1 with slopes J in standard uncertainties.
     """
+    train = arranged(train, visits, var_w2.keys())
     weight = {d.name: 1.0 / np.sqrt(var_w2[d.name]) for d in train.detectors}
     level_w = {name: np.zeros(visits.count) for name in weight}
     bare = Problem(train, in_fit_forms(train, visits), visits, level_w, weight)

@@ -8,7 +8,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from rigctl.optics.kernel import Array
+from rigctl.optics.kernel import Array, Flags
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -28,6 +28,10 @@ class Observed:
     power_w: Array
     sd_w: Array
     n: Array
+
+    def rows(self, keep: Flags) -> "Observed":
+        """Only the visits marked in `keep`, shape (n,)."""
+        return Observed(self.power_w[keep], self.sd_w[keep], self.n[keep])
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,12 +83,27 @@ class Refusal:
 
 @dataclass(frozen=True, slots=True)
 class Coupling:
-    """An unknown that is found only poorly because another is not known well."""
+    """An unknown that is found only poorly because another is not known well.
+
+    Parameters
+    ----------
+    name, u
+        The unknown and its standard uncertainty.
+    u_if_others_known
+        What that would be if everything else were known.
+    most_blurred_with
+        The quantity it is most confused with.
+    remedy, u_with_remedy
+        The most practical way to part them, in a sentence, and the uncertainty it would give; empty and None when
+        none was found.
+    """
 
     name: str
     u: float
     u_if_others_known: float
     most_blurred_with: str
+    remedy: str = ""
+    u_with_remedy: float | None = None
 
 
 @dataclass(frozen=True, slots=True)

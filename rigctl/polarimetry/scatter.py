@@ -8,8 +8,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from rigctl.optics.parts import range_key
+from rigctl.optics.visits import Levels, Visits
 from rigctl.polarimetry.results import Observed
-from rigctl.polarimetry.variance import pooled_noise
+from rigctl.polarimetry.variance import reading_variances
 
 Z995 = 2.5758293035489004  # two-sided 99 % quantile of the normal distribution
 
@@ -77,8 +79,16 @@ class Scatter:
         return ()
 
 
-def scatter(chi2: float, dof: int, levels: Mapping[str, Observed]) -> Scatter:
-    """What chi-squared says, given the dwells."""
+def scatter(chi2: float, dof: int, levels: Mapping[str, Observed], visits: Visits) -> Scatter:
+    """What chi-squared says, given the dwells and the ranges on which they were read."""
     within = sum(float(np.sum(np.maximum(observed.n - 1, 0))) for observed in levels.values())
-    silent = tuple(name for name, observed in levels.items() if pooled_noise(observed, observed.power_w) is None)
+    silent = tuple(
+        name for name, observed in levels.items() if _is_silent(observed, visits.levels.get(range_key(name)))
+    )
     return Scatter(chi2, dof, within, silent)
+
+
+def _is_silent(observed: Observed, ranges: Levels | None) -> bool:
+    """Whether the dwells of some range, where there are any, show no scatter."""
+    read = observed.n >= 1
+    return bool(np.any(np.isnan(reading_variances(observed, observed.power_w, ranges)[read])))

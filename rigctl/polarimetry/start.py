@@ -10,13 +10,15 @@ from typing import cast
 
 import numpy as np
 
-from rigctl.optics.forward import unit_light
+from rigctl.optics.forward import level_masks, unit_light
 from rigctl.optics.kernel import Array
-from rigctl.optics.parts import DRIFT, POWER, Quantity
+from rigctl.optics.parts import DRIFT, POWER, Quantity, base_of
 from rigctl.polarimetry.problem import Problem
 
 # Coarse enough to be quick, fine enough that 1800 random fits ended as well as fits begun at the truth.
-ANGLE_STEP_DEG, RETARDANCE_STEP = 10.0, 0.05
+RETARDANCE_STEP = 0.05
+PERIODS = {"angle": (180.0, 10.0), "retardance": (1.0, RETARDANCE_STEP)}  # and step
+GRIDS = {*PERIODS, "cosine"}
 MOST_NODES = 6000
 MOST_CELLS = 400_000  # nodes x visits worked on at once
 WITHIN = 30.0  # basins worse than the best by this factor are not walked down
@@ -25,9 +27,9 @@ MOST_STARTS = 12
 
 @dataclass(frozen=True, slots=True, eq=False)
 class _Axis:
-    """One non-linear unknown of the grid; a closed axis meets its own beginning."""
+    """One non-linear unknown of the grid, at all its levels alike; a closed axis meets its own beginning."""
 
-    name: str
+    names: tuple[str, ...]
     nodes: Array
     is_closed: bool
 
@@ -36,41 +38,59 @@ def starts(problem: Problem) -> list[Array]:
     """Starting points, best first, shape (P,) each; the nominal values when no node fits at all."""
     axes = _axes(problem)
     grid = np.meshgrid(*(axis.nodes for axis in axes), indexing="ij")
-    columns = {axis.name: nodes.reshape(-1, 1) for axis, nodes in zip(axes, grid, strict=True)}
+    columns = {n: nodes.reshape(-1, 1) for axis, nodes in zip(axes, grid, strict=True) for n in axis.names}
     shape = tuple(axis.nodes.size for axis in axes)
     chi2, linear = _solve(problem, columns, int(np.prod(shape, dtype=int)))
     picked = _basins(chi2.reshape(shape), axes)
-    return [_point(problem, columns, linear, node) for node in picked] or [problem.nominal]
+    points = [({name: float(nodes[node, 0]) for name, nodes in columns.items()}, linear[node]) for node in picked]
+    return [_point(problem, *_apart(problem, axes, point)) for point in points] or [problem.nominal]
+
+
+def _apart(
+    problem: Problem, axes: list[_Axis], point: tuple[dict[str, float], Array]
+) -> tuple[dict[str, float], Array]:
+    """The same point with every level of an unknown put where it fits best, one after another."""
+    here, linear = point
+    for axis in axes:
+        for name in axis.names if len(axis.names) > 1 else ():
+            columns = {n: np.full((axis.nodes.size, 1), value) for n, value in here.items()}
+            chi2, linears = _solve(problem, {**columns, name: axis.nodes[:, None]}, axis.nodes.size)
+            best = int(np.argmin(chi2))
+            here, linear = {**here, name: float(axis.nodes[best])}, linears[best]
+    return here, linear
 
 
 def _axes(problem: Problem) -> list[_Axis]:
-    grids = {"angle", "retardance", "cosine"}
-    sought = [q for q in problem.fitted if q.kind in grids and q.prior_u is None]
+    sought: dict[str, list[Quantity]] = {}
+    for quantity in problem.fitted:
+        if quantity.kind in GRIDS and quantity.prior_u is None:
+            sought.setdefault(base_of(quantity.name), []).append(quantity)
     for widening in (1.0, 1.5, 2.0, 3.0):
         for is_near in (False, True):
-            axes = [_axis(problem, q, widening=widening, is_near=is_near) for q in sought]
+            axes = [_axis(problem, levels, widening=widening, is_near=is_near) for levels in sought.values()]
             if np.prod([axis.nodes.size for axis in axes]) <= MOST_NODES:
                 return axes
     return axes
 
 
-def _axis(problem: Problem, quantity: Quantity, *, widening: float, is_near: bool) -> _Axis:
-    if quantity.kind == "angle":
-        return _circle(quantity, 180.0, widening * ANGLE_STEP_DEG, is_near=is_near)
-    asked = problem.asked.quantities[quantity.name]
+def _axis(problem: Problem, levels: list[Quantity], *, widening: float, is_near: bool) -> _Axis:
+    names, quantity = tuple(level.name for level in levels), levels[0]
     if quantity.kind == "cosine":
         waves = np.linspace(0.0, 0.5, 1 + round(0.5 / (widening * RETARDANCE_STEP)))
-        return _Axis(quantity.name, np.cos(2.0 * np.pi * waves), is_closed=False)
-    return _circle(asked, 1.0, widening * RETARDANCE_STEP, is_near=is_near)
+        return _Axis(names, np.cos(2.0 * np.pi * waves), is_closed=False)
+    period, step = PERIODS[quantity.kind]
+    asked = problem.asked.quantities[quantity.name]
+    return _circle(names, asked, period, widening * step, is_near=is_near)
 
 
-def _circle(quantity: Quantity, period: float, step: float, *, is_near: bool) -> _Axis:
+def _circle(names: tuple[str, ...], quantity: Quantity, period: float, step: float, *, is_near: bool) -> _Axis:
     reach = 2.0 * (quantity.u or np.inf)
     if is_near and 2.0 * reach < period:
         count = 1 + 2 * int(np.ceil(reach / step))
-        return _Axis(quantity.name, quantity.value + np.linspace(-reach, reach, count), is_closed=False)
-    nodes = quantity.value + period * np.arange(round(period / step)) / round(period / step)
-    return _Axis(quantity.name, nodes, is_closed=True)
+        return _Axis(names, quantity.value + np.linspace(-reach, reach, count), is_closed=False)
+    count = 2 * round(period / step / 2.0)
+    nodes = quantity.value + period * (np.arange(count) / count - 0.5)  # of several orders the nearest
+    return _Axis(names, nodes, is_closed=True)
 
 
 def _solve(problem: Problem, columns: dict[str, Array], count: int) -> tuple[Array, Array]:
@@ -93,36 +113,52 @@ def _solve_chunk(problem: Problem, columns: dict[str, Array]) -> tuple[Array, Ar
     right += precision * centre
     linear = np.linalg.solve(normal, right[..., None])[..., 0]
     chi2 = target @ target + precision @ centre**2 - np.einsum("gl,gl->g", linear, right)
-    return np.where(linear[:, 0] > 0.0, np.maximum(chi2, 0.0), np.inf), linear
+    powers = linear[:, [base_of(q.name) == POWER for q in _linear(problem)]]
+    is_light = np.all(powers >= 0.0, axis=1) & np.any(powers > 0.0, axis=1)
+    return np.where(is_light, np.maximum(chi2, 0.0), np.inf), linear
+
+
+def _linear(problem: Problem) -> list[Quantity]:
+    """The quantities in which the readings are linear at a node, exact ones among them: power, drift, stray light."""
+    train = problem.train
+    bases = [POWER, DRIFT, *(d.stray_light for d in train.detectors)]
+    return [q for base in bases for q in train.levels_of(base) or (train.quantities[base],)]
 
 
 def _design(problem: Problem, columns: dict[str, Array]) -> tuple[Array, Array]:
-    """Columns power, power x drift, and stray light of each detector; all rows in standard uncertainties."""
-    visits, values = problem.visits, problem.values(problem.nominal)
-    nodes = cast("Mapping[str, float]", {**values, **columns})  # columns broadcast as numbers do
-    seen = unit_light(problem.train, visits, nodes)
-    detectors = problem.train.detectors
-    blocks = []
-    for k, detector in enumerate(detectors):
-        light = np.atleast_2d(seen[detector.name])
-        steady, drifting = light * (1.0 + values[DRIFT] * visits.centred_h), light * visits.centred_h
-        stray = np.zeros((len(detectors), *light.shape))
-        stray[k] = 1.0
-        block = np.stack([steady, drifting, *stray], axis=-1)
-        blocks.append(block * problem.weight[detector.name][:, None])
-    target = np.concatenate([problem.level_w[d.name] * problem.weight[d.name] for d in detectors])
+    """A column for each linear quantity, power x drift for the drift; all rows in standard uncertainties."""
+    visits, train, linear = problem.visits, problem.train, _linear(problem)
+    nodes = cast("Mapping[str, float]", {**problem.values(problem.nominal), **columns})  # columns broadcast
+    masks = level_masks(train, visits)
+    light, blocks = unit_light(train, visits, nodes), []
+    drift = train.quantities[DRIFT].value
+    for detector in train.detectors:
+        seen = np.atleast_2d(light[detector.name])
+        parts = {
+            POWER: seen * (1.0 + drift * visits.centred_h),
+            DRIFT: seen * visits.centred_h,
+            detector.stray_light: np.ones_like(seen),
+        }
+        nothing = np.zeros_like(seen)
+        block = [parts.get(base_of(q.name), nothing) * masks.get(q.name, ("", 1.0))[1] for q in linear]
+        blocks.append(np.stack(block, axis=-1) * problem.weight[detector.name][:, None])
+    target = np.concatenate([problem.level_w[d.name] * problem.weight[d.name] for d in train.detectors])
     return np.concatenate(blocks, axis=1), target
 
 
 def _linear_knowledge(problem: Problem) -> tuple[Array, Array]:
     """What is known of the linear columns beforehand: centre and precision."""
-    quantities = problem.train.quantities
     brightest_w = max(float(np.max(np.abs(level), initial=0.0)) for level in problem.level_w.values()) or 1.0
-    drift_u = brightest_w * (_u(quantities[DRIFT], 1.0) or 1e-6)
-    strays = [quantities[d.stray_light] for d in problem.train.detectors]
-    bare = [(q.value, _u(q, np.inf) or 1e-6 * brightest_w) for q in (quantities[POWER], *strays)]
-    pairs = np.array([bare[0], (0.0, drift_u), *bare[1:]])
-    return pairs[:, 0], pairs[:, 1] ** -2.0
+    pairs = [_known(q, brightest_w) for q in _linear(problem)]
+    centre, u = np.array(pairs).T
+    return centre, u**-2.0
+
+
+def _known(quantity: Quantity, brightest_w: float) -> tuple[float, float]:
+    """Centre and standard uncertainty of the column; the one of the drift is a power."""
+    if quantity.kind == "drift":
+        return 0.0, brightest_w * (_u(quantity, 1.0) or 1e-6)
+    return quantity.value, _u(quantity, np.inf) or 1e-6 * brightest_w
 
 
 def _u(quantity: Quantity, if_free: float) -> float:
@@ -148,9 +184,10 @@ def _neighbours(chi2: Array, k: int, *, is_closed: bool) -> Iterator[Array]:
         yield moved
 
 
-def _point(problem: Problem, columns: dict[str, Array], linear: Array, node: int) -> Array:
-    power, power_drift, *stray = map(float, linear[node])
-    names = [POWER, DRIFT, *(d.stray_light for d in problem.train.detectors)]
-    solved = dict(zip(names, (power, problem.train.quantities[DRIFT].value + power_drift / power, *stray), strict=True))
-    solved |= {name: float(nodes[node, 0]) for name, nodes in columns.items()}
+def _point(problem: Problem, nodes: dict[str, float], linear: Array) -> Array:
+    amounts = {q.name: float(amount) for q, amount in zip(_linear(problem), linear, strict=True)}
+    powers = [amount for name, amount in amounts.items() if base_of(name) == POWER and amount > 0.0]
+    solved = {**amounts, **nodes}
+    for name in (name for name in amounts if base_of(name) == DRIFT):
+        solved[name] = problem.train.quantities[DRIFT].value + amounts[name] / float(np.mean(powers))
     return np.array([solved.get(q.name, q.value) for q in problem.fitted])

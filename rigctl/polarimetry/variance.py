@@ -1,4 +1,4 @@
-"""The variance of a detector's readings as a function of the power, pooled over all its dwells.
+"""The variance of a detector's readings as a function of the power, pooled over all its dwells on a range.
 
 It owns the noise model var(m) = a + c m^2; it never weighs a visit by that visit's own scatter, which
 would favour the dwells that happened to look quiet.
@@ -9,6 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigctl.optics.kernel import Array
+from rigctl.optics.visits import Levels
 from rigctl.polarimetry.results import Observed
 
 PASSES = 4  # scoring steps; the weights settle to 1e-3 in three
@@ -25,6 +26,26 @@ class Noise:
     def variance_w2(self, power_w: Array) -> Array:
         """Variance of one reading at each power, W^2."""
         return self.a_w2 + self.c * np.square(power_w)
+
+
+def reading_variances(observed: Observed, mean_w: Array, ranges: Levels | None) -> Array:
+    """Variance of one reading at each visit, shape (n,), W^2; nan where no dwell of its range shows scatter.
+
+    Parameters
+    ----------
+    observed, mean_w
+        As for `pooled_noise`.
+    ranges
+        The detector's range at each visit: each has a noise of its own. None: one range.
+    """
+    index = np.zeros(mean_w.size, dtype=np.intp) if ranges is None else ranges.index
+    variance_w2 = np.full(mean_w.size, np.nan)
+    for k in np.unique(index):
+        own = index == k
+        noise = pooled_noise(observed.rows(own), mean_w[own])
+        if noise is not None:
+            variance_w2[own] = noise.variance_w2(mean_w[own])
+    return variance_w2
 
 
 def pooled_noise(observed: Observed, mean_w: Array) -> Noise | None:

@@ -154,7 +154,8 @@ def test_a_half_wave_plate_hides_the_zero_of_its_analyser() -> None:
     (refusal,) = (r for r in refusals if "part.dial offset" in r.names)
     assert set(refusal.names) == {"part.dial offset", "exit cube.dial offset"}
     assert "only a combination" in refusal.why
-    assert refusal.remedy == "Measure exit cube.dial offset apart and state it with its tolerance in the recipe."
+    assert refusal.remedy == "Add a sweep over a full turn of exit mount with part out of the beam."
+    assert 0.0 < refusal.u_with_remedy["part.dial offset"] < 0.01
 
 
 def test_an_analyser_of_poorly_known_zero_blurs_the_dial_offset_of_the_plate() -> None:
