@@ -1,140 +1,56 @@
-"""Twins on real ports, in real time: the same bytes for whoever connects.
+"""Twins on real ports, in real time: the same bytes for whoever opens them.
 
-It owns the listening sockets, on this computer's own address only, and one loop without threads. It knows no
-command; what is bounded here are the bytes kept for a client that does not read.
+It owns one loop without threads, and the choice of the port: an address of a rig file gets one of its own scheme,
+on this computer only; whatever VISA reaches is served as HiSLIP. It knows no command.
 """
 
 import selectors
-import socket
 from collections.abc import Mapping
 from types import TracebackType
+from typing import Protocol
 
-from rigctl.errors import DisconnectedError
+from rigctl.links.addresses import HislipAddress, SerialAddress, TcpAddress, VisaAddress, parse_address
 from rigctl.links.channel import Twin
+from rigctl.links.serve_hislip import HislipPort
+from rigctl.links.serve_pty import PtyPort
+from rigctl.links.serve_tcp import TcpPort
 from rigctl.timeline import Timeline
 
-_HOST = "127.0.0.1"
-_CHUNK_BYTES = 2**16
-_MOST_PENDING_BYTES = 2**20
-_FAREWELL_CHUNKS = 16
 
+class Port(Protocol):
+    """A twin where somebody can open it, at `address`."""
 
-class _Port:
-    """One twin, its listening socket, and the one client it may have."""
-
-    def __init__(self, twin: Twin, timeline: Timeline, selector: selectors.BaseSelector) -> None:
-        self._twin, self._timeline, self._selector = twin, timeline, selector
-        self._listener = socket.create_server((_HOST, 0))
-        self._listener.setblocking(False)
-        self._client: socket.socket | None = None
-        self._pending = bytearray()
-        selector.register(self._listener, selectors.EVENT_READ, self._accept)
-        self.port: int = self._listener.getsockname()[1]
+    address: str
 
     def ready_in_s(self) -> float | None:
-        """How long until the twin has bytes to fetch; None: it has none, or the client must read first."""
-        ready_s = self._twin.next_ready_s()
-        if ready_s is None or len(self._pending) > _MOST_PENDING_BYTES:
-            return None
-        return max(ready_s - self._timeline.now(), 0.0)
+        """How long until `pump` has something to do; None: until an event."""
 
     def pump(self) -> None:
-        """Fetch what the twin has ready and hand it on; without a client it is lost, as on a real line."""
-        if self.ready_in_s() == 0.0:
-            try:
-                self._pending += self._twin.take(self._timeline.now())
-            except DisconnectedError:
-                self._hang_up()
-        if self._pending:
-            self._send()
+        """Hand on what is ready."""
 
     def close(self) -> None:
-        """Close the client and the port."""
-        self._hang_up()
-        self._selector.unregister(self._listener)
-        self._listener.close()
-
-    def _accept(self, _events: int) -> None:
-        try:
-            client, _ = self._listener.accept()
-        except OSError:  # it left before it was let in
-            return
-        self._let_leave()
-        if self._client is not None:
-            client.close()
-            return
-        client.setblocking(False)
-        client.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
-        self._client = client
-        self._selector.register(client, selectors.EVENT_READ, self._serve)
-
-    def _let_leave(self) -> None:
-        """See whether the client has gone: somebody who closes and comes back at once is no second client."""
-        for _ in range(_FAREWELL_CHUNKS):
-            if not self._take_chunk():
-                return
-
-    def _serve(self, events: int) -> None:
-        if events & selectors.EVENT_READ:
-            self._take_chunk()
-
-    def _take_chunk(self) -> bool:
-        """Hand one chunk of the client's bytes to the twin; False when there is none, or no client."""
-        if self._client is None:
-            return False
-        try:
-            data = self._client.recv(_CHUNK_BYTES)
-            if data:
-                self._twin.receive(data, self._timeline.now())
-        except BlockingIOError:
-            return False
-        except (OSError, DisconnectedError):
-            data = b""
-        if not data:
-            self._hang_up()
-        return bool(data)
-
-    def _send(self) -> None:
-        if self._client is None:
-            self._pending.clear()
-            return
-        try:
-            del self._pending[: self._client.send(self._pending)]
-        except BlockingIOError:
-            pass
-        except OSError:
-            self._hang_up()
-            return
-        self._selector.modify(self._client, self._interest(), self._serve)
-
-    def _interest(self) -> int:
-        if not self._pending:
-            return selectors.EVENT_READ
-        is_full = len(self._pending) > _MOST_PENDING_BYTES
-        return selectors.EVENT_WRITE | (0 if is_full else selectors.EVENT_READ)
-
-    def _hang_up(self) -> None:
-        client, self._client = self._client, None
-        self._pending.clear()
-        if client is not None:
-            self._selector.unregister(client)
-            client.close()
+        """Close whoever is there, and the port."""
 
 
 class TwinServer:
-    """Twins by address, each on a loopback port of its own; the ports are open from construction on.
+    """Twins by address, each on a port of its own; the ports are open from construction on.
 
-    A port serves one client at a time; another one that connects is closed at once.
+    `addresses` are where they are reached, by the address that stands in the rig file. A port serves one client
+    at a time.
     """
 
     def __init__(self, twins: Mapping[str, Twin], timeline: Timeline) -> None:
         self._timeline = timeline
         self._selector = selectors.DefaultSelector()
         self._selector.register(timeline.stop.wake_fd, selectors.EVENT_READ)
-        self._ports = {address: _Port(twin, timeline, self._selector) for address, twin in twins.items()}
-        self.addresses: Mapping[str, str] = {
-            address: f"tcp://{_HOST}:{port.port}" for address, port in self._ports.items()
-        }
+        self._ports: dict[str, Port] = {}
+        try:
+            for address, twin in twins.items():
+                self._ports[address] = _opened(address, twin, timeline, self._selector)
+        except BaseException:
+            self.close()
+            raise
+        self.addresses: Mapping[str, str] = {address: port.address for address, port in self._ports.items()}
 
     def serve(self) -> None:
         """Answer until a stop is asked for."""
@@ -162,3 +78,15 @@ class TwinServer:
     def _pause_s(self) -> float | None:
         waits_s = [wait_s for port in self._ports.values() if (wait_s := port.ready_in_s()) is not None]
         return min(waits_s, default=None)
+
+
+def _opened(address: str, twin: Twin, timeline: Timeline, selector: selectors.BaseSelector) -> Port:
+    match parse_address(address):
+        case TcpAddress():
+            return TcpPort(twin, timeline, selector)
+        case SerialAddress() as line:
+            return PtyPort(twin, timeline, selector, line=line)
+        case HislipAddress() as place:
+            return HislipPort(twin, timeline, selector, device=place.device)
+        case VisaAddress():
+            return HislipPort(twin, timeline, selector, device="hislip0")

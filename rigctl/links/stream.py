@@ -53,14 +53,18 @@ class SocketStream:
         """Send all bytes."""
         left = memoryview(data)
         while left:
-            if not wait_ready(self._socket.fileno(), WRITABLE, deadline_s, self._timeline):
-                raise _takes_nothing(self._address)
-            try:
-                left = left[self._socket.send(left) :]
-            except BlockingIOError:
-                continue
-            except OSError as error:
-                raise disconnected(error, self._address) from error
+            left = left[self.write_some(left, deadline_s) :]
+
+    def write_some(self, data: bytes | memoryview, deadline_s: float) -> int:
+        """Send what the system takes, once it takes anything, and return how many bytes that were."""
+        if not wait_ready(self._socket.fileno(), WRITABLE, deadline_s, self._timeline):
+            raise _takes_nothing(self._address)
+        try:
+            return self._socket.send(data)
+        except BlockingIOError:
+            return 0
+        except OSError as error:
+            raise disconnected(error, self._address) from error
 
     def readline(self, deadline_s: float) -> bytes:
         """Return bytes up to and including the next LF."""

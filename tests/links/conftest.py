@@ -5,7 +5,7 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
-from link_peers import START, Wire, open_loopback_wire, open_tcp_wire
+from link_peers import START, Wire, open_hislip_wire, open_loopback_wire, open_serial_wire, open_tcp_wire
 
 from rigctl.timeline import VirtualTimeline, WallTimeline
 
@@ -16,15 +16,29 @@ def own_lock_files(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     return tmp_path
 
 
-@pytest.fixture(params=[open_tcp_wire, open_loopback_wire], ids=["tcp", "loopback"])
+WIRES = {
+    "tcp": open_tcp_wire,
+    "loopback": open_loopback_wire,
+    "serial": open_serial_wire,
+    "hislip": open_hislip_wire,
+}
+
+
+@pytest.fixture(params=list(WIRES))
 def wire(request: pytest.FixtureRequest) -> Iterator[Wire]:
-    with request.param() as opened:
+    with WIRES[request.param]() as opened:
         yield opened
 
 
 @pytest.fixture
 def tcp_wire() -> Iterator[Wire]:
     with open_tcp_wire() as opened:
+        yield opened
+
+
+@pytest.fixture
+def serial_wire() -> Iterator[Wire]:
+    with open_serial_wire() as opened:
         yield opened
 
 

@@ -5,20 +5,30 @@ bytes arrive, or when the test lets it), `CLOSE`, `DEAF`, a pause, or a complain
 """
 
 import contextlib
+import os
 import random
+import select
 import socket
+import tempfile
 import threading
+import tty
 from collections import deque
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
 from enum import Enum
+from pathlib import Path
+from selectors import BaseSelector, DefaultSelector
 
 from rigctl.errors import DisconnectedError
 from rigctl.links.channel import Channel
 from rigctl.links.family import Opening, Resynced
+from rigctl.links.hislip import HislipChannel
 from rigctl.links.link import Link
 from rigctl.links.loopback import LoopbackChannel
+from rigctl.links.serial import SerialChannel
+from rigctl.links.serve import Port
+from rigctl.links.serve_hislip import HislipPort
 from rigctl.links.tcp import TcpChannel
 from rigctl.timeline import Timeline, VirtualTimeline, WallTimeline
 
@@ -135,7 +145,7 @@ class NonceFamily:
     name: str = "test SCPI"
     reply_timeout_s: float = 10.0
     longest_s: float = 10.0
-    opening: Opening = Opening()
+    opening: Opening = field(default_factory=Opening)
     nonces: random.Random = field(default_factory=lambda: random.Random(1))
 
     def resync(self, channel: Channel, deadline_s: float) -> Resynced:
@@ -209,6 +219,108 @@ class PeerServer:
                 wish.set()
 
 
+class PtyPeer:
+    """A thread that lends a twin a pseudo-terminal; one that was pulled out comes back as another, of one name."""
+
+    def __init__(self, twin: ActingTwin, name: Path) -> None:
+        self._twin, self.name = twin, name
+        self._is_over = threading.Event()
+        self._wishes: deque[threading.Event] = deque()
+        self._timeline = WallTimeline()
+        self._plug_in()
+        self._thread = threading.Thread(target=self._run)
+        self._thread.start()
+
+    def release(self) -> None:
+        """Let out what is held back; returns when it has been sent."""
+        sent = threading.Event()
+        self._wishes.append(sent)
+        assert sent.wait(10.0)
+
+    def close(self) -> None:
+        self._is_over.set()
+        self._thread.join()
+        self._pull_out(self._ours, self._theirs)
+        self._timeline.stop.close()
+
+    def _plug_in(self) -> None:
+        self._ours, self._theirs = os.openpty()
+        tty.setraw(self._theirs)
+        os.set_blocking(self._ours, False)
+        self.name.unlink(missing_ok=True)
+        self.name.symlink_to(os.ttyname(self._theirs))
+
+    def _pull_out(self, *ends: int) -> None:
+        for end in ends:
+            os.close(end)
+
+    def _run(self) -> None:
+        while not self._is_over.is_set():
+            try:
+                self._serve()
+            except DisconnectedError:
+                before = self._ours, self._theirs
+                self._plug_in()  # while the old one is still there, so that the new one gets another number
+                self._pull_out(*before)
+
+    def _serve(self) -> None:
+        readable, _, _ = select.select([self._ours], [], [], 0.002)
+        if readable:
+            self._twin.receive(os.read(self._ours, 4096), self._timeline.now())
+        wish = self._wishes.popleft() if self._wishes else None
+        if wish is not None:
+            self._twin.release(self._timeline.now())
+        while (ready_s := self._twin.next_ready_s()) is not None and ready_s <= self._timeline.now():
+            self._send(self._twin.take(self._timeline.now()))
+        if wish is not None:
+            wish.set()
+
+    def _send(self, data: bytes) -> None:
+        while data:
+            _, writable, _ = select.select([], [self._ours], [], 5.0)
+            if not writable:
+                return  # nobody reads
+            data = data[os.write(self._ours, data) :]
+
+
+class PortPeer:
+    """A thread that serves a twin on a port of the product's own, and can let out what the twin holds back."""
+
+    def __init__(self, twin: ActingTwin, make_port: Callable[[ActingTwin, Timeline, BaseSelector], Port]) -> None:
+        self._twin = twin
+        self._is_over = threading.Event()
+        self._wishes: deque[threading.Event] = deque()
+        self._timeline, self._selector = WallTimeline(), DefaultSelector()
+        self._port = make_port(twin, self._timeline, self._selector)
+        self.address = self._port.address
+        self._thread = threading.Thread(target=self._run)
+        self._thread.start()
+
+    def release(self) -> None:
+        """Let out what is held back; returns when it has been sent."""
+        sent = threading.Event()
+        self._wishes.append(sent)
+        assert sent.wait(10.0)
+
+    def close(self) -> None:
+        self._is_over.set()
+        self._thread.join()
+        self._port.close()
+        self._selector.close()
+        self._timeline.stop.close()
+
+    def _run(self) -> None:
+        while not self._is_over.is_set():
+            for key, events in self._selector.select(0.002):
+                key.data(events)
+            wish = self._wishes.popleft() if self._wishes else None
+            if wish is not None:
+                self._twin.release(self._timeline.now())
+            self._port.pump()
+            if wish is not None:
+                wish.set()
+
+
 @dataclass(slots=True)
 class Wire:
     """A twin, the way to it, and a link on it."""
@@ -238,18 +350,46 @@ def open_loopback_wire() -> Iterator[Wire]:
 
 @contextlib.contextmanager
 def open_tcp_wire() -> Iterator[Wire]:
-    twin, timeline = ActingTwin(), WallTimeline()
+    twin = ActingTwin()
     server = PeerServer(twin)
     address = f"tcp://127.0.0.1:{server.port}"
+    with contextlib.closing(server), _wired(twin, address, TcpChannel, server.release) as wire:
+        yield wire
+
+
+@contextlib.contextmanager
+def open_serial_wire() -> Iterator[Wire]:
+    twin = ActingTwin()
+    peer = PtyPeer(twin, Path(tempfile.mkdtemp()) / "mount")
+    address = f"serial://{peer.name}?baud=115200"
+    with contextlib.closing(peer), _wired(twin, address, open_line, peer.release) as wire:
+        yield wire
+
+
+def open_line(address: str, timeline: Timeline) -> Channel:
+    return SerialChannel(address, timeline, Opening())
+
+
+@contextlib.contextmanager
+def open_hislip_wire() -> Iterator[Wire]:
+    twin = ActingTwin()
+    peer = PortPeer(twin, lambda *parts: HislipPort(*parts, device="hislip0"))
+    with contextlib.closing(peer), _wired(twin, peer.address, HislipChannel, peer.release) as wire:
+        yield wire
+
+
+@contextlib.contextmanager
+def _wired(
+    twin: ActingTwin, address: str, open_at: Callable[[str, Timeline], Channel], release: Callable[[], None]
+) -> Iterator[Wire]:
+    timeline, family = WallTimeline(), NonceFamily()
 
     def open_channel() -> Channel:
-        return TcpChannel(address, timeline)
+        return open_at(address, timeline)
 
-    family = NonceFamily()
     link = Link(address, open_channel, family, timeline)
     try:
-        yield Wire(twin, timeline, address, open_channel, server.release, family, link)
+        yield Wire(twin, timeline, address, open_channel, release, family, link)
     finally:
         link.close()
-        server.close()
         timeline.stop.close()

@@ -6,10 +6,22 @@ its original at once.
 """
 
 import itertools
+from collections.abc import Callable
+from contextlib import AbstractContextManager
 
+import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from link_peers import Act, Pause, Piece, Wire, open_loopback_wire, open_tcp_wire
+from link_peers import (
+    Act,
+    Pause,
+    Piece,
+    Wire,
+    open_hislip_wire,
+    open_loopback_wire,
+    open_serial_wire,
+    open_tcp_wire,
+)
 
 from rigctl.errors import FramingError, LinkTimeoutError
 
@@ -80,10 +92,13 @@ def test_a_peer_that_behaves_is_never_refused_however_it_cuts_its_answers(data: 
             assert ask(wire, number) == b"A%d" % number
 
 
-@given(st.data())
-@settings(max_examples=15, deadline=None)
-def test_over_a_real_socket_torn_and_doubled_answers_stay_with_their_questions(data: st.DataObject) -> None:
-    with open_tcp_wire() as wire:
+@pytest.mark.parametrize("open_wire", [open_tcp_wire, open_serial_wire, open_hislip_wire])
+@given(data=st.data())
+@settings(max_examples=12, deadline=None)
+def test_over_a_real_wire_torn_and_doubled_answers_stay_with_their_questions(
+    open_wire: Callable[[], AbstractContextManager[Wire]], data: st.DataObject
+) -> None:
+    with open_wire() as wire:
         for number in range(100, 106):
             copies = data.draw(st.integers(min_value=1, max_value=3))
             pauses_s = data.draw(st.lists(st.sampled_from([0.0, 0.001]), min_size=5, max_size=5))

@@ -202,6 +202,8 @@ def test_a_lost_connection_stays_lost_until_it_is_opened_again(ready: Wire) -> N
     assert b"ECHO? too early" not in ready.twin.heard
 
 
+# a serial port that is pulled out takes along what had come and was not read
+@pytest.mark.parametrize("wire", ["tcp", "loopback", "hislip"], indirect=True)
 def test_a_whole_answer_before_the_close_is_still_an_answer(ready: Wire) -> None:
     ready.twin.acts.append([b"1.5\n", CLOSE])
     answer = ready.link.exchange(b"READ?\n")
@@ -350,7 +352,7 @@ def test_what_was_said_unasked_or_too_late_can_be_looked_at_once(ready: Wire) ->
 
 
 def test_of_a_torrent_thrown_away_only_its_end_is_kept(ready: Wire) -> None:
-    ready.twin.acts.append([b"1.5\n", HOLD, b"x" * 50_000 + b"\nALARM:1\n"])
+    ready.twin.acts.append([b"1.5\n", HOLD, b"x" * 10_000 + b"\nALARM:1\n"])
     ready.link.exchange(b"READ?\n")
     ready.release()
     echo(ready, "next")

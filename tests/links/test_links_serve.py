@@ -10,7 +10,7 @@ import pytest
 from link_peers import CLOSE, ActingTwin, NonceFamily, Pause
 
 from rigctl.errors import DisconnectedError
-from rigctl.links.addresses import parse_address
+from rigctl.links.addresses import TcpAddress, parse_address
 from rigctl.links.link import Link
 from rigctl.links.serve import TwinServer
 from rigctl.links.tcp import TcpChannel
@@ -21,6 +21,7 @@ METER, SWITCH = "tcp://10.0.0.7:5025", "tcp://10.0.0.8:5025"
 
 def place_of(server: TwinServer, address: str) -> tuple[str, int]:
     found = parse_address(server.addresses[address])
+    assert isinstance(found, TcpAddress)
     return found.host, found.port
 
 
