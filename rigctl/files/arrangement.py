@@ -24,24 +24,25 @@ def train_of(recipe: Recipe, *, filled: Collection[str] | None = None) -> Train:
         the same, but nothing reads it. None: all of them.
     """
     optics = [part for part in recipe.optics if part.kind != "detector"]
-    detectors = tuple(_detectors(recipe, filled))
+    detectors = tuple(_detectors(recipe))
     quantities = [*_source_quantities(recipe)]
     for part in optics:
         quantities += _element_quantities(part)
     at_end = {part.name: part for part in recipe.optics if part.kind == "detector"}
     quantities += [_stray_light(detector.name, at_end.get(detector.name)) for detector in detectors]
-    return Train(
+    train = Train(
         elements=tuple(map(_element, optics)),
         detectors=detectors,
         quantities={quantity.name: quantity for quantity in quantities},
     )
+    return train if filled is None else train.read_by(filled)
 
 
-def _detectors(recipe: Recipe, filled: Collection[str] | None) -> Iterator[Detector]:
+def _detectors(recipe: Recipe) -> Iterator[Detector]:
     """Yield every detector in the order of the light: those of pick-offs before those at the end."""
     for part in recipe.optics:
         role = part.to or part.role
-        if role is not None and (filled is None or role in filled):
+        if role is not None:
             yield Detector(role, after=part.name if part.kind == "pick-off" else None)
 
 

@@ -5,14 +5,30 @@ It owns how one text becomes one value, and its JSON Schema; a text that will no
 
 import re
 from collections.abc import Callable, Collection, Sequence
+from dataclasses import dataclass
 from datetime import date
 from typing import Annotated, Any
 
-from pydantic import PlainValidator, ValidationInfo, WithJsonSchema
-from pydantic_core import PydanticCustomError
+from pydantic import GetCoreSchemaHandler, GetJsonSchemaHandler, ValidationInfo
+from pydantic_core import CoreSchema, PydanticCustomError
+from pydantic_core.core_schema import with_info_plain_validator_function
 
 from rigctl.errors import QuantityError
 from rigctl.files.mistakes import either, nearest_word, quoted
+from rigctl.files.patterns import (
+    ADDRESS,
+    DATE,
+    NAME,
+    SWITCH,
+    TITLE,
+    WHOLE,
+    WORD,
+    Schema,
+    choice_schema,
+    measured_schema,
+    quantity_schema,
+    span_schema,
+)
 from rigctl.kinds import KINDS
 from rigctl.links.addresses import parse_address
 from rigctl.quantities import Measured, parse_measured, parse_quantity, parse_span
@@ -21,7 +37,7 @@ LONGEST_NAME = 40
 """Characters of a name; names become parts of the run file and columns of tables."""
 LONGEST_TITLE = 200
 LABEL = f"a letter, then letters A to Z, digits, spaces or '_', at most {LONGEST_NAME} in all"
-NAME = f"a letter, then letters, digits, spaces, '-' or '_', at most {LONGEST_NAME} in all"
+NAME_RULE = f"a letter, then letters, digits, spaces, '-' or '_', at most {LONGEST_NAME} in all"
 WAVELENGTH = "wavelength_m"
 """Key of the validation context that holds the wavelength of the light, m."""
 
@@ -39,17 +55,44 @@ def _text(value: object, expected: str) -> str:
     raise wrong(f"a {'list' if isinstance(value, list) else 'mapping'} stands here", expected=expected)
 
 
-def from_text(read: Callable[[str, ValidationInfo], object], expected: str) -> PlainValidator:
-    """What `read` makes of a text; what stands in a text's place is told with what was expected."""
+@dataclass(frozen=True, slots=True, eq=False)
+class Leaf:
+    """How one text becomes one value: an annotation of a written file's model.
 
-    def validate(value: object, info: ValidationInfo) -> object:
-        text = _text(value, expected)
+    `read` raises `QuantityError` or what `wrong` makes; `expected` is told where no text stands; `schema` is the
+    JSON Schema of the text.
+    """
+
+    read: Callable[[str, ValidationInfo], object]
+    expected: str
+    schema: Schema
+
+    def validate(self, value: object, info: ValidationInfo) -> object:
+        """Read a text, and say what was expected where it will not do."""
+        text = _text(value, self.expected)
         try:
-            return read(text, info)
+            return self.read(text, info)
         except QuantityError as error:
             raise wrong(error.what, expected=error.expected, nearest=error.nearest) from error
 
-    return PlainValidator(validate, json_schema_input_type=str)
+    def __get_pydantic_core_schema__(self, source: object, handler: GetCoreSchemaHandler) -> CoreSchema:
+        """Read the text by `validate`, whatever the type of the value."""
+        return with_info_plain_validator_function(self.validate)
+
+    def __get_pydantic_json_schema__(self, core: CoreSchema, handler: GetJsonSchemaHandler) -> Schema:
+        """Describe the text."""
+        return dict(self.schema)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Shown:
+    """An example of its own for one key, in the JSON Schema of its file."""
+
+    example: str
+
+    def __get_pydantic_json_schema__(self, core: CoreSchema, handler: GetJsonSchemaHandler) -> Schema:
+        """Put the example in the place of that of the kind."""
+        return {**handler(core), "examples": [self.example]}
 
 
 def _wavelength_m(info: ValidationInfo) -> float | None:
@@ -63,7 +106,7 @@ def _check_sign(value: float, text: str, *, must_be_positive: bool, kind: str) -
         raise wrong(f"{quoted(text)} is not above zero", expected=KINDS[kind].phrase)
 
 
-def quantity(kind: str, *, is_positive: bool = False) -> PlainValidator:
+def quantity(kind: str, *, is_positive: bool = False) -> Leaf:
     """A quantity of a kind, read into its base unit."""
 
     def read(text: str, info: ValidationInfo) -> float:
@@ -71,10 +114,10 @@ def quantity(kind: str, *, is_positive: bool = False) -> PlainValidator:
         _check_sign(value, text, must_be_positive=is_positive, kind=kind)
         return value
 
-    return from_text(read, KINDS[kind].phrase)
+    return Leaf(read, KINDS[kind].phrase, quantity_schema(kind))
 
 
-def measured(kind: str, *, is_positive: bool = False) -> PlainValidator:
+def measured(kind: str, *, is_positive: bool = False) -> Leaf:
     """A quantity of a kind with its standard uncertainty, read into its base unit."""
 
     def read(text: str, info: ValidationInfo) -> Measured:
@@ -82,28 +125,24 @@ def measured(kind: str, *, is_positive: bool = False) -> PlainValidator:
         _check_sign(value.value, text, must_be_positive=is_positive, kind=kind)
         return value
 
-    return from_text(read, KINDS[kind].phrase)
+    return Leaf(read, KINDS[kind].phrase, measured_schema(kind))
 
 
-def span(kind: str) -> PlainValidator:
+def span(kind: str) -> Leaf:
     """Two ends of a kind, the lower first."""
-    return from_text(lambda text, _: parse_span(text, kind), f"a span such as 0 to {KINDS[kind].example}")
+    expected = f"a span such as 0 to {KINDS[kind].example}"
+    return Leaf(lambda text, _: parse_span(text, kind), expected, span_schema(kind))
 
 
-def choice(*words: str) -> PlainValidator:
+def choice(*words: str) -> Leaf:
     """One of a few words."""
-    return from_text(lambda text, _: read_choice(text, words), either(words))
-
-
-def shown(example: str) -> WithJsonSchema:
-    """Describe a text in the JSON Schema of its file; other readers see a number or a truth value in some."""
-    return WithJsonSchema({"type": ["string", "number", "boolean"], "examples": [example]})
+    return Leaf(lambda text, _: read_choice(text, words), either(words), choice_schema(words))
 
 
 def read_name(text: str) -> str:
     """Return a name of an element, role or step; refuse characters that would end an address or a path."""
     if not re.fullmatch(r"[^\W\d_][\w -]*", text) or len(text) > LONGEST_NAME or text != text.strip():
-        raise wrong(f"{quoted(text)} is no name", expected=NAME)
+        raise wrong(f"{quoted(text)} is no name", expected=NAME_RULE)
     return text
 
 
@@ -174,10 +213,12 @@ def exactly_one(names: Sequence[str], given: Sequence[str], *, key: str = "") ->
         raise wrong(what, expected=f"exactly one of {either(map(quoted, names))}", key=key)
 
 
-NameText = Annotated[str, from_text(lambda text, _: read_name(text), "a name"), shown("entry polarizer")]
-TitleText = Annotated[str, from_text(_read_title, "a title"), shown("quarter-wave plate")]
-SwitchText = Annotated[bool, from_text(_read_switch, "true or false"), shown("true")]
-DateText = Annotated[date, from_text(_read_date, "a date"), shown("2027-03-01")]
-WholeText = Annotated[int, from_text(lambda text, _: read_whole_number(text), "a whole number"), shown("7")]
-WordText = Annotated[str, from_text(lambda text, _: read_text(text), "a word"), shown("part")]
-AddressText = Annotated[str, from_text(lambda text, _: read_address(text), "an address"), shown("tcp://10.0.0.7:5025")]
+NameText = Annotated[str, Leaf(lambda text, _: read_name(text), "a name", NAME), Shown("entry polarizer")]
+TitleText = Annotated[str, Leaf(_read_title, "a title", TITLE)]
+SwitchText = Annotated[bool, Leaf(_read_switch, "true or false", SWITCH)]
+DateText = Annotated[date, Leaf(_read_date, "a date", DATE), Shown("2027-03-01")]
+WholeText = Annotated[int, Leaf(lambda text, _: read_whole_number(text), "a whole number", WHOLE), Shown("7")]
+WordText = Annotated[str, Leaf(lambda text, _: read_text(text), "a word", WORD)]
+AddressText = Annotated[
+    str, Leaf(lambda text, _: read_address(text), "an address", ADDRESS), Shown("tcp://10.0.0.7:5025")
+]

@@ -5,9 +5,9 @@ It owns the shape of each element; what elements mean for each other is checked 
 
 from typing import Annotated
 
-from pydantic import BeforeValidator, Field, model_validator
+from pydantic import BeforeValidator, ConfigDict, Field, model_validator
 
-from rigctl.files.leaves import NameText, WordText, exactly_one, measured, quantity, shown
+from rigctl.files.leaves import NameText, Shown, WordText, exactly_one, measured, quantity
 from rigctl.files.recipe import ElementKind
 from rigctl.files.written import Words, Written
 from rigctl.quantities import Measured
@@ -15,21 +15,21 @@ from rigctl.quantities import Measured
 PICK_OFF = "pick-off"
 """Name of a pick-off that has none of its own: most benches have one."""
 
-Angle = Annotated[float, quantity("angle"), shown("90 deg")]
-Temperature = Annotated[float, quantity("temperature"), shown("25 degC")]
-MeasuredAngle = Annotated[Measured, measured("angle"), shown("0 deg +- 5 deg")]
-MeasuredRatio = Annotated[Measured, measured("ratio"), shown("1000:1 +- 30 %")]
-MeasuredFraction = Annotated[Measured, measured("ratio", is_positive=True), shown("4 %")]
-MeasuredRetardance = Annotated[Measured, measured("retardance"), shown("0.25 waves")]
-MeasuredStray = Annotated[Measured, measured("power"), shown("20 nW")]
-MeasuredCoefficient = Annotated[Measured, measured("coefficient"), shown("-100 ppm/K +- 50 ppm/K")]
+Angle = Annotated[float, quantity("angle"), Shown("90 deg")]
+Temperature = Annotated[float, quantity("temperature"), Shown("25 degC")]
+MeasuredAngle = Annotated[Measured, measured("angle"), Shown("0 deg +- 5 deg")]
+MeasuredRatio = Annotated[Measured, measured("ratio"), Shown("1000:1 +- 30 %")]
+MeasuredFraction = Annotated[Measured, measured("ratio", is_positive=True), Shown("4 %")]
+MeasuredRetardance = Annotated[Measured, measured("retardance"), Shown("0.25 waves")]
+MeasuredStray = Annotated[Measured, measured("power"), Shown("20 nW")]
+MeasuredCoefficient = Annotated[Measured, measured("coefficient"), Shown("-100 ppm/K +- 50 ppm/K")]
 
 
 class WrittenFlip(Written):
     """At which angles a rotation stage holds an element in the beam and out of it; a slide knows by itself."""
 
-    in_: Annotated[Angle | None, Field(alias="in")] = None
-    out: Angle | None = None
+    in_: Annotated[Angle | None, Field(description="angle at which the element is in the beam", alias="in")] = None
+    out: Angle | None = Field(None, description="angle at which it is out of the beam")
 
 
 def _takers(value: object) -> object:
@@ -48,47 +48,57 @@ Each = dict[str, WordText]
 class WrittenPlate(Written):
     """An element in the beam, fixed or turned."""
 
-    name: NameText
-    turned_by: WordText | None = None
-    axis: MeasuredAngle | None = None
-    dial_offset: MeasuredAngle | None = None
-    taken_out_by: Takers | None = None
-    unknown: Words = Field(default_factory=list)
-    each: Each = Field(default_factory=dict)
+    name: NameText = Field(description="name of the element, for addresses such as part.retardance")
+    turned_by: WordText | None = Field(None, description="role of the mount that turns it")
+    axis: MeasuredAngle | None = Field(None, description="its axis in the light, or on its mount at dial 0")
+    dial_offset: MeasuredAngle | None = Field(None, description="dial angle at which its axis is at 0")
+    taken_out_by: Takers | None = Field(
+        None, description="role of the slide or mount that takes it out of the beam; otherwise somebody does"
+    )
+    unknown: Words = Field(default_factory=list, description="quantities that are to be found")
+    each: Each = Field(
+        default_factory=dict, description="quantities found anew at each level of a role, or in each step"
+    )
 
 
 class WrittenPolarizer(WrittenPlate):
     """A polarizer."""
 
-    extinction_ratio: MeasuredRatio
+    extinction_ratio: MeasuredRatio = Field(description="parallel over crossed transmission")
 
 
 class WrittenRetarder(WrittenPlate):
     """A retarder; its retardance may go with the temperature of what warms it."""
 
-    retardance: MeasuredRetardance
-    warmed_by: WordText | None = None
-    temperature_coefficient: MeasuredCoefficient | None = None
-    reference_temperature: Temperature | None = None
+    retardance: MeasuredRetardance = Field(description="retardance, in waves, deg or nm")
+    warmed_by: WordText | None = Field(None, description="role of what sets its temperature")
+    temperature_coefficient: MeasuredCoefficient | None = Field(
+        None, description="relative change of the retardance per kelvin"
+    )
+    reference_temperature: Temperature | None = Field(
+        None, description="temperature of the stated retardance; 25 degC where it is left out"
+    )
 
 
 class WrittenPickOff(Written):
     """What sends a part of the light to a power meter of its own, and lets the rest go on."""
 
-    name: NameText = PICK_OFF
-    to: WordText
-    fraction: MeasuredFraction
-    unknown: Words = Field(default_factory=list)
-    each: Each = Field(default_factory=dict)
+    name: NameText = Field(PICK_OFF, description="name of the pick-off, where there are several")
+    to: WordText = Field(description="role of the power meter that gets the light")
+    fraction: MeasuredFraction = Field(description="part of the light that is sent there")
+    unknown: Words = Field(default_factory=list, description="fraction, where it is to be found")
+    each: Each = Field(
+        default_factory=dict, description="fraction, found anew at each level of a role, or in each step"
+    )
 
 
 class WrittenDetector(Written):
     """A detector, at the end of the light's way."""
 
-    role: WordText
-    stray_light: MeasuredStray | None = None
-    unknown: Words = Field(default_factory=list)
-    each: Each = Field(default_factory=dict)
+    role: WordText = Field(description="role of the power meter")
+    stray_light: MeasuredStray | None = Field(None, description="light that reaches it beside the beam")
+    unknown: Words = Field(default_factory=list, description="stray light, where it is to be reported")
+    each: Each = Field(default_factory=dict, description="stray light, found anew in each step")
 
 
 WrittenPart = WrittenPolarizer | WrittenRetarder | WrittenPickOff | WrittenDetector
@@ -96,6 +106,8 @@ WrittenPart = WrittenPolarizer | WrittenRetarder | WrittenPickOff | WrittenDetec
 
 class WrittenElement(Written):
     """One entry of the optics: its kind is its only key."""
+
+    model_config = ConfigDict(json_schema_extra={"minProperties": 1, "maxProperties": 1})
 
     polarizer: WrittenPolarizer | None = None
     retarder: WrittenRetarder | None = None

@@ -11,12 +11,12 @@ from pydantic import ConfigDict, Field
 from rigctl.files.leaves import (
     AddressText,
     DateText,
+    Shown,
     TitleText,
     WholeText,
     WordText,
     choice,
     quantity,
-    shown,
     span,
 )
 from rigctl.files.rig import OnStop
@@ -25,59 +25,63 @@ from rigctl.files.written import Written
 LABEL_CLASSES = ("1", "1C", "1M", "2", "2M", "3R", "3B", "4", "I", "II", "IIa", "IIIa", "IIIb", "IV")
 """Laser classes of IEC 60825-1, edition 3, and of 21 CFR 1040.10, as labels show them; from memory."""
 
-Power = Annotated[float, quantity("power", is_positive=True), shown("5 mW")]
-Ratio = Annotated[float, quantity("ratio", is_positive=True), shown("3 %")]
-Number = Annotated[float, quantity("number", is_positive=True), shown("2")]
+Power = Annotated[float, quantity("power", is_positive=True), Shown("5 mW")]
+Ratio = Annotated[float, quantity("ratio", is_positive=True), Shown("3 %")]
+Number = Annotated[float, quantity("number", is_positive=True), Shown("2")]
 
 
-Current = Annotated[float, quantity("current", is_positive=True), shown("45 mA")]
-Voltage = Annotated[float, quantity("voltage", is_positive=True), shown("2.5 V")]
-Temperature = Annotated[float, quantity("temperature"), shown("22 degC")]
-TemperatureSpan = Annotated[tuple[float, float], span("temperature"), shown("10 degC to 40 degC")]
-LabelText = Annotated[str, choice(*LABEL_CLASSES), shown("3B")]
-OnStopText = Annotated[OnStop, choice(*get_args(OnStop)), shown("keep regulating")]
+Current = Annotated[float, quantity("current", is_positive=True), Shown("45 mA")]
+Voltage = Annotated[float, quantity("voltage", is_positive=True), Shown("2.5 V")]
+Temperature = Annotated[float, quantity("temperature"), Shown("22 degC")]
+TemperatureSpan = Annotated[tuple[float, float], span("temperature"), Shown("10 degC to 40 degC")]
+LabelText = Annotated[str, choice(*LABEL_CLASSES), Shown("3B")]
+OnStopText = Annotated[OnStop, choice(*get_args(OnStop)), Shown("keep regulating")]
 
 
 class WrittenLimits(Written):
     """What an instrument may not exceed; which of the keys it has depends on its kind."""
 
-    power: Power | None = None
-    current: Current | None = None
-    compliance: Voltage | None = None
-    temperature: TemperatureSpan | None = None
+    power: Power | None = Field(None, description="largest power on a power meter")
+    current: Current | None = Field(None, description="largest current of a source")
+    compliance: Voltage | None = Field(None, description="largest compliance voltage of a source")
+    temperature: TemperatureSpan | None = Field(None, description="lowest and highest setpoint of a controller")
 
 
 class WrittenDiodeLimits(Written):
     """What a diode may not exceed; without a largest current it is not driven at all."""
 
-    current: Current
-    power: Power | None = None
-    compliance: Voltage | None = None
-    temperature: TemperatureSpan | None = None
+    current: Current = Field(description="largest current")
+    power: Power | None = Field(None, description="largest power")
+    compliance: Voltage | None = Field(None, description="largest voltage")
+    temperature: TemperatureSpan | None = Field(
+        None, description="lowest and highest temperature at which it is driven"
+    )
 
 
 class WrittenDiode(Written):
     """A diode on a current source."""
 
-    on: WordText
-    limits: WrittenDiodeLimits
-    class_on_label: LabelText
+    on: WordText = Field(description="current source that drives it")
+    limits: WrittenDiodeLimits = Field(description="what it may not exceed")
+    class_on_label: LabelText = Field(
+        description="laser class printed on its label, or on that of the laser it is built into"
+    )
 
 
 class WrittenRoom(Written):
     """The air around the bench."""
 
-    humidity: Ratio
-    temperature: Temperature
+    humidity: Ratio = Field(description="relative humidity")
+    temperature: Temperature = Field(description="temperature of the air")
 
 
 class WrittenCalibration(Written):
     """What a certificate says."""
 
-    certificate: WordText
-    due: DateText
-    expanded_uncertainty: Ratio
-    coverage_factor: Number
+    certificate: WordText = Field(description="number of the certificate")
+    due: DateText = Field(description="when the next calibration is due")
+    expanded_uncertainty: Ratio = Field(description="relative expanded uncertainty")
+    coverage_factor: Number = Field(description="its coverage factor")
 
 
 class WrittenInstrument(Written):
@@ -85,10 +89,10 @@ class WrittenInstrument(Written):
 
     model_config = ConfigDict(extra="allow")
 
-    driver: WordText
-    at: AddressText
-    limits: WrittenLimits | None = None
-    calibration: WrittenCalibration | None = None
+    driver: WordText = Field(description="name of an installed driver")
+    at: AddressText = Field(description="address")
+    limits: WrittenLimits | None = Field(None, description="what it may not exceed")
+    calibration: WrittenCalibration | None = Field(None, description="what its certificate says")
 
 
 class WrittenSimulated(Written):
@@ -96,16 +100,18 @@ class WrittenSimulated(Written):
 
     model_config = ConfigDict(extra="allow")
 
-    seed: WholeText | None = None
+    seed: WholeText | None = Field(None, description="number from which a rehearsal draws its chances")
 
 
 class WrittenRig(Written):
     """A whole rig file."""
 
-    rig: TitleText
-    instruments: Annotated[dict[str, WrittenInstrument], Field(min_length=1)]
-    diodes: dict[str, WrittenDiode] = Field(default_factory=dict)
-    roles: dict[str, WordText]
-    on_stop: dict[str, OnStopText] = Field(default_factory=dict)
-    room: WrittenRoom | None = None
-    simulated: WrittenSimulated = Field(default_factory=WrittenSimulated)
+    rig: TitleText = Field(description="title")
+    instruments: dict[str, WrittenInstrument] = Field(min_length=1, description="instruments by name")
+    diodes: dict[str, WrittenDiode] = Field(default_factory=dict, description="laser diodes by name")
+    roles: dict[str, WordText] = Field(description="which instrument fills which role of the recipes")
+    on_stop: dict[str, OnStopText] = Field(default_factory=dict, description="what controllers do at the end")
+    room: WrittenRoom | None = Field(None, description="air around the bench")
+    simulated: WrittenSimulated = Field(
+        default_factory=WrittenSimulated, description="how the simulated bench differs from a good one"
+    )

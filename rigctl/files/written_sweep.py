@@ -4,14 +4,25 @@ It owns the shape of each. How a value reads depends on the kind of its role, so
 context of the validation.
 """
 
+from dataclasses import dataclass
 from typing import Annotated, Any, cast, get_args
 
-from pydantic import Field, ValidationInfo, ValidatorFunctionWrapHandler, WrapValidator, model_validator
+from pydantic import (
+    ConfigDict,
+    Field,
+    GetJsonSchemaHandler,
+    ValidationInfo,
+    ValidatorFunctionWrapHandler,
+    WrapValidator,
+    model_validator,
+)
+from pydantic_core import CoreSchema
 
 from rigctl.errors import QuantityError
 from rigctl.files.ladders import QUANTITY, STEP_QUANTITY, joined, there_and_back, values_of
-from rigctl.files.leaves import SwitchText, choice, exactly_one, from_text, quantity, shown, wrong
+from rigctl.files.leaves import Leaf, Shown, SwitchText, choice, exactly_one, quantity, wrong
 from rigctl.files.mistakes import quoted
+from rigctl.files.patterns import COUNT, Schema, one_of, quantity_schema, span_schema
 from rigctl.files.recipe import Approach, AxisKind
 from rigctl.files.written import Written
 from rigctl.quantities import parse_quantity, parse_span
@@ -24,6 +35,7 @@ REPEAT = "repeat"
 """An axis that sets nothing and takes its visits anew."""
 ANY: tuple[AxisKind, ...] = ("angle", "temperature", "current")
 """Kinds that are tried where the role is not known: the unit tells."""
+STOPS, GAPS = [QUANTITY[kind] for kind in ANY], [STEP_QUANTITY[kind] for kind in ANY]
 KEYS: dict[str, tuple[AxisKind, str]] = {
     "turn": ("angle", "a mount"),
     "start": ("angle", "a mount"),
@@ -71,27 +83,29 @@ def _read_reach(text: str, info: ValidationInfo) -> tuple[float, float]:
     return low, high
 
 
-Stop = Annotated[float, from_text(_read_stop, "a value such as 5 deg"), shown("5 deg")]
-Gap = Annotated[float, from_text(_read_step, "a step such as 5 deg"), shown("5 deg")]
-Reach = Annotated[tuple[float, float], from_text(_read_reach, "a span such as 0 to 90 deg"), shown("0 deg to 90 deg")]
-Angle = Annotated[float, quantity("angle"), shown("0 deg")]
-Number = Annotated[float, quantity("number", is_positive=True), shown("1")]
-Duration = Annotated[float, quantity("time"), shown("150 ms")]
-Time = Annotated[float, quantity("time", is_positive=True), shown("15 min")]
-Within = Annotated[float, quantity("temperature difference", is_positive=True), shown("0.05 K")]
-Slope = Annotated[float, quantity("temperature slope"), shown("0.01 K/min")]
-Ramp = Annotated[float, quantity("current slope"), shown("5 mA/s")]
-ApproachText = Annotated[Approach, choice(*get_args(Approach)), shown("from below")]
+Stop = Annotated[float, Leaf(_read_stop, "a value such as 5 deg", quantity_schema(*STOPS)), Shown("5 deg")]
+Gap = Annotated[float, Leaf(_read_step, "a step such as 5 deg", quantity_schema(*GAPS)), Shown("5 deg")]
+Reach = Annotated[
+    tuple[float, float], Leaf(_read_reach, "a span such as 0 to 90 deg", span_schema(*STOPS)), Shown("0 deg to 90 deg")
+]
+Angle = Annotated[float, quantity("angle"), Shown("0 deg")]
+Number = Annotated[float, quantity("number", is_positive=True), Shown("1")]
+Duration = Annotated[float, quantity("time"), Shown("150 ms")]
+Time = Annotated[float, quantity("time", is_positive=True), Shown("15 min")]
+Within = Annotated[float, quantity("temperature difference", is_positive=True), Shown("0.05 K")]
+Slope = Annotated[float, quantity("temperature slope"), Shown("0.01 K/min")]
+Ramp = Annotated[float, quantity("current slope"), Shown("5 mA/s")]
+ApproachText = Annotated[Approach, choice(*get_args(Approach)), Shown("from below")]
 Stops = Annotated[list[Stop], Field(min_length=1)]
 
 
 class WrittenSteady(Written):
     """When a temperature counts as reached."""
 
-    within: Within
-    slope: Slope | None = None
-    for_: Annotated[Time, Field(alias="for")]
-    give_up_after: Time
+    within: Within = Field(description="how near the setpoint the temperature stays")
+    slope: Slope | None = Field(None, description="how little it may rise or fall")
+    for_: Annotated[Time, Field(description="for how long", alias="for")]
+    give_up_after: Time = Field(description="when to give up")
 
     @model_validator(mode="after")
     def _can_be_reached(self) -> "WrittenSteady":
@@ -104,10 +118,12 @@ class WrittenSteady(Written):
 class WrittenSegment(Written):
     """One piece of an axis."""
 
-    values: Stops | None = None
-    range: Reach | None = None
-    step: Gap | None = None
-    there_and_back: SwitchText = False
+    model_config = ConfigDict(json_schema_extra=one_of("values", "range"))
+
+    values: Stops | None = Field(None, description="values one by one")
+    range: Reach | None = Field(None, description="both ends, which are visited")
+    step: Gap | None = Field(None, description="step within the range")
+    there_and_back: SwitchText = Field(False, description="whether the same way back follows")
 
     @model_validator(mode="after")
     def _has_values(self, info: ValidationInfo) -> "WrittenSegment":
@@ -123,17 +139,21 @@ class WrittenSegment(Written):
 class WrittenAxis(Written):
     """The values of one role in a sweep, and how it gets to each."""
 
-    turn: Number | None = None
-    values: Stops | None = None
-    range: Reach | None = None
-    step: Gap | None = None
-    start: Angle | None = None
-    segments: Annotated[list[WrittenSegment], Field(min_length=1)] | None = None
-    there_and_back: SwitchText = False
-    approach: ApproachText = "either"
-    settle: Duration = 0.0
-    steady: WrittenSteady | None = None
-    ramp: Ramp | None = None
+    model_config = ConfigDict(json_schema_extra=one_of("turn", "values", "range", "segments"))
+
+    turn: Number | None = Field(None, description="whole turns; the end is left out")
+    values: Stops | None = Field(None, description="values one by one")
+    range: Reach | None = Field(None, description="both ends, which are visited")
+    step: Gap | None = Field(None, description="step within the turn or range")
+    start: Angle | None = Field(None, description="first angle of a turn")
+    segments: Annotated[list[WrittenSegment], Field(min_length=1)] | None = Field(
+        None, description="ranges one after another, each with its own step"
+    )
+    there_and_back: SwitchText = Field(False, description="whether the same way back follows")
+    approach: ApproachText = Field("either", description="from which side a mount comes to each angle")
+    settle: Duration = Field(0.0, description="how long to wait after each move")
+    steady: WrittenSteady | None = Field(None, description="when a temperature counts as reached")
+    ramp: Ramp | None = Field(None, description="how fast a current changes")
 
     @model_validator(mode="after")
     def _has_values(self, info: ValidationInfo) -> "WrittenAxis":
@@ -157,10 +177,10 @@ class WrittenAxis(Written):
 class WrittenPreparation(Written):
     """What a role is set to before the steps."""
 
-    to: Stop
-    steady: WrittenSteady | None = None
-    ramp: Ramp | None = None
-    warm_up: Annotated[Duration, Field(alias="warm-up")] = 0.0
+    to: Stop = Field(description="temperature or current to set")
+    steady: WrittenSteady | None = Field(None, description="when a temperature counts as reached")
+    ramp: Ramp | None = Field(None, description="how fast a current changes")
+    warm_up: Annotated[Duration, Field(description="how long to wait once it is there", alias="warm-up")] = 0.0
 
     @model_validator(mode="after")
     def _has_its_keys(self, info: ValidationInfo) -> "WrittenPreparation":
@@ -196,9 +216,20 @@ def _numbers(value: object) -> list[str]:
     return [str(number) for number in range(1, round(count) + 1)]
 
 
-Entry = Annotated[dict[str, WrittenAxis], WrapValidator(_typed)]
+@dataclass(frozen=True, slots=True, eq=False)
+class _OneKey:
+    """An entry with one key: in the JSON Schema, where some keys may differ from the others."""
+
+    others: Schema
+
+    def __get_pydantic_json_schema__(self, core: CoreSchema, handler: GetJsonSchemaHandler) -> Schema:
+        """Say that one key stands here."""
+        return {**handler(core), "minProperties": 1, "maxProperties": 1, "properties": self.others}
+
+
+Entry = Annotated[dict[str, WrittenAxis], WrapValidator(_typed), _OneKey({REPEAT: COUNT})]
 Sweep = Annotated[list[Entry], Field(min_length=1)]
 Preparations = Annotated[
-    list[Annotated[dict[str, WrittenPreparation], WrapValidator(_typed)]],
+    list[Annotated[dict[str, WrittenPreparation], WrapValidator(_typed), _OneKey({})]],
     Field(min_length=1),
 ]
