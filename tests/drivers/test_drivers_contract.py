@@ -1,11 +1,14 @@
-"""Every driver against the twin of its kind, in virtual time and over TCP."""
+"""Every driver against the twin of its kind: in virtual time, over TCP, and at a pseudo-terminal."""
 
+import itertools
 import statistics
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
+from importlib.metadata import entry_points
 
 import pytest
 from scripted_twin import with_defaults
-from twin_places import LIGHT_W, Place, Transport, meter_twin, mount_twin, place, switch_twin
+from twin_places import Place, Transport, place
+from twin_table import DRIVERS, LIGHT_W, meter_twin, mount_twin, switch_twin
 
 from rigctl.errors import (
     LinkError,
@@ -14,31 +17,16 @@ from rigctl.errors import (
     StopRequestedError,
     WrongInstrumentError,
 )
-from rigctl.interfaces import Driver, Flag, Instrument, Options
-from rigctl.links.channel import Twin
-from rigctl_drivers import gcode, power_meter, switch
+from rigctl.interfaces import Flag, Instrument
+from rigctl_drivers import gcode, power_meter, relay, slide, switch
 from rigctl_drivers.gcode import AT_START, CLOCKWISE, GcodeRotary
 from rigctl_drivers.power_meter import ScpiPowerMeter
+from rigctl_drivers.relay import ScpiRelay
+from rigctl_drivers.slide import ScpiSlide
 from rigctl_drivers.switch import ScpiSwitch
 
-FAST_DEG_PER_S = 2000.0
-"""So that a test in real time takes milliseconds."""
-
-DRIVERS: dict[str, tuple[Driver, Callable[[], Twin], Options]] = {
-    "gcode-rotary": (
-        gcode.DRIVER,
-        lambda: mount_twin(FAST_DEG_PER_S),
-        with_defaults(dict(gcode.DRIVER.options), speed=FAST_DEG_PER_S, acceleration=10.0 * FAST_DEG_PER_S),
-    ),
-    "scpi-power-meter": (power_meter.DRIVER, meter_twin, with_defaults(dict(power_meter.DRIVER.options))),
-    "scpi-switch": (switch.DRIVER, switch_twin, with_defaults(dict(switch.DRIVER.options), channel=3)),
-}
-
-
-@pytest.fixture(params=["loopback", "TCP"])
-def transport(request: pytest.FixtureRequest) -> Transport:
-    found: Transport = request.param
-    return found
+SCPI_KINDS = ("scpi-current-source", "scpi-power-meter", "scpi-switch", "scpi-temperature-controller")
+"""Drivers whose instruments differ; slides and relays are of the unit that switches shutters too."""
 
 
 @pytest.fixture(params=list(DRIVERS))
@@ -48,31 +36,35 @@ def name(request: pytest.FixtureRequest) -> str:
 
 @pytest.fixture
 def opened(transport: Transport, name: str) -> Iterator[tuple[Place, Instrument]]:
-    driver, make_twin, options = DRIVERS[name]
-    with place(transport, driver, make_twin()) as at:
-        yield at, at.open(driver, options)
+    entry = DRIVERS[name]
+    with place(transport, entry.driver, entry.make_twin()) as at:
+        yield at, at.open(entry.driver, entry.options)
 
 
 def mount_at(at: Place, **options: object) -> GcodeRotary:
-    return GcodeRotary(at.link, {**DRIVERS["gcode-rotary"][2], **options})
+    return GcodeRotary(at.link, {**DRIVERS["gcode-rotary"].options, **options})
 
 
 @pytest.fixture
 def mount_place(transport: Transport) -> Iterator[Place]:
-    with place(transport, gcode.DRIVER, mount_twin(FAST_DEG_PER_S)) as at:
+    with place(transport, gcode.DRIVER, mount_twin()) as at:
         yield at
 
 
 @pytest.fixture
 def meter(transport: Transport) -> Iterator[tuple[Place, ScpiPowerMeter]]:
-    driver, make_twin, options = DRIVERS["scpi-power-meter"]
-    with place(transport, driver, make_twin()) as at:
-        yield at, ScpiPowerMeter(at.link, options)
+    entry = DRIVERS["scpi-power-meter"]
+    with place(transport, entry.driver, entry.make_twin()) as at:
+        yield at, ScpiPowerMeter(at.link, entry.options)
+
+
+def test_every_driver_that_is_installed_is_under_contract() -> None:
+    assert set(DRIVERS) == {point.name for point in entry_points(group="rigctl.drivers")}
 
 
 def test_the_driver_bears_its_name_and_is_found_by_it(name: str) -> None:
-    assert DRIVERS[name][0].name == name
-    assert DRIVERS[name][0].meaning
+    assert DRIVERS[name].driver.name == name
+    assert DRIVERS[name].driver.meaning
 
 
 def test_a_twin_says_that_it_is_simulated(opened: tuple[Place, Instrument]) -> None:
@@ -125,23 +117,20 @@ def test_a_stop_request_ends_a_question_and_the_next_one_is_answered_right(
         assert instrument.identify() == before
 
 
-@pytest.mark.parametrize(
-    ("named", "standing"),
-    [("scpi-power-meter", "scpi-switch"), ("scpi-switch", "scpi-power-meter")],
-)
+@pytest.mark.parametrize(("named", "standing"), list(itertools.permutations(SCPI_KINDS, 2)))
 def test_another_instrument_of_the_family_is_the_wrong_one(named: str, standing: str) -> None:
-    driver, _, options = DRIVERS[named]
-    with place("loopback", driver, DRIVERS[standing][1]()) as at:
-        instrument = at.open(driver, options)
+    entry = DRIVERS[named]
+    with place("loopback", entry.driver, DRIVERS[standing].make_twin()) as at:
+        instrument = at.open(entry.driver, entry.options)
         with pytest.raises(WrongInstrumentError):
             instrument.identify()
 
 
 @pytest.mark.parametrize(("named", "standing"), [("gcode-rotary", "scpi-switch"), ("scpi-switch", "gcode-rotary")])
 def test_an_instrument_of_another_family_never_passes(named: str, standing: str) -> None:
-    driver, _, options = DRIVERS[named]
-    with place("loopback", driver, DRIVERS[standing][1]()) as at:
-        instrument = at.open(driver, options)
+    entry = DRIVERS[named]
+    with place("loopback", entry.driver, DRIVERS[standing].make_twin()) as at:
+        instrument = at.open(entry.driver, entry.options)
         with pytest.raises((LinkError, WrongInstrumentError)):
             instrument.identify()
 
@@ -346,3 +335,25 @@ def test_a_channel_that_the_unit_has_not_is_refused_with_its_reason(transport: T
             shutter.begin_set(True)
 
     assert caught.value.code == -222
+
+
+@pytest.mark.parametrize("at_rest", ["in", "out"])
+def test_a_slide_puts_its_element_in_and_out_whatever_it_is_at_rest(transport: Transport, at_rest: str) -> None:
+    options = with_defaults(dict(slide.DRIVER.options), channel=4, at_rest=at_rest, moves_in=0.02)
+    with place(transport, slide.DRIVER, switch_twin()) as at:
+        carrier = ScpiSlide(at.link, options)
+        assert carrier.is_in() == (at_rest == "in")
+
+        assert at.wait_for(carrier.begin_set(False)) is False
+        assert at.wait_for(carrier.begin_set(True)) is True
+        assert carrier.is_in() is True
+
+
+def test_a_relay_closes_and_opens_its_contact(transport: Transport) -> None:
+    with place(transport, relay.DRIVER, switch_twin()) as at:
+        contact = ScpiRelay(at.link, DRIVERS["scpi-relay"].options)
+        assert contact.is_closed() is False
+
+        assert at.wait_for(contact.begin_set(True)) is True
+        assert at.wait_for(contact.begin_set(False)) is False
+        assert contact.is_closed() is False
