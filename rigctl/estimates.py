@@ -55,7 +55,7 @@ def run_data(run: Run) -> Data:
     darks = [dark for dark in run.darks if dark.what != "zero"]
     rows = [*(_visit_row(visit, recipe) for visit in good), *map(_dark_row, darks)]
     dwells = [*(visit.dwells for visit in good), *(dark.dwells for dark in darks)]
-    monitor = monitor_role(recipe, run.header.detectors)
+    monitor = run.header.monitor
     detectors = [d.name for d in train.detectors if d.name in run.header.detectors and d.name != monitor]
     placed = [visit for step in run.header.steps for visit in run.placed(step.name)]
     saturated = sum(visit.status == "saturated" for visit in placed)
@@ -77,11 +77,6 @@ def _seen_by(train: "Train", names: Sequence[str]) -> "Train":
     return replace(train, detectors=tuple(d for d in train.detectors if d.name in names), quantities=kept)
 
 
-def monitor_role(recipe: Recipe, detectors: Sequence[str]) -> str | None:
-    """Return the power meter at a pick-off, where the rig fills it."""
-    return next((part.to for part in recipe.optics if part.kind == "pick-off" and part.to in detectors), None)
-
-
 def asks_for_anything(run: Run) -> bool:
     """Whether a run's recipe calls anything unknown."""
     recipe = parse_recipe(run.header.recipe.text, run.header.recipe.file_name)
@@ -91,11 +86,14 @@ def asks_for_anything(run: Run) -> bool:
 def truth_of(run: Run) -> Mapping[str, float]:
     """Return the hidden truth of a rehearsal as the fit means it; empty on hardware.
 
-    The simulated source is given by its power at the start, the fit's by that in the middle of the visits.
+    The simulated source is given by its power at the start, the fit's by that in the middle of the visits; with a
+    monitor, both are about what the monitor does not tell, and have no truth of their own.
     """
     from rigctl.optics.parts import DRIFT, POWER
 
     truth = dict(run.header.truth)
+    if run.header.monitor:
+        return {name: value for name, value in truth.items() if name not in (POWER, DRIFT)}
     if POWER in truth and DRIFT in truth:
         times_h = run_data(run).visits.time_h
         truth[POWER] *= 1.0 + truth[DRIFT] * float(times_h.min() + times_h.max()) / 2.0
@@ -142,7 +140,7 @@ def _middle_s(dwells: Mapping[str, Dwell]) -> float:
 
 
 def _observed(
-    dwells: Sequence[Mapping[str, Dwell]], lit: int, name: str, monitor: str | None
+    dwells: Sequence[Mapping[str, Dwell]], lit: int, name: str, monitor: str
 ) -> "Observed":
     """Mean, sample standard deviation and number of each dwell's readings; flagged readings left out.
 
@@ -159,7 +157,7 @@ def _observed(
     from rigctl.polarimetry import Observed
 
     readings = [np.array(dwell[name].levels_w) for dwell in dwells]
-    if monitor is not None:
+    if monitor:
         readings = _without_wander(readings, [np.array(dwell[monitor].levels_w) for dwell in dwells], lit)
     readings = [values[np.isfinite(values)] for values in readings]
     return Observed(

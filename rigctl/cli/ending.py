@@ -12,7 +12,7 @@ if TYPE_CHECKING:
 
 def tell_outcome(job: "Job", outcome: "Outcome", lead: str, *, as_json: bool) -> int:
     """Print where the run file is, how it ended, and the fit; return the exit code."""
-    from rigctl.estimates import truth_of
+    from rigctl.estimates import asks_for_anything, truth_of
     from rigctl.record import load_run
 
     run = load_run(job.path)
@@ -28,7 +28,7 @@ def tell_outcome(job: "Job", outcome: "Outcome", lead: str, *, as_json: bool) ->
         say(lead)
         say(f"run file: {job.path}  ({answer['visits']} visits, {duration(run.duration_s)}, {run.status})")
     _complain_about(outcome)
-    fitted, code = _fit(run, outcome.exit_code)
+    fitted, code = _fit(run, outcome.exit_code) if asks_for_anything(run) else (None, outcome.exit_code)
     answer["exit_code"] = code
     if as_json:
         say_json(answer | ({"fit": fit_as_dict(fitted, truth_of(run))} if fitted else {}))

@@ -10,12 +10,14 @@ def command(file: RunPath, as_json: AsJson = False) -> int:
     from rigctl.cli.console import complain, say, say_json
     from rigctl.cli.show import fit_as_dict, fit_lines
     from rigctl.errors import UndecidedError
-    from rigctl.estimates import fit_run, truth_of
+    from rigctl.estimates import asks_for_anything, fit_run, truth_of
     from rigctl.record import load_run
 
     run = load_run(file)
     if run.status != "complete":
         complain(f"note: the run is {run.status}; this is what it measured so far")
+    if not asks_for_anything(run):
+        raise UndecidedError("its recipe calls nothing unknown", where=str(file), do="The readings are in the file.")
     fitted = fit_run(run)
     if as_json:
         say_json({"file": str(file), "status": run.status, "fit": fit_as_dict(fitted, truth_of(run))})

@@ -11,6 +11,12 @@ from rigctl.record.layout import Document, Header
 from rigctl.runner.plan import step_layouts
 
 
+def monitor_role(recipe: Recipe, rig: Rig) -> str:
+    """Return the power meter at a pick-off, where the rig fills it; else nothing."""
+    monitors = (part.to for part in recipe.optics if part.kind == "pick-off" and part.to is not None)
+    return next((role for role in monitors if rig.entry(role) is not None), "")
+
+
 def make_header(
     recipe: Recipe, rig: Rig, *, start: datetime, identifier: str, operator: str = "", part: str = ""
 ) -> Header:
@@ -26,6 +32,7 @@ def make_header(
         steps=step_layouts(recipe),
         detectors=tuple(role for role, kind in recipe.roles.items() if kind.kind == "power meter" and rig.entry(role)),
         versions={"polrig": __version__, "python": python, **libraries},
+        monitor=monitor_role(recipe, rig),
         operator=operator,
         part=part,
     )

@@ -110,6 +110,8 @@ class Measuring:
         is_confirmed = self.presence.arrange(step)
         if not is_confirmed:
             self._event(f"step '{step.name}': nobody confirmed {', '.join(step.without)} out of the beam", "warning")
+        for role in self.bench.meters:
+            self.visiting.use_range(role, expected_peak_w(self.recipe, role, step))
         self._darks(step, "before", kinds=("dark",))
         self.progress.phase(f"step '{step.name}'")
         self.darkness.let_light_in()
