@@ -55,23 +55,21 @@ class HeadInBeam:
         remembers_from_s = begin_s - FORGOTTEN * time_constant_s
         if self._world.rests_from_s() <= remembers_from_s:
             middle_s = 0.5 * (begin_s + end_s)
-            return self._world.light_w(middle_s - time_constant_s, self._detector)
+            return self._world.light_w(middle_s - time_constant_s)[self._detector]
         if not remembers_from_s <= self._shown_at_s <= begin_s:
             self._shown_at_s = remembers_from_s
-            self._shown_w = self._world.light_w(remembers_from_s, self._detector)
+            self._shown_w = self._world.light_w(remembers_from_s)[self._detector]
         if self._shown_at_s < begin_s:
             self._follow(begin_s, time_constant_s)
         return self._follow(end_s, time_constant_s) / (end_s - begin_s)
 
     def _follow(self, end_s: float, time_constant_s: float) -> float:
         """Go on to an instant; return the integral of what was shown on the way, J."""
-        light_w, detector, total = self._world.light_w, self._detector, 0.0
-        end_w = light_w(self._shown_at_s, detector)
-        for begin, end in self._world.pieces(self._shown_at_s, end_s):
-            begin_w, end_w = end_w, light_w(end, detector)
-            light = (begin_w, light_w(0.5 * (begin + end), detector), end_w)
+        at, total = self._detector, 0.0
+        for duration_s, begin, middle, end in self._world.course(self._shown_at_s, end_s):
+            light = (begin[at], middle[at], end[at])
             self._shown_w, energy = respond(
-                self._shown_w, light, duration_s=end - begin, time_constant_s=time_constant_s
+                self._shown_w, light, duration_s=duration_s, time_constant_s=time_constant_s
             )
             total += energy
         self._shown_at_s = end_s

@@ -11,6 +11,7 @@ from rigctl_sim.trajectory import Trajectory
 
 HAND_S = 0.1
 """How long it takes to put something into the beam or take it out; only what is before and after matters."""
+ALL_IN: Mapping[frozenset[str], float] = {frozenset(): 1.0}
 _IN_UNTIL, _OUT_FROM = 0.25, 0.75
 
 
@@ -72,9 +73,9 @@ class Presence:
         """Return everything that takes elements in and out."""
         return tuple(holder.moves for holders in self._holders.values() for holder in holders)
 
-    def absent(self, instant_s: float) -> dict[frozenset[str], float]:
+    def absent(self, instant_s: float) -> Mapping[frozenset[str], float]:
         """Return sets of elements that are out, each with the part of the beam that meets just the others."""
-        beams = {frozenset[str](): 1.0}
+        beams = ALL_IN
         for element, holders in self._holders.items():
             part_in = 1.0
             for holder in holders:
@@ -82,5 +83,5 @@ class Presence:
             if part_in < 1.0:
                 without = {gone | {element}: part * (1.0 - part_in) for gone, part in beams.items()}
                 kept = {gone: part * part_in for gone, part in beams.items()} if part_in > 0.0 else {}
-                beams = kept | without
+                beams = {**kept, **without}
         return beams

@@ -33,11 +33,13 @@ class SourceNoise:
         self._seed = seed
         self._cell_sd = relative_sd * math.sqrt(STATED_FOR_S / CELL_S)
         self._block = lru_cache(maxsize=4)(self._drawn)
+        self._found = lru_cache(maxsize=64)(self._mean)
 
     def mean(self, begin_s: float, end_s: float) -> float:
         """Mean of the relative noise over a stretch of time; end after begin."""
-        if self._cell_sd == 0.0:
-            return 0.0
+        return self._found(begin_s, end_s) if self._cell_sd else 0.0
+
+    def _mean(self, begin_s: float, end_s: float) -> float:
         begin, end = begin_s / CELL_S, end_s / CELL_S
         first, last = math.floor(begin / BLOCK), math.floor(end / BLOCK)
         if first == last:

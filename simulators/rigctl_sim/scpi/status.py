@@ -38,6 +38,8 @@ class Register:
     def set_bit(self, bit: int, is_set: bool, *, channel: int = 1) -> None:
         """Set or clear one bit of the condition, by its weight; it stays set while any channel sets it."""
         holders = self._holders.setdefault(bit, set())
+        if is_set == (channel in holders):
+            return
         if is_set:
             holders.add(channel)
         else:
