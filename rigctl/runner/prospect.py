@@ -8,7 +8,7 @@ from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from rigctl.files.arrangement import train_of
-from rigctl.files.labels import level_labels
+from rigctl.files.labels import STEP, level_labels
 from rigctl.files.recipe import Recipe, Step
 from rigctl.interfaces import Capabilities, MeterCapabilities
 from rigctl.runner.forecast import Forecast
@@ -54,13 +54,13 @@ def expected_peak_w(recipe: Recipe, role: str, step: Step | None = None) -> floa
     train = train_of(recipe)
     if role not in {detector.name for detector in train.detectors}:
         return 0.0
-    steps = recipe.steps if step is None else (step,)
-    rows = [row for row in planned_rows(replace(recipe, steps=steps, darks=()), duration_s=0.0) if row.is_open]
+    rows = planned_rows(replace(recipe, darks=()), duration_s=0.0)
     visits = visits_of(rows, train)
-    nominal = train.levelled(visits).values({})
+    levelled = train.levelled(visits)
+    counts = [step is None or row.labels[STEP] == step.name for row in rows]
     power = recipe.source.power
     margin = 1.5 if power is None else 1.0 + 3.0 * (power.u or 0.0) / power.value
-    return float(readings(train.levelled(visits), visits, nominal)[role].max()) * margin
+    return float(readings(levelled, visits, levelled.values({}))[role][counts].max()) * margin
 
 
 def predicted(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> "Prediction":
