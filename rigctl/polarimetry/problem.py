@@ -9,7 +9,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from rigctl.optics.forward import readings_and_slopes
-from rigctl.optics.kernel import Array
+from rigctl.optics.kernel import Array, Indices
 from rigctl.optics.parts import POWER, Quantity, base_of
 from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
@@ -117,6 +117,12 @@ class Problem:
     def holding(self, held: tuple[str, ...]) -> "Problem":
         """The same problem with other quantities held."""
         return replace(self, held=held)
+
+    def rows_at(self, places: Indices) -> "Problem":
+        """The problem with only some of its visits."""
+        level_w = {name: level[places] for name, level in self.level_w.items()}
+        weight = {name: w[places] for name, w in self.weight.items()}
+        return replace(self, visits=self.visits.rows(places), level_w=level_w, weight=weight)
 
     def extended(self, extra: Visits) -> "Problem":
         """The problem with more visits, read as well as those there are; for slopes only."""

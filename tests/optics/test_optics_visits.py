@@ -40,7 +40,7 @@ def test_a_visit_at_no_level_is_refused(index: list[int]) -> None:
 
 
 def test_no_visits_are_at_no_level() -> None:
-    assert Levels((), np.zeros(0)).index.size == 0
+    assert Levels((), np.zeros(0, dtype=int)).index.size == 0
 
 
 def test_joined_levels_keep_their_names_in_the_order_they_come_up() -> None:
