@@ -29,7 +29,7 @@ from rigctl.polarimetry.variance import reading_variances
 
 REWEIGHTINGS = 2  # the weights follow the fitted power, and settle in two rounds
 GUESS, SILENCE = 1e-3, 1e-9  # relative noise of dwells without scatter: at first, and at least
-SCOUT_STEPS = 8  # enough to tell a good basin from a bad one
+SCOUT_STEPS = 20  # enough to tell a good basin from a bad one, also along a curved valley
 HOPELESS = 10.0  # times the best chi-squared of all scouts
 ALIKE = 1.0  # rise of chi-squared that one standard uncertainty makes
 BY_NOISE = 6.0  # standard uncertainties

@@ -25,6 +25,7 @@ MOST_VISITS = 400
 MOST_CELLS = 400_000  # nodes x visits worked on at once
 WITHIN = 30.0  # basins worse than the best by this factor are not walked down
 MOST_STARTS = 12
+TIED = 1e-9  # relative: where a plate retards nothing its angle does not matter
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -183,11 +184,13 @@ def _u(quantity: Quantity, if_free: float) -> float:
 
 
 def _basins(chi2: Array, axes: list[_Axis]) -> list[int]:
-    """Nodes no worse than all their neighbours, best first."""
-    lowest = chi2
+    """Nodes no worse than all their neighbours, of a plain the first, best first."""
+    lowest, first = chi2, np.ones(chi2.shape, dtype=bool)
     for k, axis in enumerate(axes):
         lowest = np.minimum.reduce([lowest, *_neighbours(lowest, k, is_closed=axis.is_closed)])
-    nodes = np.flatnonzero((chi2 <= lowest) & np.isfinite(chi2))
+        before = next(_neighbours(chi2, k, is_closed=False))
+        first &= ~np.isclose(before, chi2, rtol=TIED, atol=0.0)
+    nodes = np.flatnonzero((chi2 <= lowest) & np.isfinite(chi2) & first)
     order = nodes[np.argsort(chi2.flat[nodes], kind="stable")]
     return [int(node) for node in order if chi2.flat[node] <= WITHIN * chi2.flat[order[0]]][:MOST_STARTS]
 
