@@ -137,8 +137,9 @@ def test_a_current_may_be_swept_up_and_down_by_a_ramp() -> None:
     assert added(written) == Axis("diode", "current", (0.0, 0.001, 0.002, 0.003, 0.002, 0.001, 0.0), ramp_a_per_s=0.001)
 
 
-def test_repeats_count_from_one_and_set_nothing() -> None:
-    assert added("repeat: 3") == Axis("", "repeat", (1.0, 2.0, 3.0))
+@pytest.mark.parametrize("count", [1, 2, 3, 1000])
+def test_repeats_count_from_one_and_set_nothing(count: int) -> None:
+    assert added(f"repeat: {count}") == Axis("", "repeat", tuple(float(n) for n in range(1, count + 1)))
 
 
 def test_a_turn_may_go_there_and_back() -> None:
