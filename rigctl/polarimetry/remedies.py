@@ -60,7 +60,7 @@ def _darks(problem: Problem) -> Iterator[tuple[str, Visits]]:
     missing = [k for k in np.unique(place) if not np.any(~visits.is_open[place == k])]
     if missing:
         first = [int(np.argmax(place == k)) for k in missing]
-        dark = visits.rows(np.repeat(first, FEW_READINGS))
+        dark = _in_the_middle(visits.rows(np.repeat(first, FEW_READINGS)), visits)
         where = " on each range" if np.unique(place).size > 1 else ""
         sentence = f"Add {FEW_READINGS} readings with the beam blocked{where}."
         yield sentence, replace(dark, is_open=np.zeros(dark.count, dtype=bool))
@@ -69,7 +69,13 @@ def _darks(problem: Problem) -> Iterator[tuple[str, Visits]]:
 def _usual(visits: Visits) -> Visits:
     """One visit with the beam open, and everything in it if there was such a visit."""
     everything: Flags = np.all([visits.is_open, *visits.present.values()], axis=0)
-    return visits.rows(np.array([np.argmax(everything if np.any(everything) else visits.is_open)]))
+    one = visits.rows(np.array([np.argmax(everything if np.any(everything) else visits.is_open)]))
+    return _in_the_middle(one, visits)
+
+
+def _in_the_middle(extra: Visits, visits: Visits) -> Visits:
+    """Further visits in the middle of the time, so that the drift means the same."""
+    return replace(extra, time_h=np.full(extra.count, float(np.median(visits.time_h))))
 
 
 def _turn(usual: Visits, mount: str) -> Visits:

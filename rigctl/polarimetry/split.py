@@ -32,6 +32,8 @@ def split_chi2(problem: Problem, chi2: float) -> ChiSquaredSplit | None:
         return None
     count = sum(element.mount == mount for element in problem.train.elements)
     basis = _basis(problem.visits, mount, count, _groups(problem))
+    if basis.shape[1] >= np.count_nonzero(problem.visits.is_open):
+        return None
     sums = [_misfit(_with_stray(problem, basis, d), problem.level_w[d], weight) for d, weight in problem.weight.items()]
     rest, rest_dof = sum(misfit for misfit, _ in sums), sum(dof for _, dof in sums)
     if rest_dof < 1 or problem.dof - rest_dof < 1:
