@@ -182,11 +182,13 @@ class HislipPort:
     def _say(self, data: bytes) -> None:
         if self._sync is None or self._is_clearing:
             return
+        messages = bytearray()  # what is ready at once leaves at once
         for line in _LINES.findall(data):
             for begin in range(0, len(line), self._longest_bytes):
                 chunk = line[begin : begin + self._longest_bytes]
                 kind = Kind.DATA_END if chunk.endswith(b"\n") else Kind.DATA
-                self._sync.send(Piece(kind, 0, self._message_id, chunk))
+                messages += Piece(kind, 0, self._message_id, chunk).pack()
+        self._sync.client.send(bytes(messages))
 
     def _end_session(self) -> None:
         ended, self._sync, self._async = (self._sync, self._async), None, None
