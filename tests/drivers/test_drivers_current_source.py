@@ -388,8 +388,3 @@ def test_capabilities_follow_the_rig_file() -> None:
     options = with_defaults(dict(DRIVER.options), largest_current=0.5, largest_compliance=6.0, resolution=1e-6)
 
     assert DRIVER.capabilities(options) == SourceCapabilities(current_a=0.5, compliance_v=6.0, resolution_a=1e-6)
-
-
-@pytest.mark.parametrize("option", list(DRIVER.options))
-def test_every_option_says_what_it_means(option: str) -> None:
-    assert DRIVER.options[option].meaning
