@@ -3,7 +3,7 @@
 import itertools
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from pydantic_core import PydanticCustomError
 
@@ -104,6 +104,7 @@ def test_the_nearest_steps_of_a_current_are_whole_microamperes() -> None:
 
 
 @given(visits=st.integers(min_value=1, max_value=MOST_VALUES), turns=st.integers(min_value=1, max_value=5))
+@settings(deadline=None)
 def test_any_whole_number_of_visits_makes_a_turn(visits: int, turns: int) -> None:
     angles = turn(turns, 360.0 * turns / visits)
 
