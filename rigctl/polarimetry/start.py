@@ -148,7 +148,7 @@ def _design(problem: Problem, columns: dict[str, Array]) -> tuple[Array, Array]:
     masks = level_masks(train, visits)
     light, blocks = unit_light(train, visits, nodes), []
     drift = train.quantities[DRIFT].value
-    shape = np.broadcast_shapes((1, visits.count), *(seen.shape for seen in light.values()))
+    shape = (max((len(nodes) for nodes in columns.values()), default=1), visits.count)
     for detector in train.detectors:
         seen = np.broadcast_to(light[detector.name], shape)
         parts = {
