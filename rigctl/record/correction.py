@@ -124,8 +124,8 @@ def _tracks(darks: Sequence[Dark], run: Run, role: str) -> dict[float, DarkTrack
     begun_s = [visit.began_s for visit in run.attempts]
     points: dict[float, list[tuple[float, float, float]]] = {}
 
-    def stretch(dark: Dark) -> tuple[int, str, str, float]:
-        return (bisect_left(begun_s, dark.began_s), dark.step, dark.when, dark.dwells[role].range_w)
+    def stretch(dark: Dark) -> tuple[int, str, float]:
+        return bisect_left(begun_s, dark.began_s), dark.when, dark.dwells[role].range_w
 
     for (*_, range_w), members in groupby(darks, stretch):
         point = _point(Readings.of([dark.dwells[role] for dark in members]))

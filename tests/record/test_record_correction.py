@@ -107,6 +107,21 @@ def test_only_good_visits_make_the_monitors_mean() -> None:
     assert table["signal_correction_factor"][0] == pytest.approx(1.0)
 
 
+def test_the_errors_follow_from_those_of_all_four_powers() -> None:
+    dark = at_dark(0.0, signal=level(1e-7, 0.0, spread_w=3e-9), monitor=level(2e-5, 0.0, spread_w=6e-7))
+    dim = at_visit(0, 9.0, signal=level(1.1e-6, 9.0, spread_w=9e-9), monitor=level(6e-5, 9.0, spread_w=1e-7))
+    bright = at_visit(1, 12.0, signal=level(1.1e-6, 12.0), monitor=level(1.4e-4, 12.0))
+
+    table = step_table(run_of([dark, dim, bright], WATCHED), "line")
+
+    # three readings of spread s have a mean known to s / sqrt(3); the mean of the monitor is 80 uW
+    factor, u_factor = 2.0, 2.0 * np.hypot(6e-7, 1e-7) / np.sqrt(3.0) / 4e-5
+    u_net_w = np.hypot(9e-9, 3e-9) / np.sqrt(3.0)
+    assert table["signal_correction_factor"][0] == pytest.approx(factor, rel=1e-9)
+    assert table["signal_correction_factor_errors"][0] == pytest.approx(u_factor, rel=1e-9)
+    assert table["signal_corrected_errors"][0] == pytest.approx(np.hypot(factor * u_net_w, 1e-6 * u_factor), rel=1e-9)
+
+
 def test_the_errors_are_the_scatter_that_noise_gives() -> None:
     count, readings = 1500, 4
     header = replace(WATCHED, steps=(many_visits(count),))

@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 import pytest
-from correction_cases import at_dark, at_visit, level, run_of
+from correction_cases import WATCHED, at_dark, at_visit, level, run_of
 from hypothesis import given
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose, assert_array_equal
@@ -96,14 +96,19 @@ def test_a_capped_detector_says_nothing_of_the_room_and_is_not_subtracted() -> N
     assert np.isnan(table["signal_corrected"]).all()
 
 
-def test_a_dark_that_overloaded_does_not_count() -> None:
-    darks = [
-        at_dark(0.0, signal=level(1e-9, 0.0)),
-        at_dark(1.0, signal=level(1e-3, 1.0, flags=Flag.OVERLOAD)),
-    ]
+def test_a_dwell_that_overloaded_does_not_count_in_a_dark() -> None:
+    darks = [at_dark(0.0, signal=level(1e-9, 0.0)), at_dark(1.0, signal=level(1e-3, 1.0, flags=Flag.OVERLOAD))]
 
-    assert dark_tracks(run_of(darks), "signal")[2e-3].means_w.tolist() == pytest.approx([1e-9])
+    track = dark_tracks(run_of(darks), "signal")[2e-3]
+
+    assert (track.times_s.tolist(), track.means_w.tolist()) == ([0.0], pytest.approx([1e-9]))
     assert dark_tracks(run_of(darks[1:]), "signal") == {}
+
+
+def test_a_dark_that_a_detector_missed_is_none_of_its_own() -> None:
+    darks = [at_dark(0.0, monitor=level(1e-9, 0.0)), at_dark(9.0, signal=level(2e-9, 9.0))]
+
+    assert dark_tracks(run_of(darks, WATCHED), "signal")[2e-3].times_s.tolist() == [9.0]
 
 
 def test_one_reading_of_dark_corrects_but_leaves_the_uncertainty_open() -> None:
