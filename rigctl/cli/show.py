@@ -127,6 +127,8 @@ def prediction_lines(prediction: "Prediction") -> list[str]:
             f"    {coupling.name} would be known to {coupling.u_if_others_known:.2g} "
             f"if {coupling.most_blurred_with} were known"
         )
+        if coupling.u_with_remedy is not None:
+            lines.append(f"    cure: {coupling.remedy} ({coupling.name} to {coupling.u_with_remedy:.2g})")
     return lines
 
 

@@ -119,13 +119,3 @@ def test_a_reading_of_a_plate_between_polarizers_takes_microseconds() -> None:
     train = assemble(polarizer("entry"), retarder("part", waves=0.25, mount="m"), polarizer("exit"))
 
     assert seconds_per_reading(reader(train, {}), {"m": 10.0}) < 10e-6
-
-
-def test_more_elements_that_stand_still_cost_nothing() -> None:
-    part = retarder("part", waves=0.25, mount="m")
-    still = [polarizer(f"element {i}", axis_deg=10.0 * i, ratio=0.1) for i in range(8)]
-
-    few = seconds_per_reading(reader(assemble(part), {}), {"m": 10.0})
-    many = seconds_per_reading(reader(assemble(*still[:4], part, *still[4:]), {}), {"m": 10.0})
-
-    assert many < 3.0 * few
