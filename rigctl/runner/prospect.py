@@ -16,6 +16,8 @@ if TYPE_CHECKING:
     from rigctl.polarimetry import Prediction
 
 SECONDS_PER_HOUR = 3600.0
+DARK: Mapping[str, float] = {}
+"""A dwell with the beam blocked, where no angle matters."""
 
 
 def planned_visits(recipe: Recipe, train: "Train", *, duration_s: float) -> "Visits":
@@ -24,16 +26,16 @@ def planned_visits(recipe: Recipe, train: "Train", *, duration_s: float) -> "Vis
 
     from rigctl.optics import Visits
 
-    asked = [visit.asked_deg for step in recipe.steps for visit in step_visits(step)]
-    before, after = (
-        (0, 0) if recipe.dark is None else (DARK_DWELLS * recipe.dark.before, DARK_DWELLS * recipe.dark.after)
-    )
-    rows: list[Mapping[str, float]] = [{}] * before + asked + [{}] * after
+    has_before, has_after = (False, False) if recipe.dark is None else (recipe.dark.before, recipe.dark.after)
+    rows: list[Mapping[str, float]] = []
+    for step in recipe.steps:
+        rows += [DARK] * DARK_DWELLS * has_before
+        rows += [visit.asked_deg for visit in step_visits(step)]
+        rows += [DARK] * DARK_DWELLS * has_after
     mounts = sorted({element.mount for element in train.elements if element.mount is not None})
-    place = np.arange(len(rows))
     return Visits(
         angle_deg={mount: np.array([row.get(mount, 0.0) for row in rows]) for mount in mounts},
-        is_open=(place >= before) & (place < len(rows) - after),
+        is_open=np.array([row is not DARK for row in rows]),
         time_h=np.linspace(0.0, duration_s / SECONDS_PER_HOUR, len(rows)),
     )
 

@@ -10,7 +10,7 @@ from typing import Any
 from rigctl.files.recipe import Axis, Recipe, Step
 from rigctl.interfaces import Dwell, Flag
 from rigctl.record.records import dwell_record
-from rigctl.runner.approach import waypoints
+from rigctl.runner.approach import Standing, way_to
 from rigctl.runner.bench import OpenBench
 from rigctl.runner.person import Person
 from rigctl.runner.plan import DARK_DWELLS, Visit, settle_s
@@ -27,7 +27,7 @@ class Visiting:
         self.bench, self.recipe, self.timeline, self.person = bench, recipe, timeline, person
         self._is_blocked_by_hand = False
         self._ranges_w: dict[str, float] = {}
-        self._standing_deg: dict[str, float] = {}
+        self._standing: dict[str, Standing] = {}
         self._read_deg: dict[str, float] = {}
 
     def use_range(self, role: str, power_w: float) -> float:
@@ -45,7 +45,7 @@ class Visiting:
 
     def forget_positions(self) -> None:
         """Trust no angle: the next approach starts from the far side."""
-        self._standing_deg.clear()
+        self._standing.clear()
 
     def take(self, visit: Visit, step: Step) -> Record:
         """Move, settle and dwell; return the visit's record without its attempt and status."""
@@ -103,25 +103,20 @@ class Visiting:
 
     def _move(self, visit: Visit, step: Step) -> None:
         """Turn every mount that is not there yet, all together, each from its own side."""
-        ways: dict[str, list[float]] = {}
-        for axis in step.sweep:
-            way = self._way(axis, visit.asked_deg[axis.role])
-            if way:
-                ways[axis.role] = way
+        ways = {axis.role: self._way(axis, visit.asked_deg[axis.role]) for axis in step.sweep}
+        ways = {role: way for role, way in ways.items() if way}
         for role in ways:
-            self._standing_deg.pop(role, None)
+            self._standing.pop(role, None)
         while ways:
             stages = {role: self.bench.stages[role].begin_move(way.pop(0)) for role, way in ways.items()}
             self._read_deg.update(complete(self.timeline, stages))
             ways = {role: way for role, way in ways.items() if way}
-        self._standing_deg.update(visit.asked_deg)
+        self._standing.update({axis.role: Standing(visit.asked_deg[axis.role], axis.approach) for axis in step.sweep})
 
     def _way(self, axis: Axis, target_deg: float) -> list[float]:
-        last_deg = self._standing_deg.get(axis.role)
-        if last_deg == target_deg:
-            return []
         backlash_deg = self.bench.stages[axis.role].capabilities.backlash_deg
-        return list(waypoints(last_deg, target_deg, axis.approach, backlash_deg=backlash_deg))
+        standing = self._standing.get(axis.role)
+        return list(way_to(target_deg, axis.approach, standing=standing, backlash_deg=backlash_deg))
 
     def _dwell(self) -> Mapping[str, Dwell]:
         begun = {role: meter.begin_dwell() for role, meter in self.bench.meters.items()}
