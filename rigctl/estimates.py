@@ -3,8 +3,8 @@
 It owns which records count: the last good attempt at each visit, and every dark. It computes nothing itself.
 """
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from rigctl.errors import UndecidedError
@@ -83,11 +83,19 @@ def truth_of(run: Run) -> Mapping[str, float]:
 
 
 def fit_run(run: Run) -> "Fit":
-    """Fit the train of a run's recipe to everything that the run measured."""
+    """Fit the train of a run's recipe to everything that the run measured, and note what it could not use."""
     from rigctl.polarimetry import fit
 
     data = run_data(run)
-    return fit(data.train, data.visits, data.observed)
+    fitted = fit(data.train, data.visits, data.observed)
+    return replace(fitted, notes=(*fitted.notes, *_left_out(data)))
+
+
+def _left_out(data: Data) -> Iterator[str]:
+    if data.saturated:
+        yield f"visits left out because a detector was overloaded: {data.saturated}"
+    if data.missing:
+        yield f"planned visits that were not measured: {data.missing}"
 
 
 def _size(shape: Sequence[int]) -> int:
