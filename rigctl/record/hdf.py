@@ -87,7 +87,7 @@ def _put_variable(group: Any, variable: Variable) -> Any:
     fill = {"fillvalue": np.nan} if is_real else {}
     dataset = group.create_dataset(variable.name, data=values, **fill, **_storage(values))
     dataset.attrs.update({key: _attribute(value) for key, value in variable.attributes.items()})
-    if is_real and len(variable.dims) and variable.dims != (variable.name,):
+    if is_real and variable.dims != (variable.name,):
         dataset.attrs["_FillValue"] = np.array([np.nan])
     return dataset
 

@@ -32,8 +32,7 @@ def clean_name(text: str) -> str:
 
 
 def free_names(texts: Sequence[str], *, suffixes: Sequence[str] = ("",), taken: Iterable[str] = ()) -> tuple[str, ...]:
-    """Return a name for each text such that no name with any suffix is taken; the later of two is
-    numbered."""
+    """Return a name for each text such that no name with any suffix is taken; the later of two is numbered."""
     used = set(taken)
     names = []
     for text in texts:

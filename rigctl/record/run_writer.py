@@ -43,7 +43,7 @@ def create_run(path: Path, header: Header, *, durable: bool) -> "RunWriter":
     """
     path = Path(path)
     check_header(header)
-    _refuse_overwriting(path)
+    # the journal claims the name first, so that no second writer can pass the check meanwhile
     journal = Journal(journal_path(path), durable=durable)
     try:
         _refuse_overwriting(path)

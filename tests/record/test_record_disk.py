@@ -176,3 +176,40 @@ def test_a_journal_that_cannot_be_taken_away_is_told_and_harmless(
     monkeypatch.undo()
     assert load_run(tmp_path / "night.h5").status == "complete"
     assert [entry.name for entry in tmp_path.iterdir()] == ["night.h5"]
+
+
+def test_a_file_is_forced_to_the_disk_before_it_takes_its_name_and_the_name_after(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    calls: list[str] = []
+    fsync, replace = os.fsync, os.replace
+
+    def note_sync(fd: int) -> None:
+        calls.append(f"sync {Path(os.readlink(f'/proc/self/fd/{fd}')).name}")
+        fsync(fd)
+
+    def note_replace(old: Path, new: Path) -> None:
+        calls.append(f"{old.name} becomes {new.name}")
+        replace(old, new)
+
+    writer = create_run(tmp_path / "night.h5", small_header(VISITS), durable=True)
+    monkeypatch.setattr(os, "fsync", note_sync)
+    monkeypatch.setattr(os, "replace", note_replace)
+    writer.close("complete", t_s=1.0)
+
+    folder = f"sync {tmp_path.name}"
+    assert calls == ["sync night.h5.tmp", "night.h5.tmp becomes night.h5", folder, folder]
+
+
+def test_a_durable_record_is_forced_to_the_disk_before_it_is_acknowledged_and_a_rehearsed_one_is_not(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    synced: list[int] = []
+    monkeypatch.setattr(os, "fdatasync", synced.append)
+
+    for durable in (True, False):
+        with create_run(tmp_path / f"{durable}.h5", small_header(VISITS), durable=durable) as writer:
+            for number in range(3):
+                writer.append(small_visit(number))
+
+    assert len(synced) == 1 + 3

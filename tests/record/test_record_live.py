@@ -10,7 +10,7 @@ from multiprocessing.connection import Connection
 from pathlib import Path
 
 import pytest
-from record_cases import HEADER, killed, records, small_header, small_visit, write
+from record_cases import HEADER, finished, killed, records, small_header, small_visit, write
 
 from rigctl.errors import RecordError
 from rigctl.record import create_run, load_run, verify_run
@@ -157,3 +157,13 @@ def test_after_the_writer_has_gone_its_lock_is_free(tmp_path: Path) -> None:
         assert load_run(tmp_path / "night.h5").is_live
 
     assert not load_run(tmp_path / "night.h5").is_live
+
+
+def test_a_file_that_another_program_holds_open_for_changes_can_be_read(tmp_path: Path) -> None:
+    finished(tmp_path / "night.h5")
+
+    with (tmp_path / "night.h5").open("r+b") as other:
+        fcntl.flock(other, fcntl.LOCK_EX)
+
+        assert load_run(tmp_path / "night.h5").status == "complete"
+        assert verify_run(tmp_path / "night.h5").is_whole
