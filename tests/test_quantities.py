@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 
 from rigctl.errors import QuantityError
 from rigctl.kinds import KINDS
-from rigctl.quantities import Measured, format_quantity, parse_measured, parse_quantity, parse_span
+from rigctl.quantities import Measured, format_quantity, parse_measured, parse_quantity, parse_span, parse_uncertainty
 
 UNITS: pint.UnitRegistry[float] = pint.UnitRegistry()
 ORACLE = {
@@ -24,6 +24,14 @@ ORACLE = {
     "drift": ("1/hour", {"1/h": "1/hour", "%/h": "percent/hour", "ppm/h": "ppm/hour", "1/d": "1/day"}),
     "angular speed": ("degree/s", {"deg/s": "degree/s", "rad/s": "radian/s", "rpm": "revolution/minute"}),
     "angular acceleration": ("degree/s**2", {"deg/s2": "degree/s**2", "rad/s2": "radian/s**2"}),
+    "temperature difference": ("kelvin", {"K": "kelvin", "mK": "mK"}),
+    "temperature slope": ("kelvin/s", {"K/s": "kelvin/s", "K/min": "kelvin/minute", "mK/min": "mK/minute"}),
+    "current": ("A", {"A": "A", "mA": "mA", "uA": "uA"}),
+    "current slope": ("A/s", {"A/s": "A/s", "mA/s": "mA/s", "uA/s": "uA/s"}),
+    "voltage": ("V", {"V": "V", "mV": "mV"}),
+    "resistance": ("ohm", {"ohm": "ohm", "Ohm": "ohm", "kohm": "kiloohm", "kOhm": "kiloohm"}),
+    "coefficient": ("1/kelvin", {"1/K": "1/kelvin", "%/K": "percent/kelvin", "ppm/K": "ppm/kelvin"}),
+    "frequency": ("Hz", {"Hz": "Hz", "kHz": "kHz"}),
     "retardance": ("turn", {"waves": "turn", "deg": "degree", "rad": "radian"}),
 }
 CASES = [(kind, unit) for kind, (_, units) in ORACLE.items() for unit in units]
@@ -45,6 +53,55 @@ def test_every_unit_has_the_size_that_a_units_package_gives_it(kind: str, unit: 
     value = parse_quantity(f"{number!r} {unit}", kind)
 
     assert value == pytest.approx(expected, rel=1e-12)
+
+
+@given(number=st.floats(min_value=0.0, max_value=1e4), unit=st.sampled_from(["degC", "K"]))
+def test_a_temperature_has_the_zero_that_a_units_package_gives_it(number: float, unit: str) -> None:
+    expected = UNITS.Quantity(number, {"degC": "degC", "K": "kelvin"}[unit]).to("degC").magnitude
+
+    assert parse_quantity(f"{number!r} {unit}", "temperature") == pytest.approx(expected, rel=1e-12, abs=1e-9)
+
+
+def test_kelvins_count_from_absolute_zero_to_the_last_digit() -> None:
+    assert [parse_quantity(text, "temperature") for text in ("295.15 K", "22 °C", "0 K")] == [22.0, 22.0, -273.15]
+
+
+@pytest.mark.parametrize("text", ["-274 degC", "-0.1 K"])
+def test_nothing_is_colder_than_absolute_zero(text: str) -> None:
+    assert refusal(text, "temperature").what == f"a temperature of {text} is below all there is"
+
+
+def test_the_uncertainty_of_a_temperature_is_a_difference() -> None:
+    assert parse_measured("295.15 K +- 0.1 K", "temperature") == Measured(22.0, 0.1)
+
+
+def test_a_percentage_of_a_temperature_means_nothing() -> None:
+    with pytest.raises(QuantityError, match="of a temperature has no meaning"):
+        parse_measured("22 degC +- 1 %", "temperature")
+
+
+@pytest.mark.parametrize(
+    ("text", "kind", "nominal", "u"),
+    [
+        ("0.002 waves", "retardance", "0.5 waves", 0.002),
+        ("20 %", "ratio", "1000:1 +- 50 %", 2e-4),
+        ("0.2 deg (k=2)", "angle", "0 deg", 0.1),
+        (" 1 nm ", "retardance", "0.5 waves", 1 / 785.2),
+    ],
+)
+def test_an_uncertainty_may_stand_by_itself(text: str, kind: str, nominal: str, u: float) -> None:
+    assert parse_uncertainty(text, kind, nominal=nominal, wavelength_m=785.2e-9) == pytest.approx(u)
+
+
+@pytest.mark.parametrize("text", ["0 deg", "-1 deg", "5 mm", "", "1 deg +- 1 deg", "1" * 300])
+def test_an_uncertainty_that_is_none_is_refused(text: str) -> None:
+    with pytest.raises(QuantityError):
+        parse_uncertainty(text, "angle", nominal="22.5 deg")
+
+
+@pytest.mark.parametrize("text", ["1000:1 to 100:1", "100:1 to 1000:1"])
+def test_the_ends_of_a_span_of_ratios_may_stand_either_way(text: str) -> None:
+    assert parse_span(text, "ratio") == (0.001, 0.01)
 
 
 @pytest.mark.parametrize("kind", KINDS)

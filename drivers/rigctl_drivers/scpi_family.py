@@ -31,7 +31,8 @@ class ScpiFamily:
 
     A late or torn reply can look like any answer, so the instrument is made to say two numbers drawn for this
     moment, one right after the other; what came before is stale. They pass through the event status enable
-    register, which goes back to 0, its value at power-on.
+    register, which goes back to 0, its value at power-on. Each is read before the next is asked for: on a bus that
+    knows where messages end, a question that comes before its forerunner's answer was read interrupts that answer.
     """
 
     name: str = "SCPI"
@@ -49,10 +50,14 @@ class ScpiFamily:
         """
         first, second = nonces(deadline_s)
         channel.discard()
+        lines: list[bytes] = []
         # the leading LF ends a command that was sent in part
-        channel.write(f"\n*ESE {first};*ESE?\n*ESE {second};*ESE?\n*ESE 0\n".encode(), deadline_s)
-        stale = _read_up_to(channel, (first, second), deadline_s)
-        return Resynced(stale, _drain(channel, deadline_s))
+        channel.write(f"\n*ESE {first};*ESE?\n".encode(), deadline_s)
+        _read_up_to(channel, (first,), lines, deadline_s)
+        channel.write(f"*ESE {second};*ESE?\n".encode(), deadline_s)
+        _read_up_to(channel, (first, second), lines, deadline_s)
+        channel.write(b"*ESE 0\n", deadline_s)
+        return Resynced(tuple(lines[:-2]), _drain(channel, deadline_s))
 
 
 SCPI = ScpiFamily()
@@ -65,11 +70,10 @@ def nonces(deadline_s: float) -> tuple[int, int]:
     return first, 1 + (first - 1 + step) % 255
 
 
-def _read_up_to(channel: Channel, wanted: tuple[int, int], deadline_s: float) -> tuple[bytes, ...]:
-    """Read until the two numbers stand one after the other; return the lines before them."""
-    lines: list[bytes] = []
+def _read_up_to(channel: Channel, wanted: tuple[int, ...], lines: list[bytes], deadline_s: float) -> None:
+    """Read lines until the numbers stand at their end, one after the other."""
     try:
-        while _tail(lines) != wanted:
+        while tuple(map(_number, lines[-len(wanted) :])) != wanted:
             if len(lines) >= MOST_STALE_LINES:
                 raise no_reply("lines without end", lines[-1], address=channel.address)
             lines.append(channel.readline(deadline_s))
@@ -80,12 +84,11 @@ def _read_up_to(channel: Channel, wanted: tuple[int, int], deadline_s: float) ->
             partial=b"".join(lines) + late.partial,
             do="look at the instrument: is it on, in remote mode, and the one the rig file names?",
         ) from late
-    return tuple(lines[:-2])
 
 
-def _tail(lines: list[bytes]) -> tuple[int, ...]:
-    """Return the last two lines as numbers; -1 is none."""
-    return tuple(int(line) if line.strip().isdigit() and len(line) < 8 else -1 for line in lines[-2:])
+def _number(line: bytes) -> int:
+    """Return a line as a number; -1 is none."""
+    return int(line) if line.strip().isdigit() and len(line) < 8 else -1
 
 
 def _drain(channel: Channel, deadline_s: float) -> tuple[tuple[int, str], ...]:

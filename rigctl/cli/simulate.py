@@ -1,4 +1,4 @@
-"""`polrig simulate`: the twins of a rig on loopback ports, in real time, until stopped."""
+"""`polrig simulate`: the twins of a rig on ports of this computer, in real time, until stopped."""
 
 from pathlib import Path
 from typing import Annotated
@@ -18,7 +18,8 @@ def command(
 ) -> int:
     """Serve a rig's simulated instruments here.
 
-    Each address of the rig gets a port of this computer, in real time, until stopped (Ctrl-C). The rig file that
+    Each address of the rig gets one of its own kind on this computer, in real time, until stopped (Ctrl-C): a
+    network port for tcp://, a terminal as slow as the line for serial://, a HiSLIP port for visa://. The rig file that
     is written differs from the given one in its addresses only.
     """
     from rigctl.cli.console import say

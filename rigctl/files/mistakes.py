@@ -71,7 +71,8 @@ class Mistakes:
 
     def _note(self, place: Place, key: str, what: str, *, expected: str, nearest: str) -> None:
         line, column = place
-        self._found.append(Mistake(self.path, line, column, key, what, expected=expected, nearest=nearest))
+        told, near = (" ".join(text.split()) for text in (what, nearest))  # a text may go over several lines
+        self._found.append(Mistake(self.path, line, column, key, told, expected=expected, nearest=near))
         if len(self._found) >= MOST:
             self._raise(f"{MOST} mistakes: {STOPPED[0].lower()}{STOPPED[1:]}")
 

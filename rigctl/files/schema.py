@@ -87,7 +87,8 @@ def _any_instrument(shared: Schema, drivers: Mapping[str, Driver]) -> Schema:
         }
         for name in drivers
     ]
-    return {"type": "object", "properties": {"driver": described}, "required": shared["required"], "allOf": cases}
+    schema = {"type": "object", "properties": {"driver": described}, "required": shared["required"]}
+    return {**schema, "allOf": cases} if cases else schema
 
 
 def _instrument(driver: Driver, shared: Schema, limits: Schema) -> Schema:
@@ -106,7 +107,8 @@ def _simulated(written: Schema, drivers: Mapping[str, Driver], bench: BenchFacto
     world = {key: _option(option) for key, option in bench.bench_options().items()}
     tables = [bench.twin_options(name) for name in drivers]
     twins = [_mapping({key: _option(option) for key, option in table.items()}) for table in tables]
-    return {"properties": {**written["properties"], **world}, "additionalProperties": {"anyOf": twins}}
+    others = {"anyOf": twins} if twins else False
+    return {"properties": {**written["properties"], **world}, "additionalProperties": others}
 
 
 def _mapping(properties: Schema) -> Schema:

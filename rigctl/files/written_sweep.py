@@ -19,7 +19,7 @@ from pydantic import (
 from pydantic_core import CoreSchema
 
 from rigctl.errors import QuantityError
-from rigctl.files.ladders import QUANTITY, STEP_QUANTITY, joined, there_and_back, values_of
+from rigctl.files.ladders import MOST_VALUES, QUANTITY, STEP_QUANTITY, joined, there_and_back, values_of
 from rigctl.files.leaves import Leaf, Shown, SwitchText, choice, exactly_one, quantity, wrong
 from rigctl.files.mistakes import quoted
 from rigctl.files.patterns import COUNT, Schema, one_of, quantity_schema, span_schema
@@ -201,19 +201,21 @@ def _typed(value: object, handler: ValidatorFunctionWrapHandler, info: Validatio
     context: dict[str, Any] = info.context or {}
     context[KIND] = "repeat" if role == REPEAT else context.get(KINDS, {}).get(role)
     if isinstance(value, dict) and role == REPEAT:
-        value = {**value, REPEAT: {"values": _numbers(value[REPEAT])}}
+        value = {**value, REPEAT: _repeats(value[REPEAT])}
     return handler(value)
 
 
-def _numbers(value: object) -> list[str]:
-    """Numbers of the repeats, from 1."""
+def _repeats(value: object) -> dict[str, object]:
+    """Read how often visits are taken, and write it as the axis that it means: numbers from 1."""
+    if not isinstance(value, str):
+        raise wrong("keys or a list stand here", expected="a whole number such as 3", key=REPEAT)
     try:
-        count = parse_quantity(value, "count") if isinstance(value, str) else 0.0
+        count = round(parse_quantity(value, "count"))
     except QuantityError as error:
         raise wrong(error.what, expected="a whole number such as 3", key=REPEAT) from error
-    if not count:
-        raise wrong("keys or a list stand here", expected="a whole number such as 3", key=REPEAT)
-    return [str(number) for number in range(1, round(count) + 1)]
+    if count > MOST_VALUES:
+        raise wrong(f"{value} repeats are too many", expected=f"at most {MOST_VALUES}", key=REPEAT)
+    return {"values": ["1"]} if count == 1 else {"range": f"1 to {count}", "step": "1"}
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -3,8 +3,8 @@
 It owns the two connections of a session. Answers bear the number of their question here, so one that comes too
 late is thrown away; after a wait that ended early the device is cleared before anything else is said.
 
-PyVISA's own HiSLIP is not used, though VISA's other ways are: a timeout inside a message makes it lose the bytes
-that had come and take what follows for the answer, its device clear fails when a late answer lies on the line,
+PyVISA's own HiSLIP is not used, though VISA's other ways are. Measured: a timeout inside a message makes it lose the
+bytes that had come and fail at whatever it reads next, its device clear fails when a late answer lies on the line,
 and its waits cannot be woken.
 """
 

@@ -115,8 +115,8 @@ class HislipPort:
             case Kind.DATA | Kind.DATA_END if connection is self._sync:
                 self._hear(piece)
             case Kind.DEVICE_CLEAR_COMPLETE if connection is self._sync:
-                self._is_clearing = False
-                self._message_id = ANY_ID
+                self._twin.take(self._timeline.now())
+                self._is_clearing, self._message_id = False, ANY_ID
                 connection.send(Piece(Kind.DEVICE_CLEAR_ACKNOWLEDGE))
             case _ if connection is self._async:
                 connection.send(self._aside(piece))
@@ -172,7 +172,6 @@ class HislipPort:
                 return Piece(Kind.ASYNC_MAXIMUM_MESSAGE_SIZE_RESPONSE, payload=SIZE.pack(LONGEST_MESSAGE_BYTES))
             case Kind.ASYNC_DEVICE_CLEAR:
                 self._is_clearing = True
-                self._twin.take(self._timeline.now())
                 return Piece(Kind.ASYNC_DEVICE_CLEAR_ACKNOWLEDGE)
             case Kind.ASYNC_STATUS_QUERY:
                 has_answer = self._twin.next_ready_s() is not None and self.ready_in_s() == 0.0
@@ -183,11 +182,13 @@ class HislipPort:
     def _say(self, data: bytes) -> None:
         if self._sync is None or self._is_clearing:
             return
+        messages = bytearray()  # what is ready at once leaves at once
         for line in _LINES.findall(data):
             for begin in range(0, len(line), self._longest_bytes):
                 chunk = line[begin : begin + self._longest_bytes]
                 kind = Kind.DATA_END if chunk.endswith(b"\n") else Kind.DATA
-                self._sync.send(Piece(kind, 0, self._message_id, chunk))
+                messages += Piece(kind, 0, self._message_id, chunk).pack()
+        self._sync.client.send(bytes(messages))
 
     def _end_session(self) -> None:
         ended, self._sync, self._async = (self._sync, self._async), None, None

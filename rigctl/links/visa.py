@@ -1,9 +1,9 @@
 """Bytes to and from an instrument that only VISA reaches: VXI-11, GPIB, USBTMC.
 
 It owns one session of VISA and the ownership of its address. A call of the library blocks and cannot be woken, so
-each of its reads is short; the session is asked itself, not through the library's outer layer, which drops the
-bytes of a read that ended early. After a wait that ended early the device is cleared before anything else is said.
-The library's manager is one for the whole process and is never closed here: it would take all sessions along.
+each of its reads is short. The session is taken out of the library's outer layer, which drops the bytes of a read
+that ended early, and whose manager, one for the whole process, closes all sessions along with itself. After a wait
+that ended early the device is cleared before anything else is said.
 """
 
 import contextlib
@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from typing import Any
 
 import pyvisa
-from pyvisa.constants import StatusCode
+from pyvisa.constants import AccessModes, ResourceAttribute, StatusCode
 from pyvisa.errors import VisaIOError
 
 from rigctl.errors import BusyError, DisconnectedError, LinkError, LinkTimeoutError, PlanError, StopRequestedError
@@ -21,6 +21,7 @@ from rigctl.links.owner import Ownership
 from rigctl.timeline import Timeline
 
 _CHUNK_BYTES = 2**16
+_OPEN_MS = 5000
 _POLL_S = 0.05
 """How long one read may block, and so how late a stop request may be seen."""
 
@@ -45,15 +46,13 @@ class VisaChannel:
         self.address = address
         self._timeline = timeline
         self._inbox = Inbox(address)
-        self._is_owed = False
+        self._is_owed = self._is_broken = False
         timeline.stop.check()
         with contextlib.ExitStack() as undo:
             undo.callback(Ownership(address, place=str(parsed)).close)
             with self._translated():
-                self._resource = pyvisa.ResourceManager("@py").open_resource(str(parsed).removeprefix("visa://"))
-                undo.callback(self._close_session)
-                library: Any = self._resource.visalib
-                self._session = library.sessions[self._resource.session]
+                self._session = _opened(str(parsed).removeprefix("visa://"))
+            undo.callback(self._close_session)
             self._undo = undo.pop_all()
 
     def write(self, data: bytes, deadline_s: float) -> None:
@@ -128,13 +127,14 @@ class VisaChannel:
 
     def _allow(self, time_s: float) -> None:
         """Set how long the next call may block; VISA counts whole milliseconds, and 0 is none."""
-        self._resource.timeout = max(round(time_s * 1e3), 1)
+        self._session.set_attribute(ResourceAttribute.timeout_value, max(round(time_s * 1e3), 1))
 
     def _check(self, status: StatusCode) -> None:
         if status < 0:
             raise self._failure(status)
 
     def _failure(self, status: int) -> LinkError:
+        self._is_broken = True
         if status == StatusCode.error_resource_locked:
             what, do = "another program has locked it", "close that program"
             return BusyError(what, address=self.address, do=do)
@@ -143,8 +143,10 @@ class VisaChannel:
         return DisconnectedError(what, address=self.address, partial=self._inbox.peek(), do=do)
 
     def _close_session(self) -> None:
+        """Say farewell where somebody is left to hear it: else that takes seconds, and leaves the socket open."""
         with contextlib.suppress(LinkError), self._translated():
-            self._resource.close()
+            end = self._session.interface if self._is_broken else self._session
+            end.close()
 
     @contextlib.contextmanager
     def _translated(self) -> Iterator[None]:
@@ -153,9 +155,18 @@ class VisaChannel:
         except VisaIOError as error:
             raise self._failure(error.error_code) from error
         except Exception as error:  # each bus raises what its own library raises
+            self._is_broken = True
             raise DisconnectedError(
                 f"VISA failed ({type(error).__name__}: {error})",
                 address=self.address,
                 partial=self._inbox.peek(),
                 do="check the instrument, its cable, and that what VISA needs for this bus is installed",
             ) from error
+
+
+def _opened(resource: str) -> Any:
+    """Open a session and take it out of the library's hands."""
+    manager = pyvisa.ResourceManager("@py")
+    library: Any = manager.visalib
+    handle, _ = library.open(manager.session, resource, AccessModes.no_lock, _OPEN_MS)
+    return library.sessions.pop(handle)

@@ -5,8 +5,10 @@ It owns the shape of the table; it never holds what was measured there.
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from rigctl.errors import PlanError
 from rigctl.optics.kernel import Array, Flags, Indices
@@ -48,6 +50,14 @@ class Levels:
         """One after another; labels in the order in which they come up."""
         labels = tuple(dict.fromkeys(label for part in parts for label in part.labels))
         return cls(labels, np.array([labels.index(part.labels[i]) for part in parts for i in part.index]))
+
+
+def groups(columns: Sequence[npt.NDArray[Any]], count: int) -> Indices:
+    """Number of the group of each of `count` visits: within one, no column changes."""
+    if not columns:
+        return np.zeros(count, dtype=np.intp)
+    _, group = np.unique(np.stack(columns, axis=-1), axis=0, return_inverse=True)
+    return np.reshape(group, count)
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -29,8 +29,9 @@ from rigctl.polarimetry.variance import reading_variances
 
 REWEIGHTINGS = 2  # the weights follow the fitted power, and settle in two rounds
 GUESS, SILENCE = 1e-3, 1e-9  # relative noise of dwells without scatter: at first, and at least
-SCOUT_STEPS = 8  # enough to tell a good basin from a bad one
+SCOUT_STEPS = 20  # enough to tell a good basin from a bad one, also along a curved valley
 HOPELESS = 10.0  # times the best chi-squared of all scouts
+ALIKE = 1.0  # rise of chi-squared that one standard uncertainty makes
 BY_NOISE = 6.0  # standard uncertainties
 NEARLY_AS_WELL = 9.0  # rise of chi-squared that three standard uncertainties make
 
@@ -117,10 +118,18 @@ def _search(problem: Problem, moves: Symmetries) -> tuple[Descent, tuple[str, ..
     scouts = [descend(held, z, most_steps=SCOUT_STEPS) for z in points]
     hope = NEARLY_AS_WELL + HOPELESS * min(scout.chi2 for scout in scouts)
     walked = (descend(held, scout.z) for scout in scouts if scout.chi2 <= hope)
-    found = sorted(walked, key=lambda descent: (_is_impossible(held, descent), descent.chi2))
+    possible_first = sorted(walked, key=lambda descent: (_is_impossible(held, descent), descent.chi2))
+    found = sorted(possible_first, key=lambda descent: _rank(held, moves, descent, possible_first[0]))
     rivals = [d.z for d in found if d.chi2 < found[0].chi2 + NEARLY_AS_WELL and not _is_impossible(held, d)]
     homes = _distinct(held, moves, [found[0].z, *rivals], near=1e-2)
     return found[0], tuple(_rival(held, moves, z) for z in homes[1:])
+
+
+def _rank(problem: Problem, moves: Symmetries, descent: Descent, best: Descent) -> tuple[bool, float, float]:
+    """Order among solutions: possible before impossible, and of those that fit alike the nearest to the nominal."""
+    excess = max(0.0, descent.chi2 - best.chi2 - ALIKE)
+    home = moves.nearest(_people(problem, descent.z))
+    return _is_impossible(problem, descent), excess, moves.distance(home)
 
 
 def _is_impossible(problem: Problem, descent: Descent) -> bool:

@@ -9,8 +9,8 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from rigctl.optics.forward import readings_and_slopes
-from rigctl.optics.kernel import Array
-from rigctl.optics.parts import POWER, Quantity, base_of
+from rigctl.optics.kernel import Array, Indices
+from rigctl.optics.parts import POWER, Quantity, base_of, range_key
 from rigctl.optics.train import Train
 from rigctl.optics.visits import Visits
 from rigctl.polarimetry.coordinates import WIDTHS, to_people
@@ -118,11 +118,25 @@ class Problem:
         """The same problem with other quantities held."""
         return replace(self, held=held)
 
+    def rows_at(self, places: Indices) -> "Problem":
+        """The problem with only some of its visits."""
+        level_w = {name: level[places] for name, level in self.level_w.items()}
+        weight = {name: w[places] for name, w in self.weight.items()}
+        return replace(self, visits=self.visits.rows(places), level_w=level_w, weight=weight)
+
     def extended(self, extra: Visits) -> "Problem":
-        """The problem with more visits, read as well as those there are; for slopes only."""
+        """The problem with more visits, read as well as those there are on the same range; for slopes only."""
         level_w = {name: np.append(level, np.zeros(extra.count)) for name, level in self.level_w.items()}
-        weight = {name: np.append(w, np.full(extra.count, _typical(w))) for name, w in self.weight.items()}
+        weight = {name: np.append(w, self._typical(name, extra)) for name, w in self.weight.items()}
         return replace(self, visits=Visits.join(self.visits, extra), level_w=level_w, weight=weight)
+
+    def _typical(self, detector: str, extra: Visits) -> Array:
+        """Weight of a usual reading on the range of each further visit, 1/W."""
+        weight, key = self.weight[detector], range_key(detector)
+        if key not in self.visits.levels:
+            return np.full(extra.count, _median(weight))
+        own, wanted = self.visits.levels[key].index, extra.levels[key].index
+        return np.array([_median(weight[own == k]) for k in wanted])
 
     def told(self, name: str, u: float) -> "Problem":
         """The problem if one quantity were known to `u` beforehand; for slopes only."""
@@ -131,6 +145,6 @@ class Problem:
         return replace(self, train=self.train.rewritten(known), asked=self.asked.rewritten(asked))
 
 
-def _typical(weight: Array) -> float:
+def _median(weight: Array) -> float:
     counting = weight[weight > 0.0]
     return float(np.median(counting)) if counting.size else 0.0

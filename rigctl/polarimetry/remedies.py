@@ -8,8 +8,8 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from rigctl.optics.kernel import Array, Flags, Indices
-from rigctl.optics.visits import Levels, Visits
+from rigctl.optics.kernel import Array, Flags
+from rigctl.optics.visits import Levels, Visits, groups
 from rigctl.polarimetry.problem import Problem
 
 FEW_READINGS = 10
@@ -56,28 +56,26 @@ def _darks(problem: Problem) -> Iterator[tuple[str, Visits]]:
     """Readings with the beam blocked, on every range on which there are none."""
     visits = problem.visits
     ranges = [visits.levels[d.range_key] for d in problem.asked.detectors if d.range_key in visits.levels]
-    place = _place([levels.index for levels in ranges], visits.count)
+    place = groups([levels.index for levels in ranges], visits.count)
     missing = [k for k in np.unique(place) if not np.any(~visits.is_open[place == k])]
     if missing:
         first = [int(np.argmax(place == k)) for k in missing]
-        dark = visits.rows(np.repeat(first, FEW_READINGS))
+        dark = _in_the_middle(visits.rows(np.repeat(first, FEW_READINGS)), visits)
         where = " on each range" if np.unique(place).size > 1 else ""
         sentence = f"Add {FEW_READINGS} readings with the beam blocked{where}."
         yield sentence, replace(dark, is_open=np.zeros(dark.count, dtype=bool))
 
 
-def _place(columns: Sequence[Indices], count: int) -> Indices:
-    """Number of the combination of all columns at each visit."""
-    if not columns:
-        return np.zeros(count, dtype=np.intp)
-    _, place = np.unique(np.stack(columns, axis=-1), axis=0, return_inverse=True)
-    return np.reshape(place, count)
-
-
 def _usual(visits: Visits) -> Visits:
     """One visit with the beam open, and everything in it if there was such a visit."""
     everything: Flags = np.all([visits.is_open, *visits.present.values()], axis=0)
-    return visits.rows(np.array([np.argmax(everything if np.any(everything) else visits.is_open)]))
+    one = visits.rows(np.array([np.argmax(everything if np.any(everything) else visits.is_open)]))
+    return _in_the_middle(one, visits)
+
+
+def _in_the_middle(extra: Visits, visits: Visits) -> Visits:
+    """Further visits in the middle of the time, so that the drift means the same."""
+    return replace(extra, time_h=np.full(extra.count, float(np.median(visits.time_h))))
 
 
 def _turn(usual: Visits, mount: str) -> Visits:

@@ -9,7 +9,7 @@ import numpy as np
 
 from rigctl.optics.kernel import Array, Indices
 from rigctl.optics.parts import STRAY_LIGHT
-from rigctl.optics.visits import Visits
+from rigctl.optics.visits import Visits, groups
 from rigctl.polarimetry.coordinates import changes_with_warmth
 from rigctl.polarimetry.problem import Problem
 from rigctl.polarimetry.results import ChiSquaredSplit
@@ -32,6 +32,8 @@ def split_chi2(problem: Problem, chi2: float) -> ChiSquaredSplit | None:
         return None
     count = sum(element.mount == mount for element in problem.train.elements)
     basis = _basis(problem.visits, mount, count, _groups(problem))
+    if basis.shape[1] >= np.count_nonzero(problem.visits.is_open):
+        return None
     sums = [_misfit(_with_stray(problem, basis, d), problem.level_w[d], weight) for d, weight in problem.weight.items()]
     rest, rest_dof = sum(misfit for misfit, _ in sums), sum(dof for _, dof in sums)
     if rest_dof < 1 or problem.dof - rest_dof < 1:
@@ -54,10 +56,7 @@ def _groups(problem: Problem) -> Indices:
         *(visits.levels[key].index for key in sorted(keys)),
         *(visits.temperature_c[role] for role in sorted(role for role in warm if role is not None)),
     ]
-    if not columns:
-        return np.zeros(visits.count, dtype=np.intp)
-    _, group = np.unique(np.stack(columns, axis=-1), axis=0, return_inverse=True)
-    return np.reshape(group, visits.count)
+    return groups(columns, visits.count)
 
 
 def _basis(visits: Visits, mount: str, count: int, group: Indices) -> Array:

@@ -13,6 +13,7 @@ import numpy as np
 from rigctl.optics.forward import level_masks, unit_light
 from rigctl.optics.kernel import Array
 from rigctl.optics.parts import DRIFT, POWER, Quantity, base_of
+from rigctl.optics.visits import groups
 from rigctl.polarimetry.problem import Problem
 
 # Coarse enough to be quick, fine enough that 1800 random fits ended as well as fits begun at the truth.
@@ -20,9 +21,11 @@ RETARDANCE_STEP = 0.05
 PERIODS = {"angle": (180.0, 10.0), "retardance": (1.0, RETARDANCE_STEP)}  # and step
 GRIDS = {*PERIODS, "cosine"}
 MOST_NODES = 6000
+MOST_VISITS = 400
 MOST_CELLS = 400_000  # nodes x visits worked on at once
 WITHIN = 30.0  # basins worse than the best by this factor are not walked down
 MOST_STARTS = 12
+TIED = 1e-9  # relative: where a plate retards nothing its angle does not matter
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -36,6 +39,7 @@ class _Axis:
 
 def starts(problem: Problem) -> list[Array]:
     """Starting points, best first, shape (P,) each; the nominal values when no node fits at all."""
+    problem = _thinned(problem)
     axes = _axes(problem)
     grid = np.meshgrid(*(axis.nodes for axis in axes), indexing="ij")
     columns = {n: nodes.reshape(-1, 1) for axis, nodes in zip(axes, grid, strict=True) for n in axis.names}
@@ -44,6 +48,18 @@ def starts(problem: Problem) -> list[Array]:
     picked = _basins(chi2.reshape(shape), axes)
     points = [({name: float(nodes[node, 0]) for name, nodes in columns.items()}, linear[node]) for node in picked]
     return [_point(problem, *_apart(problem, axes, point)) for point in points] or [problem.nominal]
+
+
+def _thinned(problem: Problem) -> Problem:
+    """The problem with at most so many visits, of every kind some: a start needs no more."""
+    visits = problem.visits
+    if visits.count <= MOST_VISITS:
+        return problem
+    kinds = [visits.is_open, *visits.present.values(), *(levels.index for levels in visits.levels.values())]
+    group = groups(kinds, visits.count)
+    shuffled = np.random.default_rng(20).permutation(visits.count)  # a stride could fall in step with the angles
+    each = max(1, MOST_VISITS // (int(np.max(group)) + 1))
+    return problem.rows_at(np.sort(np.concatenate([shuffled[group[shuffled] == k][:each] for k in np.unique(group)])))
 
 
 def _apart(
@@ -132,8 +148,9 @@ def _design(problem: Problem, columns: dict[str, Array]) -> tuple[Array, Array]:
     masks = level_masks(train, visits)
     light, blocks = unit_light(train, visits, nodes), []
     drift = train.quantities[DRIFT].value
+    shape = (max((len(nodes) for nodes in columns.values()), default=1), visits.count)
     for detector in train.detectors:
-        seen = np.atleast_2d(light[detector.name])
+        seen = np.broadcast_to(light[detector.name], shape)
         parts = {
             POWER: seen * (1.0 + drift * visits.centred_h),
             DRIFT: seen * visits.centred_h,
@@ -167,11 +184,13 @@ def _u(quantity: Quantity, if_free: float) -> float:
 
 
 def _basins(chi2: Array, axes: list[_Axis]) -> list[int]:
-    """Nodes no worse than all their neighbours, best first."""
-    lowest = chi2
+    """Nodes no worse than all their neighbours, of a plain the first, best first."""
+    lowest, first = chi2, np.ones(chi2.shape, dtype=bool)
     for k, axis in enumerate(axes):
         lowest = np.minimum.reduce([lowest, *_neighbours(lowest, k, is_closed=axis.is_closed)])
-    nodes = np.flatnonzero((chi2 <= lowest) & np.isfinite(chi2))
+        before = next(_neighbours(chi2, k, is_closed=False))
+        first &= ~np.isclose(before, chi2, rtol=TIED, atol=0.0)
+    nodes = np.flatnonzero((chi2 <= lowest) & np.isfinite(chi2) & first)
     order = nodes[np.argsort(chi2.flat[nodes], kind="stable")]
     return [int(node) for node in order if chi2.flat[node] <= WITHIN * chi2.flat[order[0]]][:MOST_STARTS]
 

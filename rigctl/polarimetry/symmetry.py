@@ -108,7 +108,7 @@ class Symmetries:
     def nearest(self, values: Mapping[str, float]) -> dict[str, float]:
         """Of all equivalent solutions the one nearest to the nominal values, in tolerances."""
         images = [self._nearest_after(values, move) for move in self.together]
-        closest = min(images, key=self._distance)
+        closest = min(images, key=self.distance)
         return {**values, **closest}
 
     def _nearest_after(self, values: Mapping[str, float], move: Move) -> dict[str, float]:
@@ -120,7 +120,8 @@ class Symmetries:
             image |= closest
         return image
 
-    def _distance(self, values: Mapping[str, float]) -> float:
+    def distance(self, values: Mapping[str, float]) -> float:
+        """How far from the nominal values, in tolerances, squared."""
         return sum(item.distance(values) for item in self.items)
 
 

@@ -81,6 +81,14 @@ def put_table(parent: Any, name: str, table: Table) -> Any:
     return group
 
 
+def put_log(parent: Any, name: str, times: Variable, values: Variable) -> None:
+    """Write values against their instants as NXlog."""
+    group = put_group(parent, name, "NXlog")
+    scale = _put_variable(group, times)
+    scale.make_scale(times.name)
+    _put_variable(group, values).dims[0].attach_scale(scale)
+
+
 def _put_variable(group: Any, variable: Variable) -> Any:
     values = variable.values
     is_real = values.dtype.kind == "f"

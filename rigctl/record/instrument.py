@@ -6,13 +6,14 @@ It turns identity, settings and calibration records into one NeXus group a role.
 from collections.abc import Mapping
 from typing import Any
 
+from rigctl.record.conditions import said_roles
 from rigctl.record.hdf import put_group, put_text, put_values
 from rigctl.record.names import free_names
 from rigctl.record.run import Run
 
 
 def put_instrument(entry: Any, run: Run) -> None:
-    """Write `/entry/instrument`: a group for each role that is moved, read or was identified."""
+    """Write `/entry/instrument`: a group for each role that is set, read or was identified."""
     group = put_group(entry, "instrument", "NXinstrument")
     roles = tuple(dict.fromkeys([*_classes(run), *(record["role"] for record in run.of_kind("identity"))]))
     for role, name in zip(roles, free_names(roles), strict=True):
@@ -20,8 +21,9 @@ def put_instrument(entry: Any, run: Run) -> None:
 
 
 def _classes(run: Run) -> dict[str, str]:
-    moved = {axis.role: "NXpositioner" for step in run.header.steps for axis in step.axes}
-    return moved | dict.fromkeys(run.header.detectors, "NXdetector")
+    moved = {axis.role: "NXpositioner" for step in run.header.steps for axis in step.axes if not axis.is_repeat}
+    said = dict.fromkeys(said_roles(run), "NXsensor")
+    return moved | said | dict.fromkeys(run.header.detectors, "NXdetector")
 
 
 def _put_role(parent: Any, run: Run, role: str, name: str) -> None:

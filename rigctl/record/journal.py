@@ -19,6 +19,7 @@ from typing import Any
 
 from rigctl.errors import RecordError
 
+_encode = json.JSONEncoder(ensure_ascii=False, allow_nan=False, check_circular=False, separators=(",", ":")).encode
 _LINE_START = re.compile(rb"([0-9a-f]{8}) ([0-9]{1,10}) ")
 
 
@@ -63,9 +64,9 @@ def frame(record: Mapping[str, Any], crc: int) -> tuple[bytes, int]:
     Numbers keep every bit; what is not finite becomes null.
     """
     try:
-        text = json.dumps(record, ensure_ascii=False, allow_nan=False, separators=(",", ":"))
+        text = _encode(record)
     except ValueError:
-        text = json.dumps(_finite(record), ensure_ascii=False, allow_nan=False, separators=(",", ":"))
+        text = _encode(_finite(record))
     # a lone surrogate (an undecodable byte of a command line) becomes the JSON escape of itself
     payload = text.encode("utf-8", "backslashreplace")
     crc = zlib.crc32(payload, crc)

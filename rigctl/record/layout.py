@@ -27,14 +27,23 @@ class Document:
         return cls(text, file_name, hashlib.sha256(text.encode()).hexdigest())
 
 
+REPEAT = "repeat"
+"""Stands for a role on an axis that sets nothing and only counts."""
+
+
 @dataclass(frozen=True, slots=True)
 class AxisLayout:
-    """One dimension of a step: the role that is moved and the values asked for, in `units`."""
+    """One dimension of a step: the role that is set and the values asked for, in `units`."""
 
     name: str
     role: str
     units: str
     values: tuple[float, ...]
+
+    @property
+    def is_repeat(self) -> bool:
+        """Whether it only counts."""
+        return self.role == REPEAT
 
 
 @dataclass(frozen=True, slots=True)

@@ -13,8 +13,12 @@ from collections.abc import Iterable, Sequence
 
 _FORBIDDEN = re.compile(r"[^A-Za-z0-9_.]+")
 
-DETECTOR_SUFFIXES = ("", "_errors", "_sd", "_n", "_range", "_flags", "_levels", "_reading")
-AXIS_SUFFIXES = ("", "_readback")
+DETECTOR_SUFFIXES = (
+    *("", "_errors", "_sd", "_n", "_range", "_flags", "_levels", "_reading"),
+    *("_corrected", "_corrected_errors", "_dark", "_dark_errors"),
+    *("_correction_factor", "_correction_factor_errors"),
+)
+AXIS_SUFFIXES = ("", "_read")
 
 
 def plain_text(text: str) -> str:

@@ -7,6 +7,7 @@ built from what the journal holds.
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from operator import lt
 from typing import Any
 
 from rigctl.errors import RecordError
@@ -122,10 +123,9 @@ def parse_dark(record: Mapping[str, Any]) -> Dark:
 
 def check_visit(visit: Visit, header: Header) -> None:
     """Raise `RecordError` for a visit that has no place in the layout."""
-    shape = header.step(visit.step).shape
-    inside = len(visit.index) == len(shape) and all(0 <= i < n for i, n in zip(visit.index, shape, strict=True))
-    if not inside:
-        raise RecordError(f"visit {visit.number} at {visit.index} lies outside the grid {shape}", where=visit.step)
+    step, index = header.step(visit.step), visit.index
+    if len(index) != len(step.axes) or min(index) < 0 or not all(map(lt, index, step.shape)):
+        raise RecordError(f"visit {visit.number} at {index} lies outside the grid {step.shape}", where=visit.step)
     require_word(visit.status, VISIT_STATUSES)
     _require_detectors(visit.dwells, header)
 
@@ -166,7 +166,8 @@ def _real(value: float | None) -> float:
 
 
 def _reals(values: Mapping[str, float | None]) -> dict[str, float]:
-    return {key: _real(value) for key, value in values.items()}
+    # written out, since every record of a run passes here a dozen times
+    return {key: math.nan if value is None else float(value) for key, value in values.items()}
 
 
 def _dwells(records: Mapping[str, Mapping[str, Any]]) -> dict[str, Dwell]:
@@ -175,7 +176,7 @@ def _dwells(records: Mapping[str, Mapping[str, Any]]) -> dict[str, Dwell]:
 
 def _dwell(record: Mapping[str, Any]) -> Dwell:
     return Dwell(
-        levels_w=tuple(_real(level) for level in record["levels_w"]),
+        levels_w=tuple([math.nan if level is None else float(level) for level in record["levels_w"]]),
         flags=Flag(record["flags"]),
         range_w=_real(record["range_w"]),
         began_s=_real(record["t_begin"]),

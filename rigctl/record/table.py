@@ -10,9 +10,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigctl.interfaces import Dwell
-from rigctl.record.detectors import detector_variables
-from rigctl.record.layout import StepLayout
-from rigctl.record.names import AXIS_SUFFIXES, free_names
+from rigctl.record.conditions import condition_variables
+from rigctl.record.correction import corrections
+from rigctl.record.detectors import Detected, detected
+from rigctl.record.layout import AxisLayout, StepLayout
+from rigctl.record.names import AXIS_SUFFIXES, DETECTOR_SUFFIXES, clean_name, free_names
 from rigctl.record.records import DARK_HOW, DARK_WHAT, DARK_WHEN, Visit
 from rigctl.record.run import Run
 from rigctl.record.variables import Array, Frame, Variable
@@ -20,7 +22,7 @@ from rigctl.record.variables import Array, Frame, Variable
 STATUSES = ("not_measured", "ok", "retried", "saturated", "failed")
 """Meaning of the numbers in `status`, from 0."""
 
-_VISIT_VARIABLES = ("time", "status", "visit", "attempt")
+_VISIT_VARIABLES = ("time", "status", "visit", "attempt", "confirmed")
 _DARK_VARIABLES = ("dark", "time", "step", "what", "when", "how")
 
 
@@ -50,8 +52,12 @@ def step_table(run: Run, step_name: str) -> Table:
     places = [int(np.ravel_multi_index(visit.index, step.shape)) for visit in visits]
     frame = Frame(names, step.shape, places, run.header)
     taken = [*_VISIT_VARIABLES, *(name + suffix for name in names for suffix in AXIS_SUFFIXES)]
-    detectors = detector_variables(frame, [visit.dwells for visit in visits], taken)
-    return _table(axes, detectors, (*_readbacks(frame, step, visits), *_about_visits(frame, visits)))
+    found = detected(frame, [visit.dwells for visit in visits], taken)
+    taken += [one.name + suffix for one in found for suffix in DETECTOR_SUFFIXES]
+    conditions = condition_variables(frame, step, visits, taken)
+    taken += [variable.name for variable in conditions]
+    own = (*_read(frame, step, visits), *conditions, *_about_visits(frame, visits), *_present(frame, visits, taken))
+    return _table(axes, found, (*corrections(run, found), *own))
 
 
 def dark_table(run: Run) -> Table:
@@ -68,37 +74,45 @@ def dark_table(run: Run) -> Table:
         frame.words("when", [DARK_WHEN.index(d.when) for d in darks], DARK_WHEN, "when, seen from the step"),
         frame.words("how", [DARK_HOW.index(d.how) for d in darks], DARK_HOW, "what kept the light away"),
     )
-    return _table((axis,), detector_variables(frame, [dark.dwells for dark in darks], _DARK_VARIABLES), own)
+    return _table((axis,), detected(frame, [dark.dwells for dark in darks], _DARK_VARIABLES), own)
 
 
-def _table(axes: tuple[Variable, ...], detectors: Sequence[tuple[Variable, ...]], own: tuple[Variable, ...]) -> Table:
-    measured = tuple(variable for group in detectors for variable in group[:-1])
-    signals = tuple(group[0].name for group in detectors)
-    return Table(axes, tuple(group[-1] for group in detectors), signals, (*measured, *own))
+def _table(axes: tuple[Variable, ...], found: Sequence[Detected], own: tuple[Variable, ...]) -> Table:
+    measured = tuple(variable for one in found for variable in one.variables)
+    return Table(axes, tuple(one.reading for one in found), tuple(one.name for one in found), (*measured, *own))
 
 
 def _axes(step: StepLayout) -> tuple[Variable, ...]:
     names = free_names([axis.name for axis in step.axes], suffixes=AXIS_SUFFIXES, taken=_VISIT_VARIABLES)
-    return tuple(
-        Variable(
-            name,
-            (name,),
-            np.array(axis.values, float),
-            {"units": axis.units, "long_name": f"{axis.role}, asked for"},
-        )
-        for name, axis in zip(names, step.axes, strict=True)
-    )
+    return tuple(_axis(name, axis) for name, axis in zip(names, step.axes, strict=True))
 
 
-def _readbacks(frame: Frame, step: StepLayout, visits: Sequence[Visit]) -> tuple[Variable, ...]:
+def _axis(name: str, axis: AxisLayout) -> Variable:
+    meaning = "number of the repeat" if axis.is_repeat else f"{axis.role}, asked for"
+    return Variable(name, (name,), np.array(axis.values, float), {"units": axis.units, "long_name": meaning})
+
+
+def _read(frame: Frame, step: StepLayout, visits: Sequence[Visit]) -> tuple[Variable, ...]:
+    """Return what each axis read back."""
     return tuple(
         Variable(
-            f"{name}_readback",
+            f"{name}_read",
             frame.dims,
             frame.fill([visit.read.get(axis.role, np.nan) for visit in visits]),
             {"units": axis.units, "long_name": f"{axis.role}, read back"},
         )
         for name, axis in zip(frame.dims, step.axes, strict=True)
+        if not axis.is_repeat
+    )
+
+
+def _present(frame: Frame, visits: Sequence[Visit], taken: Sequence[str]) -> tuple[Variable, ...]:
+    """Return for each element that moves whether it stood in the beam."""
+    elements = list(dict.fromkeys(element for visit in visits for element in visit.present))
+    names = free_names([clean_name(f"{element} present") for element in elements], taken=taken)
+    return tuple(
+        frame.truths(name, [visit.present.get(element) for visit in visits], f"whether {element} stood in the beam")
+        for name, element in zip(names, elements, strict=True)
     )
 
 
@@ -110,7 +124,12 @@ def _about_visits(frame: Frame, visits: Sequence[Visit]) -> tuple[Variable, ...]
         frame.words("status", [_status(visit) for visit in visits], STATUSES, "how the visit went"),
         Variable("visit", frame.dims, numbers, {"long_name": "number of the visit as planned, -1 where none"}),
         Variable("attempt", frame.dims, attempts, {"long_name": "attempt that is shown, 0 where none"}),
+        frame.truths("confirmed", [_confirmed(visit) for visit in visits], "whether the elements stood as asked"),
     )
+
+
+def _confirmed(visit: Visit) -> bool | None:
+    return visit.is_confirmed if visit.dwells else None
 
 
 def _status(visit: Visit) -> int:

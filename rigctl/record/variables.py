@@ -33,11 +33,12 @@ class Frame:
     places: Sequence[int]
     header: Header
 
-    def fill(self, values: Sequence[float], *, dtype: Any = float, empty: float = np.nan) -> Array:
-        """Return an array that has a value at each place and `empty` elsewhere."""
-        flat = np.full(int(np.prod(self.shape)), empty, dtype)
+    def fill(self, values: Sequence[float] | Array, *, dtype: Any = float, empty: float = np.nan) -> Array:
+        """Return an array that has a value (or a row of them) at each place and `empty` elsewhere."""
+        row = values.shape[1:] if isinstance(values, np.ndarray) else ()
+        flat = np.full((int(np.prod(self.shape)), *row), empty, dtype)
         flat[list(self.places)] = values
-        return flat.reshape(self.shape)
+        return flat.reshape(*self.shape, *row)
 
     def at(self, places: Sequence[int]) -> "Frame":
         """Return the same frame for other places."""
@@ -53,6 +54,12 @@ class Frame:
         """Return numbers that stand for words, 0 where nothing was measured."""
         values = self.fill(said, dtype=np.int16, empty=0)
         return Variable(name, self.dims, values, flag_words(words) | {"long_name": meaning})
+
+    def truths(self, name: str, said: Sequence[bool | None], meaning: str) -> Variable:
+        """Return 1 for yes, 0 for no, -1 where nobody said."""
+        values = self.fill([-1 if answer is None else int(answer) for answer in said], dtype=np.int8, empty=-1)
+        words = {"flag_values": np.array([-1, 0, 1], np.int8), "flag_meanings": "unknown no yes"}
+        return Variable(name, self.dims, values, words | {"long_name": meaning})
 
 
 def flag_words(words: Sequence[str]) -> dict[str, Any]:

@@ -5,17 +5,18 @@ same bytes.
 
 Source
 ------
-NeXus definitions 2026.01: NXroot, NXentry, NXdata, NXinstrument, NXpositioner, NXdetector, NXprocess, NXnote.
+NeXus definitions 2026.01: NXroot, NXentry, NXdata, NXinstrument, NXpositioner, NXsensor, NXdetector, NXlog,
+NXprocess, NXnote.
 """
 
-from collections.abc import Mapping
 from datetime import timedelta
 from typing import Any
 
 import h5py
 
 from rigctl.record.digest import put_digest
-from rigctl.record.hdf import put_group, put_note, put_table, put_text, put_values
+from rigctl.record.environment import put_environment
+from rigctl.record.hdf import put_group, put_note, put_table, put_text
 from rigctl.record.instrument import put_instrument
 from rigctl.record.names import free_names
 from rigctl.record.run import Run
@@ -55,12 +56,12 @@ def view_image(run: Run, journal: bytes, *, tail: bytes, is_final: bool) -> byte
         entry = put_group(file, "entry", "NXentry")
         _put_entry(entry, run)
         for step, name in zip(run.header.steps, step_groups(run), strict=True):
-            put_table(entry, name, step_table(run, step.name))
+            put_table(entry, name, step_table(run, step.name)).attrs["title"] = step.name
         if run.darks:
             put_table(entry, "darks", dark_table(run))
         put_instrument(entry, run)
         _put_acquisition(entry, run, journal, tail)
-        _put_environment(entry, run)
+        put_environment(entry, run)
         if is_final:
             put_digest(file)
         file.flush()
@@ -122,21 +123,6 @@ def _put_acquisition(entry: Any, run: Run, journal: bytes, tail: bytes) -> None:
         type="application/octet-stream",
         description="torn by a crash, not used",
     )
-
-
-def _put_environment(entry: Any, run: Run) -> None:
-    end: Mapping[str, Any] = run.end or {}
-    facts = {
-        "simulated": run.header.is_simulated,
-        "run_status": run.status,
-        "exit_code": end.get("code"),
-        "why": end.get("why", ""),
-        "seed": run.header.seed,
-    }
-    environment = put_values(entry, "environment", facts)
-    put_values(environment, "versions", run.header.versions)
-    if run.header.truth:
-        put_values(environment, "truth", run.header.truth)
 
 
 def _instant(run: Run, instant_s: float) -> str:

@@ -21,5 +21,8 @@ def rig_text_with_addresses(rig: Rig, addresses: Mapping[str, str]) -> str:
     # from the end, so that a longer address does not move those before it on its line
     for (line, column), entry in sorted(entries.items(), key=lambda item: item[0], reverse=True):
         head, tail = lines[line - 1][: column - 1], lines[line - 1][column - 1 :]
-        lines[line - 1] = head + tail.replace(entry.at, addresses[entry.at], 1)
+        # written without quotes, a comma ends a value between braces
+        plain_comma = tail.startswith(entry.at) and "," in addresses[entry.at]
+        written = f'"{addresses[entry.at]}"' if plain_comma else addresses[entry.at]
+        lines[line - 1] = head + tail.replace(entry.at, written, 1)
     return "".join(lines)

@@ -25,14 +25,14 @@ _SHARED_NOISE = "0.04 %"
 
 def default_rig(roles: Mapping[str, RoleKind]) -> str:
     """Write a rig file with an instrument of its own for each role, and a diode on each current source."""
-    lines = ["rig: simulated bench", "instruments:" if roles else "instruments: {}"]
+    lines = ["rig: simulated bench", "instruments:"]
     for number, (role, kind) in enumerate(roles.items()):
         at = f"tcp://127.0.0.1:{FIRST_PORT + number}"
         lines.append(f"  {_name(role)}: {{driver: {_DRIVERS[kind]}, at: {json.dumps(at)}}}")
     sources = [role for role, kind in roles.items() if kind == "current source"]
     lines.extend(["diodes:"] if sources else [])
     lines.extend(f"  {json.dumps(f'diode of {role}')}: {{on: {_name(role)}, {_DIODE}}}" for role in sources)
-    lines.append("roles:" if roles else "roles: {}")
+    lines.append("roles:")
     lines.extend(f"  {json.dumps(role)}: {_name(role)}" for role in roles)
     if sum(kind == "power meter" for kind in roles.values()) > 1:
         lines.append(f"simulated: {{source noise: {_SHARED_NOISE}}}")

@@ -4,6 +4,7 @@ It owns how current and temperature are found in a recipe, and what is drawn of 
 """
 
 from collections.abc import Iterator
+from itertools import chain
 
 from rigctl.errors import PlanError
 from rigctl.files.recipe import Recipe
@@ -17,8 +18,6 @@ THRESHOLD_PART = (0.47, 0.53)
 """Of the prepared current; an AlGaAs diode at half to two thirds of its rated power. Common practice."""
 CHARACTERISTIC_K = (120.0, 160.0)
 """Of AlGaAs; public tables."""
-UNSET_PART = 0.5
-"""Of the source's largest current, where no recipe says at which current its diode is used."""
 
 
 def diode_of(recipe: Recipe, rig: Rig, source: InstrumentEntry, *, power_w: float, seed: int) -> Diode:
@@ -29,7 +28,7 @@ def diode_of(recipe: Recipe, rig: Rig, source: InstrumentEntry, *, power_w: floa
     PlanError
         When the rig file wants its threshold where the diode already emits.
     """
-    current_a = prepared_current_a(recipe, source)
+    current_a = prepared_current_a(recipe)
     drawn = generator(seed, f"truth of the diode on {source.name}")
     threshold_a, characteristic_k = drawn.uniform(*THRESHOLD_PART) * current_a, drawn.uniform(*CHARACTERISTIC_K)
     given_a, given_k = of_twin(rig, source, "threshold"), of_twin(rig, source, "characteristic temperature")
@@ -50,17 +49,21 @@ def diode_of(recipe: Recipe, rig: Rig, source: InstrumentEntry, *, power_w: floa
     return diode
 
 
-def prepared_current_a(recipe: Recipe, source: InstrumentEntry) -> float:
+def prepared_current_a(recipe: Recipe) -> float:
     """Return the current at which the source has its power: as prepared, else the largest of the sweeps, A."""
     role = recipe.source.driven_by
-    largest_a: float = source.options["largest current"]
-    return next(_prepared(recipe, role), 0.0) or max(_swept(recipe, role), default=0.0) or UNSET_PART * largest_a
+    return next(_prepared(recipe, role), 0.0) or max(_swept(recipe, role))
 
 
 def prepared_temperature_c(recipe: Recipe, rig: Rig) -> float:
-    """Return the temperature at which the source has its power: as prepared, else the first of the sweeps, degC."""
+    """Return the temperature at which the source has its power, degC.
+
+    As prepared, else the first of the sweeps; without anything that cools it, that of the room.
+    """
     role = recipe.source.cooled_by
-    return next(_prepared(recipe, role), next(_swept(recipe, role), room_c(rig)))
+    if role is None or rig.entry(role) is None:
+        return room_c(rig)
+    return next(chain(_prepared(recipe, role), _swept(recipe, role)))
 
 
 def _prepared(recipe: Recipe, role: str | None) -> Iterator[float]:

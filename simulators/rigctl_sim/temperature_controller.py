@@ -196,10 +196,14 @@ class SimulatedTemperatureController:
         self._drive(at_s)
 
     def _drive(self, at_s: float) -> None:
-        """Go for the temperature at which the sensor has the resistance that the setpoint is taken for."""
+        """Go for the temperature at which the sensor has the resistance that the setpoint is taken for.
+
+        The plant goes no further than it can, whatever the constants make of the setpoint.
+        """
         if self._is_on:
             wanted_ohm = self._taken_for.resistance_ohm(self._setpoint_c)
-            self._plant.regulate(at_s, self._make.sensor.temperature_c(wanted_ohm))
+            low_c, high_c = self._make.span_c
+            self._plant.regulate(at_s, min(max(self._make.sensor.temperature_c(wanted_ohm), low_c), high_c))
 
     def _shown_c(self, true_c: float) -> float:
         return self._taken_for.temperature_c(self._make.sensor.resistance_ohm(true_c))

@@ -1,20 +1,26 @@
-"""Exchanges a second: over the loopback in virtual time, and over TCP beside a bare socket in the same run.
+"""Exchanges a second: over the loopback in virtual time, and over TCP, a serial port and HiSLIP beside bare ones.
 
 Printed, never asserted. The peers answer at once, so what is measured is the links' own cost.
 """
 
+import contextlib
+import os
 import socket
 import statistics
 import sys
 import threading
 import time
+import tty
 from collections.abc import Callable
 from datetime import UTC, datetime
 
 from rigctl.links.channel import Channel
 from rigctl.links.family import Opening, Resynced
+from rigctl.links.hislip import HislipChannel
 from rigctl.links.link import Link
 from rigctl.links.loopback import LoopbackChannel
+from rigctl.links.serial import SerialChannel
+from rigctl.links.serve import TwinServer
 from rigctl.links.tcp import TcpChannel
 from rigctl.timeline import VirtualTimeline, WallTimeline
 
@@ -40,6 +46,13 @@ class PromptTwin:
             return b""
         self._ready_s = None
         return ANSWER
+
+
+class AtOnceTwin(PromptTwin):
+    """Has its answer ready at once."""
+
+    def receive(self, data: bytes, now_s: float) -> None:
+        self._ready_s = now_s
 
 
 class TrustingFamily:
@@ -81,11 +94,22 @@ def loopback() -> str:
     return f"loopback: {1 / each_s:,.0f} exchanges/s, {each_s * 1e6:.1f} us each\n"
 
 
+def beside(name: str, bare_name: str, channel: Channel, timeline: WallTimeline, ask_bare: Callable[[], object]) -> str:
+    """A link's round trips and bare ones by turns, so that the machine's moods hit both."""
+    link = Link(channel.address, lambda: channel, TrustingFamily(), timeline)
+    pairs = [(time_each(lambda: link.exchange(QUESTION)), time_each(ask_bare)) for _ in range(ROUNDS)]
+    link.close()
+    timeline.stop.close()
+    ours_us, bare_us = (statistics.median(column) * 1e6 for column in zip(*pairs, strict=True))
+    ratio = statistics.median(own_s / bare_s for own_s, bare_s in pairs)
+    return f"{name}: {ours_us:.1f} us a round trip; {bare_name} beside it {bare_us:.1f} us; ratio {ratio:.2f}\n"
+
+
 def tcp_beside_a_bare_socket() -> str:
     with socket.create_server(("127.0.0.1", 0)) as listener, socket.create_server(("127.0.0.1", 0)) as other:
         threads = [serve_one(listener), serve_one(other)]
-        timeline, address = WallTimeline(), f"tcp://127.0.0.1:{listener.getsockname()[1]}"
-        link = Link(address, lambda: TcpChannel(address, timeline), TrustingFamily(), timeline)
+        timeline = WallTimeline()
+        channel = TcpChannel(f"tcp://127.0.0.1:{listener.getsockname()[1]}", timeline)
         with socket.create_connection(other.getsockname()) as bare:
             bare.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
 
@@ -93,16 +117,69 @@ def tcp_beside_a_bare_socket() -> str:
                 bare.sendall(QUESTION)
                 bare.recv(64)
 
-            pairs = [(time_each(lambda: link.exchange(QUESTION)), time_each(ask_bare)) for _ in range(ROUNDS)]
-        link.close()
-        timeline.stop.close()
+            told = beside("tcp", "a bare socket", channel, timeline, ask_bare)
         for thread in threads:
             thread.join()
-    ours_us, bare_us = (statistics.median(column) * 1e6 for column in zip(*pairs, strict=True))
-    ratio = statistics.median(own_s / bare_s for own_s, bare_s in pairs)
-    return f"tcp: {ours_us:.1f} us a round trip; a bare socket beside it {bare_us:.1f} us; ratio {ratio:.2f}\n"
+    return told
+
+
+def answer_terminal(ours: int) -> None:
+    with contextlib.suppress(OSError):  # both ends closed
+        while os.read(ours, 4096):
+            os.write(ours, ANSWER)
+
+
+def serial_beside_a_bare_terminal() -> str:
+    """Without the pace of a line: what the channel itself costs."""
+    pairs = [os.openpty(), os.openpty()]
+    threads = [threading.Thread(target=answer_terminal, args=[ours]) for ours, _ in pairs]
+    for (_, theirs), thread in zip(pairs, threads, strict=True):
+        tty.setraw(theirs)
+        thread.start()
+    timeline, bare = WallTimeline(), pairs[1][1]
+    channel = SerialChannel(f"serial://{os.ttyname(pairs[0][1])}?baud=115200", timeline, Opening())
+
+    def ask_bare() -> None:
+        os.write(bare, QUESTION)
+        os.read(bare, 64)
+
+    told = beside("serial", "a bare terminal", channel, timeline, ask_bare)
+    for _, theirs in pairs:
+        os.close(theirs)  # ends the thread's read
+    for thread in threads:
+        thread.join()
+    for ours, _ in pairs:
+        os.close(ours)
+    return told
+
+
+def hislip_beside_a_bare_socket() -> str:
+    """On our own server, in a thread of this process; the bare socket has one of its own."""
+    serving, timeline = WallTimeline(), WallTimeline()
+    with (
+        TwinServer({"visa://TCPIP0::bench::hislip0::INSTR": AtOnceTwin()}, serving) as server,
+        socket.create_server(("127.0.0.1", 0)) as listener,
+    ):
+        threads = [threading.Thread(target=server.serve), serve_one(listener)]
+        threads[0].start()
+        (address,) = server.addresses.values()
+        with socket.create_connection(listener.getsockname()) as bare:
+            bare.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
+
+            def ask_bare() -> None:
+                bare.sendall(QUESTION)
+                bare.recv(64)
+
+            told = beside("hislip", "a bare socket", HislipChannel(address, timeline), timeline, ask_bare)
+        serving.stop.request("done")
+        for thread in threads:
+            thread.join()
+    serving.stop.close()
+    return told
 
 
 if __name__ == "__main__":
     sys.stdout.write(loopback())
     sys.stdout.write(tcp_beside_a_bare_socket())
+    sys.stdout.write(serial_beside_a_bare_terminal())
+    sys.stdout.write(hislip_beside_a_bare_socket())

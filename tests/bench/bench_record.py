@@ -31,15 +31,16 @@ from rigctl.record.journal import frame
 
 RECORDS = 1500
 VISITS = (4, 50, 72)
+DARK_EVERY = 900
 ALLOWED = 1.5
 
 
 def header() -> Header:
-    """Temperatures by currents by angles, with two meters: 14,400 visits."""
-    names = ("oven temperature", "diode current", "part mount angle")
+    """Temperatures by currents by angles, with a meter and a monitor: 14,400 visits."""
+    names = (("oven", "temperature", "degC"), ("diode", "current", "A"), ("part mount", "angle", "deg"))
     axes = tuple(
-        AxisLayout(name.replace(" ", "_"), name, "deg", tuple(map(float, range(length))))
-        for name, length in zip(names, VISITS, strict=True)
+        AxisLayout(f"{role} {quantity}".replace(" ", "_"), role, units, tuple(map(float, range(length))))
+        for (role, quantity, units), length in zip(names, VISITS, strict=True)
     )
     empty = Document.of("recipe: bench\n", "bench.yaml")
     return Header(
@@ -50,15 +51,23 @@ def header() -> Header:
         rig=empty,
         steps=(StepLayout("data", axes),),
         detectors=("signal", "monitor"),
+        monitor="monitor",
     )
 
 
-def visit(number: int) -> dict[str, Any]:
-    """A visit with four readings of each meter."""
-    t_s = 2.0 * number
+def detectors(t_s: float, number: int) -> dict[str, Any]:
+    """Four readings of each meter."""
     levels = tuple(1e-4 * (1.0 + 1e-3 * ((number * 7 + i * 13) % 17)) for i in range(4))
     dwell = dwell_record(Dwell(levels, Flag(0), 2e-3, t_s, t_s + 0.4))
+    return {"signal": dwell, "monitor": dwell}
+
+
+def visit(number: int) -> dict[str, Any]:
+    """A visit as a rehearsal of the full bench records it."""
+    t_s = 2.0 * number
     place, angle = divmod(number, VISITS[2])
+    asked = {"oven": 22.0 + place // VISITS[1], "diode": 1e-3 * (place % VISITS[1]), "part mount": float(angle)}
+    tec = {"temperature_c": 24.001 + 1e-6 * number, "resistance_ohm": 10_450.3}
     return {
         "kind": "visit",
         "step": "data",
@@ -68,12 +77,22 @@ def visit(number: int) -> dict[str, Any]:
         "start": 1,
         "t_begin": t_s,
         "t_end": t_s + 1.5,
-        "asked": {"part mount angle": float(angle)},
-        "read": {"part mount angle": angle + 0.001},
-        "detectors": {"signal": dwell, "monitor": dwell},
+        "asked": asked,
+        "read": {role: value + 0.001 for role, value in asked.items()},
+        "detectors": detectors(t_s, number),
+        "conditions": {"diode": {"current_a": 0.0341, "voltage_v": 1.913}, "diode tec": tec, "oven": tec},
+        "present": {"part": True},
+        "confirmed": True,
         "status": "ok",
         "why": "",
     }
+
+
+def dark(number: int) -> dict[str, Any]:
+    """A dark after that many visits."""
+    t_s = 2.0 * number - 0.5
+    about = {"kind": "dark", "what": "dark", "step": "data", "when": "during", "how": "by shutter"}
+    return about | {"t_begin": t_s, "t_end": t_s + 0.4, "detectors": detectors(t_s, number)}
 
 
 def timed_s(do: Callable[[], object]) -> float:
@@ -113,8 +132,10 @@ def quantile(values: list[float]) -> float:
 
 
 def record_all(writer: RunWriter, count: int) -> None:
-    """Record every visit."""
+    """Record every visit, and a dark now and then."""
     for number in range(count):
+        if number % DARK_EVERY == 0:
+            writer.append(dark(number))
         writer.append(visit(number))
 
 

@@ -1,4 +1,4 @@
-"""Every driver against the twin of its kind: in virtual time, over TCP, and at a pseudo-terminal."""
+"""Every driver against the twin of its kind: in virtual time, and over every kind of wire in real time."""
 
 import itertools
 import statistics

@@ -207,7 +207,7 @@ def test_a_temperature_is_reached_and_comes_from_the_resistance(
 
     controller.set_temperature(30.0)
     controller.set_output(True)
-    wait(at, 0.5)
+    wait(at, 0.3)
 
     seen = controller.conditions()
     assert seen.is_on
@@ -222,11 +222,11 @@ def test_regulating_ends_and_the_plant_goes_back_to_the_room(
     controller.set_span(10.0, 40.0)
     controller.set_temperature(30.0)
     controller.set_output(True)
-    wait(at, 0.5)
+    wait(at, 0.3)
 
     assert controller.set_output(False) is False
 
-    wait(at, 0.5)
+    wait(at, 0.3)
     assert controller.conditions().temperature_c == pytest.approx(ROOM_C, abs=6 * NOISE_K)
 
 
@@ -318,7 +318,7 @@ def test_channels_of_one_rack_work_side_by_side_on_one_link(rack: Place) -> None
     tec.set_output(True)
     source.set_current(0.02)
     source.set_output(True)
-    wait(rack, 0.5)
+    wait(rack, 0.3)
 
     assert identities == {"simulated rack"}
     assert rack.wait_for(shutter.begin_set(True)) is True

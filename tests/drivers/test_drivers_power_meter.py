@@ -349,11 +349,6 @@ def test_a_saturation_that_is_given_is_taken() -> None:
     assert able.saturation_w == 5e-3
 
 
-@pytest.mark.parametrize("option", list(DRIVER.options))
-def test_every_option_says_what_it_means(option: str) -> None:
-    assert DRIVER.options[option].meaning
-
-
 def test_no_option_reaches_the_wire_by_itself(scpi: Bench) -> None:
     make: Callable[..., object] = DRIVER.open
 

@@ -22,7 +22,10 @@ from rigctl_drivers.scpi_codec import (
     parse_identity,
     parse_length_unit_m,
     parse_number,
+    parse_numbers,
+    parse_reading,
     parse_readings,
+    parse_register,
     parse_reply,
     parse_text,
     split_outside_quotes,
@@ -60,6 +63,14 @@ SAMPLES = (
     ),
     Sample("boolean", of_text(parse_bool), b"1", True),
     Sample("number", of_text(parse_number), b"+2.5E-03", 2.5e-3),
+    Sample(
+        "numbers of one setting",
+        of_text(parse_numbers, count=3),
+        b"1.12924E-03,2.34108E-04, 8.7755E-08",
+        (1.12924e-3, 2.34108e-4, 8.7755e-8),
+    ),
+    Sample("reading", of_text(parse_reading), b"-9.9E37", -math.inf),
+    Sample("status register", of_text(parse_register), b"+528", 528),
     Sample("unit of a wavelength", of_text(parse_length_unit_m), b"785.2", 1e-9),
     Sample("readings", of_text(parse_readings, count=2), b"1.5E-3,-2E-6", ((1.5e-3, -2e-6), Flag(0))),
     Sample("fields", of_text(split_outside_quotes, separator=";"), b'1;"a;b" ; 3', ("1", '"a;b"', "3")),
@@ -141,6 +152,30 @@ def test_readings_that_are_none_become_nan_and_their_flags_add_up(text: str, fla
     assert math.isnan(levels_w[0])
 
 
+@pytest.mark.parametrize(
+    ("text", "value"), [("1.5E-3", 1.5e-3), ("9.9E37", math.inf), ("-9.90000E+37", -math.inf), ("9.91E37", math.nan)]
+)
+def test_a_reading_beyond_what_can_be_shown_is_infinite(text: str, value: float) -> None:
+    assert parse_reading(text, address=ADDRESS) == pytest.approx(value, nan_ok=True)
+
+
+@pytest.mark.parametrize("text", ["-1", "32768", "1.0", "1E2", "", "#H10", "999999"])
+def test_a_status_register_is_a_whole_number_of_fifteen_bits(text: str) -> None:
+    with pytest.raises(FramingError, match="no status register"):
+        parse_register(text, address=ADDRESS)
+
+
+@pytest.mark.parametrize("text", ["1,2", "1,2,3,4", "1"])
+def test_a_setting_with_a_number_too_few_or_too_many_is_refused(text: str) -> None:
+    with pytest.raises(FramingError, match="instead of 3"):
+        parse_numbers(text, count=3, address=ADDRESS)
+
+
+def test_an_overload_among_the_numbers_of_a_setting_is_refused() -> None:
+    with pytest.raises(FramingError, match="no number a setting can have"):
+        parse_numbers("1,9.9E37,3", count=3, address=ADDRESS)
+
+
 def test_a_block_with_a_reading_too_few_is_refused() -> None:
     with pytest.raises(FramingError, match="2 readings instead of 3"):
         parse_readings("1,2", count=3, address=ADDRESS)
@@ -182,6 +217,20 @@ def test_a_number_read_back_may_be_rounded_to_its_digits_and_no_more(asked: floa
 def test_a_number_read_back_in_another_unit_is_compared_in_the_unit_asked() -> None:
     assert is_same_number(785.2e-9, "785.2", scale=1e-9)
     assert not is_same_number(785.2e-9, "785.2")
+
+
+@pytest.mark.parametrize(
+    ("asked", "text", "is_same"),
+    [
+        (0.0, "4.9E-06", True),
+        (0.0, "5.2E-06", False),
+        (0.0001234, "1.2E-04", True),
+        (0.0001234, "1.3E-04", False),
+        (0.034, "-3.4E-02", False),
+    ],
+)
+def test_a_number_may_be_rounded_to_the_steps_of_the_instrument(asked: float, text: str, is_same: bool) -> None:
+    assert is_same_number(asked, text, step=1e-5) == is_same
 
 
 @given(value=st.floats(1e-12, 1e12), digits=st.integers(4, 12))

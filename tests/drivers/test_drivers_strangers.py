@@ -22,13 +22,20 @@ from rigctl.links.family import Family
 from rigctl.links.link import Link
 from rigctl.links.tcp import TcpChannel
 from rigctl.runner.polling import complete
+from rigctl.thermistor import SteinhartHart
 from rigctl.timeline import WallTimeline
-from rigctl_drivers import power_meter, switch
+from rigctl_drivers import current_source, power_meter, relay, slide, switch, temperature_controller
+from rigctl_drivers.current_source import ScpiCurrentSource
 from rigctl_drivers.power_meter import ScpiPowerMeter
+from rigctl_drivers.relay import ScpiRelay
 from rigctl_drivers.scpi_family import SCPI, ScpiFamily
+from rigctl_drivers.slide import ScpiSlide
 from rigctl_drivers.switch import ScpiSwitch
+from rigctl_drivers.temperature_controller import ScpiTemperatureController
 
 scpipy = pytest.importorskip("scpipy.server")
+
+SENSOR = SteinhartHart(1.12924e-3, 2.34108e-4, 8.7755e-8)
 
 WORDS = {
     "INITiate:CONTinuous": "0",
@@ -91,6 +98,32 @@ def as_relays(stranger: Stranger) -> None:
     stranger.add("ROUTe:CLOSe <value>", lambda context, value: stranger.closed.add(value))
     stranger.add("ROUTe:OPEN <value>", lambda context, value: stranger.closed.discard(value))
     stranger.add("ROUTe:CLOSe? <value>", lambda context, value: int(value in stranger.closed))
+
+
+def as_driver_of_diodes(stranger: Stranger) -> None:
+    """A source on channel 1 and a controller on channel 2 of one instrument."""
+    kept = {
+        "SOURce1:CURRent:LEVel:IMMediate:AMPLitude": "0",
+        "SOURce1:CURRent:LIMit:AMPLitude": "0.2",
+        "SOURce1:VOLTage:PROTection:LEVel": "5",
+        "SOURce2:TEMPerature:SPOint": "25",
+        "SOURce2:TEMPerature:LIMit:LOW": "0",
+        "SOURce2:TEMPerature:LIMit:HIGH": "20",
+        "OUTPut1:STATe": "0",
+        "OUTPut2:STATe": "0",
+    }
+    stranger.kept |= kept
+    for name in kept:
+        stranger.keep(name)
+    constants = "SENSe2:TEMPerature:THERmistor:SHHart"
+    stranger.add(f"{constants} <a>, <b>, <c>", lambda context, a, b, c: stranger.write(constants, f"{a},{b},{c}"))
+    stranger.add(f"{constants}?", lambda context: stranger.kept[constants])
+    stranger.add("*IDN?", lambda context: "ACME,DRIVER,7,2.1")
+    stranger.add("MEASure1:CURRent?", lambda context: stranger.kept["SOURce1:CURRent:LEVel:IMMediate:AMPLitude"])
+    stranger.add("MEASure1:VOLTage?", lambda context: "1.67")
+    stranger.add("OUTPut1:PROTection:TRIPped?", lambda context: "0")
+    stranger.add("MEASure2:TEMPerature?", lambda context: "24.999")
+    stranger.add("MEASure2:RESistance?", lambda context: "10000.4")
 
 
 def wait_for_listener(port: int) -> None:
@@ -156,6 +189,14 @@ def shutter() -> Iterator[ScpiSwitch]:
         yield ScpiSwitch(link, with_defaults(dict(switch.DRIVER.options), channel=3))
 
 
+@pytest.fixture
+def diode_driver() -> Iterator[tuple[Link, ScpiCurrentSource, ScpiTemperatureController]]:
+    with linked(SCPI, as_driver_of_diodes) as link:
+        source = ScpiCurrentSource(link, with_defaults(dict(current_source.DRIVER.options)))
+        options = with_defaults(dict(temperature_controller.DRIVER.options), channel=2, thermistor=SENSOR)
+        yield link, source, ScpiTemperatureController(link, options)
+
+
 def test_a_foreign_head_is_identified_set_and_read(head: tuple[Link, ScpiPowerMeter]) -> None:
     link, meter = head
 
@@ -174,6 +215,67 @@ def test_a_foreign_relay_drives_the_shutter(shutter: ScpiSwitch) -> None:
     assert not shutter.is_open()
     assert shutter.begin_set(True).poll() is True
     assert shutter.begin_set(False).poll() is False
+
+
+def test_a_foreign_relay_drives_a_slide_and_a_contact() -> None:
+    with linked(SCPI, as_relays) as link:
+        carrier = ScpiSlide(link, with_defaults(dict(slide.DRIVER.options), channel=4))
+        contact = ScpiRelay(link, with_defaults(dict(relay.DRIVER.options), channel=5))
+
+        assert carrier.identify().model == contact.identify().model == "RELAYS"
+        assert carrier.is_in()
+        assert carrier.begin_set(False).poll() is False
+        assert contact.begin_set(True).poll() is True
+        assert not carrier.is_in()
+
+
+def test_a_foreign_source_is_driven_and_switched_off(
+    diode_driver: tuple[Link, ScpiCurrentSource, ScpiTemperatureController],
+) -> None:
+    _, source, _ = diode_driver
+
+    assert source.identify() == Identity("ACME", "DRIVER", "7", "2.1")
+    assert (source.set_limit(0.045), source.set_compliance(2.5)) == (0.045, 2.5)
+    assert source.set_current(0.034) == 0.034
+    assert source.set_output(True) is True
+    seen = source.conditions()
+    assert (seen.current_a, seen.voltage_v, seen.is_on, seen.is_tripped) == (0.034, 1.67, True, False)
+    assert source.set_output(False) is False
+    assert source.settings()["output"] == "off"
+
+
+def test_off_gets_through_to_a_foreign_source_whatever_was_sent_before(
+    diode_driver: tuple[Link, ScpiCurrentSource, ScpiTemperatureController],
+) -> None:
+    link, source, _ = diode_driver
+    source.set_output(True)
+    link.write(b"NO:SUCH:HEADER\n*ESR?\nSOURCE1:CURR")
+    link.mark_out_of_step()
+
+    assert source.set_output(False) is False
+    assert not source.conditions().is_on
+
+
+def test_a_foreign_controller_is_told_its_sensor_and_regulates(
+    diode_driver: tuple[Link, ScpiCurrentSource, ScpiTemperatureController],
+) -> None:
+    _, _, tec = diode_driver
+
+    assert tec.identify().model == "DRIVER"
+    tec.set_span(10.0, 40.0)
+    assert tec.set_temperature(25.0) == 25.0
+    assert tec.set_output(True) is True
+    seen = tec.conditions()
+    assert (seen.is_on, seen.is_at_limit, seen.resistance_ohm) == (True, False, 10000.4)
+    assert seen.temperature_c == pytest.approx(24.999, abs=1e-3)
+    assert tec.settings() == {
+        "setpoint_c": 25.0,
+        "lowest_c": 10.0,
+        "highest_c": 40.0,
+        "output": "on",
+        "thermistor": str(SENSOR),
+    }
+    assert tec.set_output(False) is False
 
 
 def test_a_question_that_a_foreign_parser_does_not_know_is_told_with_its_own_words(

@@ -19,11 +19,12 @@ from rigctl.timeline import Timeline, VirtualTimeline, WallTimeline
 
 T = TypeVar("T")
 
-Transport = Literal["loopback", "TCP", "pseudo-terminal"]
+Transport = Literal["loopback", "TCP", "pseudo-terminal", "HiSLIP"]
 
 ADDRESSES: dict[Transport, str] = {
     "TCP": "tcp://10.0.0.7:5025",
     "pseudo-terminal": "serial:///dev/ttyUSB0?baud=115200",
+    "HiSLIP": "visa://TCPIP0::10.0.0.9::hislip0::INSTR",
 }
 """Where instruments stand that are served at a port of that kind."""
 

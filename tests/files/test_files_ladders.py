@@ -1,11 +1,14 @@
 """Turns, ranges and values become angles; a step must divide what it is to fill."""
 
+import itertools
+
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from pydantic_core import PydanticCustomError
 
-from rigctl.files.ladders import MOST_VALUES, nearest_steps, values_of
+from rigctl.files.ladders import MOST_VALUES, joined, nearest_steps, there_and_back, values_of
+from rigctl.files.recipe import AxisKind
 
 
 def turn(turns: float, step: float, start: float | None = None) -> tuple[float, ...]:
@@ -44,7 +47,64 @@ def test_values_keep_their_order_and_may_repeat() -> None:
     assert values_of("angle", values=values) == (3.0, 1.0, 3.0)
 
 
+@pytest.mark.parametrize(
+    ("kind", "span", "step", "values"),
+    [
+        ("temperature", (20.0, 21.0), 0.1, tuple(round(20 + 0.1 * i, 1) for i in range(11))),
+        ("current", (0.0, 0.003), 0.001, (0.0, 0.001, 0.002, 0.003)),
+        ("current", (0.0165, 0.017), 0.00025, (0.0165, 0.01675, 0.017)),
+    ],
+)
+def test_temperatures_and_currents_are_the_numbers_that_people_would_write(
+    kind: AxisKind, span: tuple[float, float], step: float, values: tuple[float, ...]
+) -> None:
+    assert values_of(kind, span=span, step=step) == values
+
+
+def test_the_way_back_visits_the_point_of_return_once() -> None:
+    assert there_and_back([0.0, 1.0, 2.0]) == (0.0, 1.0, 2.0, 1.0, 0.0)
+
+
+def test_there_is_no_way_back_from_a_single_value() -> None:
+    assert there_and_back([3.0]) == (3.0,)
+
+
+def test_pieces_that_touch_share_a_value() -> None:
+    assert joined([(0.0, 1.0), (1.0, 1.5, 2.0), (5.0,)]) == (0.0, 1.0, 1.5, 2.0, 5.0)
+
+
+@given(pieces=st.lists(st.lists(st.integers(0, 3).map(float), min_size=1, max_size=4), min_size=1, max_size=4))
+def test_pieces_lose_no_value_but_where_they_touch(pieces: list[list[float]]) -> None:
+    touching = sum(a[-1] == b[0] for a, b in itertools.pairwise(pieces))
+
+    values = joined(pieces)
+
+    assert len(values) == sum(map(len, pieces)) - touching
+    assert {*values} == {value for piece in pieces for value in piece}
+
+
+@pytest.mark.parametrize(
+    ("kind", "step", "what", "near"),
+    [
+        ("temperature", 0.7, "steps of 0.7 K do not divide the range of 10 K", "steps of 0.625 K or 1 K"),
+        ("current", 0.0, "a step of 0 A leads nowhere", "a step above zero"),
+        ("current", 1e-6, "steps of 1 uA make more than 100000 values", "larger steps"),
+    ],
+)
+def test_steps_are_told_in_the_units_of_their_kind(kind: AxisKind, step: float, what: str, near: str) -> None:
+    with pytest.raises(PydanticCustomError) as caught:
+        values_of(kind, span=(0.0, 10.0), step=step)
+
+    assert caught.value.context is not None
+    assert (caught.value.context["what"], caught.value.context["expected"]) == (what, near)
+
+
+def test_the_nearest_steps_of_a_current_are_whole_microamperes() -> None:
+    assert nearest_steps(0.05, 0.007, "current") == pytest.approx((0.00625, 0.01))
+
+
 @given(visits=st.integers(min_value=1, max_value=MOST_VALUES), turns=st.integers(min_value=1, max_value=5))
+@settings(deadline=None)
 def test_any_whole_number_of_visits_makes_a_turn(visits: int, turns: int) -> None:
     angles = turn(turns, 360.0 * turns / visits)
 

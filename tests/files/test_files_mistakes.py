@@ -24,6 +24,13 @@ def test_a_place_has_one_mistake_since_later_ones_are_its_echo() -> None:
     assert told(mistakes.raise_if_any) == ["f.yaml:1:1: the cause"]
 
 
+def test_a_text_over_several_lines_is_told_on_one() -> None:
+    mistakes = Mistakes("f.yaml")
+    mistakes.add((1, 2), "k", "'5\n mW' is no quantity", nearest="5\nmW")
+
+    assert told(mistakes.raise_if_any) == ["f.yaml:1:2: '5 mW' is no quantity; did you mean '5 mW'?"]
+
+
 def test_several_things_may_be_missing_at_one_place() -> None:
     mistakes = Mistakes("f.yaml")
     mistakes.add((1, 1), "a", "a mistake")

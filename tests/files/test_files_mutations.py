@@ -7,13 +7,16 @@ from typing import TypeVar
 
 import pytest
 from files_cases import DRIVERS, RECIPE, RIG, StubBench, replaced
+from full_cases import BENCH, NIGHT
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigctl.errors import FileError
 from rigctl.files import match, parse_recipe, parse_rig
+from rigctl.files.arrangement import train_of
 from rigctl.files.recipe import Recipe
 from rigctl.files.rig import Rig
+from rigctl.plugins import find_drivers
 
 T = TypeVar("T")
 
@@ -40,6 +43,7 @@ PIECES = st.one_of(
     ),
     st.sampled_from(["nan", "-", "0", "1e999", "%", "+-", "deg", "'", '"', "|", ">", "#", "? ", "\n", "  ", "°"]),
     st.sampled_from(["polarizer", "retarder", "detector", "turn", "values: [1 deg]", "unknown", "steps", "dark"]),
+    st.sampled_from(["pick-off", "repeat: 3", "segments", "oven", "diode", "without", "each", "steady", "A", "degC"]),
     st.text(max_size=5),
 )
 
@@ -61,7 +65,9 @@ def shuffled_lines(draw: st.DrawFn, text: str) -> str:
     return "".join(draw(st.lists(st.sampled_from(lines), max_size=20)))
 
 
-MUTATED_RECIPES = st.one_of(edits(RECIPE), shuffled_lines(RECIPE), shuffled_lines(RIG + RECIPE), st.text())
+MUTATED_RECIPES = st.one_of(
+    edits(RECIPE), edits(NIGHT), shuffled_lines(RECIPE), shuffled_lines(NIGHT), shuffled_lines(RIG + RECIPE), st.text()
+)
 MUTATED_RIGS = st.one_of(edits(RIG), shuffled_lines(RIG), shuffled_lines(RIG + RECIPE), st.text())
 
 
@@ -85,17 +91,18 @@ def read_rig(text: str) -> Rig | None:
 
 
 @given(text=MUTATED_RECIPES)
-@settings(max_examples=400, deadline=timedelta(seconds=2))
+@settings(max_examples=400, deadline=timedelta(seconds=10))
 def test_a_damaged_recipe_is_read_or_its_mistakes_are_told(text: str) -> None:
     recipe = read_recipe(text)
 
     if recipe is not None:
         assert all(axis.values for step in recipe.steps for axis in step.sweep)
+        assert train_of(recipe).detectors
         assert recipe.optics[-1].kind == "detector"
 
 
 @given(text=MUTATED_RIGS)
-@settings(max_examples=400, deadline=timedelta(seconds=2))
+@settings(max_examples=400, deadline=timedelta(seconds=10))
 def test_a_damaged_rig_file_is_read_or_its_mistakes_are_told(text: str) -> None:
     rig = read_rig(text)
 
@@ -103,8 +110,30 @@ def test_a_damaged_rig_file_is_read_or_its_mistakes_are_told(text: str) -> None:
         assert all(rig.entry(role) is not None for role in rig.roles)
 
 
+@given(text=st.one_of(edits(BENCH), shuffled_lines(BENCH)))
+@settings(max_examples=200, deadline=timedelta(seconds=10))
+def test_a_damaged_full_rig_file_is_read_or_its_mistakes_are_told(text: str) -> None:
+    drivers = find_drivers()
+
+    rig = outcome(lambda: parse_rig(text, "b.yaml", drivers, None))
+
+    if rig is not None:
+        assert all(diode.on in rig.instruments for diode in rig.diodes.values())
+
+
+@given(recipe_text=edits(NIGHT), rig_text=edits(BENCH))
+@settings(max_examples=100, deadline=timedelta(seconds=10))
+def test_a_night_and_a_bench_that_can_be_read_match_or_it_is_told_why(recipe_text: str, rig_text: str) -> None:
+    drivers = find_drivers()
+    recipe = read_recipe(recipe_text)
+    rig = outcome(lambda: parse_rig(rig_text, "b.yaml", drivers, None))
+
+    if recipe is not None and rig is not None:
+        outcome(lambda: match(recipe, rig, drivers))
+
+
 @given(recipe_text=edits(RECIPE), rig_text=edits(RIG))
-@settings(max_examples=100, deadline=timedelta(seconds=2))
+@settings(max_examples=100, deadline=timedelta(seconds=10))
 def test_a_recipe_and_a_rig_that_can_be_read_match_or_it_is_told_why(recipe_text: str, rig_text: str) -> None:
     recipe, rig = read_recipe(recipe_text), read_rig(rig_text)
 

@@ -12,6 +12,7 @@ from rigctl.files.mistakes import Mistakes
 from rigctl.files.options import read_options
 from rigctl.files.part import Part
 from rigctl.interfaces import Option
+from rigctl.thermistor import EXAMPLE, Beta
 
 
 def read(text: str, option: Option) -> Any:
@@ -39,6 +40,10 @@ def read(text: str, option: Option) -> Any:
         ("k: 0012", Option("whole number"), 12),
         ("k: -3", Option("whole number"), -3),
         ("k: on", Option("choice", choices=("on", "off")), "on"),
+        ("k: 295.15 K", Option("temperature"), 22.0),
+        ("k: 0 deg", Option("angle", sign="not negative"), 0.0),
+        ("k: 1 deg", Option("angle", sign="positive"), 1.0),
+        ("k: beta 3976 K, 10 kOhm at 25 degC", Option("thermistor"), Beta(1e4, 25.0, 3976.0)),
         ("name: x", Option("power", default=1.0), 1.0),
         ("name: x", Option("text"), None),
     ],
@@ -50,6 +55,19 @@ def test_a_value_arrives_as_its_kind_says(written: str, option: Option, value: o
 @pytest.mark.parametrize(
     ("written", "option", "complaint"),
     [
+        ("k: 0 deg", Option("angle", sign="positive"), "'0 deg' is not above zero; expected an angle such as 22.5 deg"),
+        ("k: -1 deg", Option("angle", sign="not negative"), "'-1 deg' is negative; expected an angle such as 22.5 deg"),
+        ("k: 0", Option("whole number", sign="positive"), "'0' is not above zero; expected a number such as 1"),
+        (
+            "k: [0 W]",
+            Option("list of power", sign="positive"),
+            "'0 W' is not above zero; expected a power such as 2 mW",
+        ),
+        (
+            "k: 10 kohm",
+            Option("thermistor"),
+            f"'10 kohm' gives no constants of a thermistor; expected {EXAMPLE}",
+        ),
         ("k: 1e3", Option("whole number"), "'1e3' is no whole number; expected a number such as 7"),
         ("k: ٣", Option("whole number"), "'٣' is no whole number; expected a number such as 7"),
         (

@@ -255,14 +255,6 @@ def mistake(changes: Changes) -> tuple[str, str, str, str]:
             "one of 'mount 1', 'head 7' or 'shutter 1'",
             "head 7",
         ),
-        (
-            "signal: head 7,",
-            "signal: mount 1,",
-            "7:38",
-            "'mount 1' fills the role 'part mount' already",
-            "one role each",
-            "",
-        ),
         ("seed: 7", "seed: x", "8:19", "'x' is no whole number", "a number such as 7", ""),
         (
             "room light: 2 uW",

@@ -18,6 +18,9 @@ from rigctl.links.foreign import disconnected
         (errno.ETIMEDOUT, "no longer answers"),
         (errno.EHOSTUNREACH, "no way leads"),
         (errno.ENETUNREACH, "no way leads"),
+        (errno.ENOENT, "no such port"),
+        (errno.EACCES, "may not be opened"),
+        (errno.EIO, "the port is gone"),
         (errno.ENETDOWN, "the connection failed"),
     ],
 )

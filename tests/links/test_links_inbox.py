@@ -75,6 +75,15 @@ def test_a_line_feed_before_an_earlier_search_is_found_after_a_piece_was_cut() -
     assert inbox.take_line() == b"ef\n"
 
 
+@pytest.mark.parametrize(("at_most", "taken"), [(0, b""), (3, b"1.5"), (9, b"1.5\n")])
+def test_some_of_what_is_here_is_taken_without_waiting_for_more(at_most: int, taken: bytes) -> None:
+    inbox = Inbox("tcp://h:1")
+    inbox.add(b"1.5\n")
+
+    assert inbox.take_some(at_most) == taken
+    assert inbox.take_all() == b"1.5\n"[len(taken) :]
+
+
 def test_looking_takes_nothing_away() -> None:
     inbox = Inbox("tcp://h:1")
     inbox.add(b"abc")

@@ -1,16 +1,17 @@
 """Runs to test the run file with: a header with awkward words, every kind of record, every state of a run."""
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from datetime import datetime, timedelta, timezone
 from pathlib import Path
-from typing import Any
+from typing import Any, Protocol
 
 from rigctl.interfaces import Dwell, Flag
 from rigctl.record import (
     AxisLayout,
     Document,
     Header,
+    Run,
     RunWriter,
     StepLayout,
     create_run,
@@ -130,48 +131,73 @@ def records() -> list[dict[str, Any]]:
     ]
 
 
-def write(path: Path, *, durable: bool = False, header: Header = HEADER) -> RunWriter:
+@dataclass(frozen=True)
+class Case:
+    """A run to record: its header, its records, and the group of each step in the file."""
+
+    header: Header
+    records: Callable[[], list[dict[str, Any]]]
+    groups: Mapping[str, str]
+
+    def run(self) -> Run:
+        """What a file of it is made of."""
+        run = Run(self.header, is_live=False)
+        for record in self.records():
+            run.keep(record, run.parse(record))
+        return run
+
+
+TWO_STEPS = Case(HEADER, records, {"plate": "plate", "empty pair": "empty_pair"})
+
+
+def write(path: Path, case: Case = TWO_STEPS, *, durable: bool = False) -> RunWriter:
     """Record everything, and leave the run open."""
-    writer = create_run(path, header, durable=durable)
-    for record in records():
+    writer = create_run(path, case.header, durable=durable)
+    for record in case.records():
         writer.append(record)
     return writer
 
 
-def finished(path: Path) -> None:
+def finished(path: Path, case: Case = TWO_STEPS) -> None:
     """A run that went to its end."""
-    with write(path) as writer:
+    with write(path, case) as writer:
         writer.close("complete", t_s=42.0)
 
 
-def stopped(path: Path) -> None:
+def stopped(path: Path, case: Case = TWO_STEPS) -> None:
     """A run that was stopped on purpose."""
-    with write(path, durable=True) as writer:
+    with write(path, case, durable=True) as writer:
         writer.close("stopped", t_s=41.0, code=6, why="stopped by the operator")
 
 
-def killed(path: Path) -> None:
+def killed(path: Path, case: Case = TWO_STEPS) -> None:
     """A run whose program died: a view from its middle, and the journal with a torn line beside it."""
-    with write(path, durable=True) as writer:
+    with write(path, case, durable=True) as writer:
         writer.view()
     with path.with_name(path.name + ".journal").open("ab") as journal:
         journal.write(b'0badc0de 120 {"kind":"vis')
 
 
-def recovered(path: Path) -> None:
+def recovered(path: Path, case: Case = TWO_STEPS) -> None:
     """A run whose program died, and that was read since."""
-    killed(path)
+    killed(path, case)
     load_run(path)
 
 
-def view_only(path: Path) -> None:
+def view_only(path: Path, case: Case = TWO_STEPS) -> None:
     """A copy of the file alone, made while the run lasted."""
-    with write(path, durable=True) as writer:
+    with write(path, case, durable=True) as writer:
         writer.view()
     path.with_name(path.name + ".journal").unlink()
 
 
-STATES: Mapping[str, Callable[[Path], None]] = {
+class Record(Protocol):
+    """Brings a run file of a case about."""
+
+    def __call__(self, path: Path, case: Case = TWO_STEPS) -> None: ...
+
+
+STATES: Mapping[str, Record] = {
     "finished": finished,
     "stopped": stopped,
     "killed": killed,

@@ -75,14 +75,14 @@ def test_axes_are_named_after_role_and_quantity_slowest_first() -> None:
 def test_the_angle_read_back_is_a_variable_of_its_own() -> None:
     table = step_table(run_of([visit(0, [2])]), "plate")
 
-    assert_array_equal(table["part_mount_angle_readback"], [np.nan, np.nan, 10.001, np.nan])
-    assert units(table, "part_mount_angle_readback") == "deg"
+    assert_array_equal(table["part_mount_angle_read"], [np.nan, np.nan, 10.001, np.nan])
+    assert units(table, "part_mount_angle_read") == "deg"
 
 
 def test_an_angle_that_was_not_read_back_is_nan() -> None:
     table = step_table(run_of([visit(0, [2]) | {"read": {}}]), "plate")
 
-    assert np.isnan(table["part_mount_angle_readback"]).all()
+    assert np.isnan(table["part_mount_angle_read"]).all()
 
 
 def test_time_is_the_middle_of_the_dwells_counted_from_the_start() -> None:

@@ -9,6 +9,7 @@ from typing import Any
 import h5py
 import numpy as np
 import pytest
+from full_bench_cases import FULL_BENCH
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from record_cases import HEADER, RECIPE, finished, records, small_header, small_visit, stopped
@@ -148,6 +149,51 @@ def test_a_step_called_like_one_of_our_groups_gets_out_of_its_way(tmp_path: Path
     with opened(Run(replace(HEADER, steps=steps), is_live=False), tmp_path) as file:
         assert {"darks_2", "instrument_2"} <= set(file["entry"])
         assert file["entry"].attrs["default"] == "darks_2"
+
+
+def test_steps_whose_names_no_group_can_bear_are_found_under_plain_ones_with_their_name_beside(tmp_path: Path) -> None:
+    with opened(FULL_BENCH.run(), tmp_path) as file:
+        titles = {name: file["entry"][name].attrs["title"] for name in FULL_BENCH.groups.values()}
+
+    assert titles == {group: step for step, group in FULL_BENCH.groups.items()}
+
+
+def test_steps_that_differ_by_a_comma_only_have_groups_of_their_own(tmp_path: Path) -> None:
+    axes = HEADER.steps[0].axes
+    steps = (StepLayout("pair, again", axes), StepLayout("pair again", axes), StepLayout("pair; again", axes))
+
+    with opened(Run(replace(HEADER, steps=steps), is_live=False), tmp_path) as file:
+        found = {file["entry"][name].attrs["title"]: name for name in file["entry"] if name.startswith("pair")}
+
+    assert found == {"pair, again": "pair_again", "pair again": "pair_again_2", "pair; again": "pair_again_3"}
+
+
+def test_what_a_controller_said_over_the_run_is_a_log_with_its_start(tmp_path: Path) -> None:
+    with opened(FULL_BENCH.run(), tmp_path) as file:
+        log = file["/entry/environment/logs/oven_temperature"]
+
+        assert log.attrs["NX_class"] == "NXlog"
+        assert log["time"].attrs["start"] == HEADER.start.isoformat()
+        assert (log["time"].attrs["units"], log["value"].attrs["units"]) == ("s", "degC")
+        assert log["value"][:2].tolist() == [21.5, 21.9]
+        assert log["value"].dims[0][0] == log["time"]
+
+
+def test_a_run_without_conditions_has_no_logs(file: Any) -> None:
+    assert "logs" not in file["/entry/environment"]
+
+
+def test_sources_and_controllers_are_sensors_and_a_repeat_is_no_instrument(tmp_path: Path) -> None:
+    with opened(FULL_BENCH.run(), tmp_path) as file:
+        classes = {name: group.attrs["NX_class"] for name, group in file["/entry/instrument"].items()}
+        limit = file["/entry/instrument/oven/settings/limit_c"][()]
+
+    assert classes == {
+        **dict.fromkeys(("diode", "diode_tec", "oven"), "NXsensor"),
+        **dict.fromkeys(("exit_mount", "part_mount"), "NXpositioner"),
+        **dict.fromkeys(("signal", "monitor"), "NXdetector"),
+    }
+    assert limit == 60.0
 
 
 def test_the_principal_group_is_the_first_step(file: Any) -> None:

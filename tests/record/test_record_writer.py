@@ -179,6 +179,9 @@ class SlowDisk:
     def wait_until(self, instant_s: float) -> None:
         self.t_s = instant_s
 
+    def pulse(self) -> None:
+        pass
+
     def view(self, *_: object) -> None:
         self.views += 1
         self.t_s += self.view_takes_s

@@ -13,7 +13,7 @@ from rigctl.files import parse_recipe, parse_rig
 from rigctl.files.arrangement import train_of
 from rigctl.files.recipe import Recipe
 from rigctl.files.rig import Rig
-from rigctl.interfaces import Bench, Driver, Option, RoleKind
+from rigctl.interfaces import Bench, Driver, Option
 from rigctl.optics import reader
 from rigctl.plugins import find_bench_factory, find_drivers
 from rigctl_sim.bench import FACTORY, SimulatedBenchFactory
@@ -300,32 +300,3 @@ def test_every_key_of_simulated_has_a_meaning() -> None:
 
 def test_a_driver_of_somebody_else_has_no_keys() -> None:
     assert FACTORY.twin_options("another-driver") == {}
-
-
-ROLES: dict[str, RoleKind] = {
-    "part mount": "rotation stage",
-    "signal": "power meter",
-    'odd: "name" #1': "power meter",
-    "shutter": "shutter",
-}
-
-
-def test_the_default_rig_fills_every_role_with_an_instrument_of_its_own(
-    drivers: Mapping[str, Driver],
-) -> None:
-    rig = parse_rig(FACTORY.default_rig(ROLES), "default rig", drivers, FACTORY)
-
-    entries = [rig.entry(role) for role in ROLES]
-    kinds = [drivers[entry.driver].kind for entry in entries if entry]
-
-    assert kinds == list(ROLES.values())
-    assert len({entry.at for entry in entries if entry}) == len(ROLES)
-
-
-def test_the_default_rig_can_be_built(recipe: Recipe, drivers: Mapping[str, Driver]) -> None:
-    roles = cast(dict[str, RoleKind], {name: role.kind for name, role in recipe.roles.items()})
-    rig = parse_rig(FACTORY.default_rig(roles), "default rig", drivers, FACTORY)
-
-    bench = FACTORY.build(recipe, rig, 1)
-
-    assert all(bench.twin(entry.at).next_ready_s() is None for entry in rig.instruments.values())

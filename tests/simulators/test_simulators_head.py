@@ -38,6 +38,13 @@ def make_head(
     return HeadInBeam(World(source, malus, Way(mounts, shutters)), 0, stray_w=stray_w)
 
 
+def make_pair(noise: float) -> tuple[HeadInBeam, HeadInBeam]:
+    """Two heads in the light of one world; the second has stray light."""
+    source = Source(Steady(POWER_W), 0.0, SourceNoise(1, noise))
+    world = World(source, malus, Way({"analyser": Mount(Trajectory(0.0), 1.0)}))
+    return HeadInBeam(world, 0, stray_w=0.0), HeadInBeam(world, 0, stray_w=STRAY_W)
+
+
 def stepped(at_s: float, *, to: float = 1.0) -> Trajectory:
     """A shutter so fast that its ramp does not count."""
     shutter = Trajectory(1.0 - to)
@@ -195,3 +202,52 @@ def test_without_a_lag_a_reading_is_the_mean_of_the_light() -> None:
     mean_w = make_head(dial).mean_w(0.0, 9.0, time_constant_s=0.0)
 
     assert mean_w == pytest.approx(POWER_W / 2, rel=1e-9)
+
+
+def test_two_heads_that_read_at_the_same_time_see_the_same_noise() -> None:
+    one, other = make_pair(noise=1e-2)
+
+    levels = [head.mean_w(1.0, 1.1, time_constant_s=TAU_S) for head in (one, other)]
+
+    assert levels[0] == pytest.approx(levels[1] - STRAY_W, rel=1e-12)
+    assert abs(levels[0] / POWER_W - 1.0) > 1e-5
+
+
+def test_heads_of_different_lag_see_the_same_noise_too() -> None:
+    one, other = make_pair(noise=1e-2)
+
+    slow_w = one.mean_w(1.0, 1.1, time_constant_s=0.5)
+
+    assert slow_w == pytest.approx(other.mean_w(1.0, 1.1, time_constant_s=0.01) - STRAY_W, rel=1e-12)
+
+
+def test_stray_light_is_not_the_source_s_and_has_none_of_its_noise() -> None:
+    head = make_head(shutter=Trajectory(0.0), stray_w=STRAY_W, noise=1e-2)
+
+    assert {head.mean_w(at_s, at_s + 0.1, time_constant_s=TAU_S) for at_s in (1.0, 2.0, 3.0)} == {STRAY_W}
+
+
+def test_noise_stays_relative_while_something_moves() -> None:
+    """The ratio to a silent source is that of the resting light, whatever turns meanwhile."""
+    dials = [Trajectory(0.0), Trajectory(0.0)]
+    for dial in dials:
+        dial.glide(0.9, 30.0, 1.0)
+    silent, noisy = (make_head(dial, noise=noise) for dial, noise in zip(dials, (0.0, 1e-2), strict=True))
+
+    ratio = noisy.mean_w(1.0, 1.1, time_constant_s=TAU_S) / silent.mean_w(1.0, 1.1, time_constant_s=TAU_S)
+
+    resting_w = make_head(noise=1e-2).mean_w(1.0, 1.1, time_constant_s=TAU_S)
+    assert ratio == pytest.approx(resting_w / POWER_W, rel=1e-12)
+
+
+def test_a_cap_takes_light_and_stray_light_away_and_gives_them_back() -> None:
+    source = Source(Steady(POWER_W), 0.0, SourceNoise(1, 0.0))
+    world = World(source, malus, Way({"analyser": Mount(Trajectory(0.0), 1.0)}))
+    head = HeadInBeam(world, 0, stray_w=STRAY_W)
+
+    world.cap_by_hand(True, 1.0)
+    capped_w = head.mean_w(10.0, 10.1, time_constant_s=TAU_S)
+    world.cap_by_hand(False, 20.0)
+
+    assert capped_w == 0.0
+    assert head.mean_w(30.0, 30.1, time_constant_s=TAU_S) == pytest.approx(POWER_W + STRAY_W, rel=1e-12)

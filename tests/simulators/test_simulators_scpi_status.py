@@ -83,6 +83,36 @@ def test_one_bit_leaves_the_others_alone() -> None:
     assert register.condition == 16
 
 
+def test_a_bit_stays_set_while_any_channel_sets_it() -> None:
+    register = Register()
+    register.set_bit(8, True, channel=1)
+    register.set_bit(8, True, channel=2)
+
+    register.set_bit(8, False, channel=1)
+    assert register.condition == 8
+    register.set_bit(8, False, channel=2)
+    assert register.condition == 0
+
+
+def test_a_second_channel_raises_no_second_event() -> None:
+    register = Register()
+    register.set_bit(8, True, channel=1)
+    register.read_event()
+
+    register.set_bit(8, True, channel=2)
+
+    assert register.read_event() == 0
+
+
+def test_a_channel_that_never_set_a_bit_does_not_clear_it() -> None:
+    register = Register()
+    register.set_bit(8, True, channel=1)
+
+    register.set_bit(8, False, channel=2)
+
+    assert register.condition == 8
+
+
 @pytest.mark.parametrize(("enable", "is_reported"), [(0, False), (8, True), (16, False), (24, True)])
 def test_only_enabled_events_are_reported(enable: int, is_reported: bool) -> None:
     register = Register(event=8, enable=enable)

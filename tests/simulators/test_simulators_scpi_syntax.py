@@ -102,6 +102,17 @@ def test_nodes_stand_in_their_order_and_only_bracketed_ones_may_be_left_out(head
     assert complaints(header) == [-113]
 
 
+@pytest.mark.parametrize(("text", "value"), [("-40", -40.0), ("-0.04KCEL", -40.0), ("-10000MCEL", -10.0)])
+def test_bounds_below_zero_are_within_them(text: str, value: float) -> None:
+    assert number("CEL", -40.0, -10.0, default=-20.0)(text) == pytest.approx(value)
+
+
+@pytest.mark.parametrize("text", ["-40.001", "-9.999", "0"])
+def test_beyond_bounds_below_zero_is_out_of_range(text: str) -> None:
+    with pytest.raises(Complaint, match="-222"):
+        number("CEL", -40.0, -10.0, default=-20.0)(text)
+
+
 # SCPI-1999 volume 1, 6.2.5.2: numeric suffixes
 
 
@@ -111,6 +122,38 @@ def test_the_suffix_1_is_the_same_as_none() -> None:
 
 def test_another_suffix_is_out_of_range() -> None:
     assert complaints("SENSE2:POWER:RANGE?") == [-114]
+
+
+def by_channel() -> Grammar:
+    return Grammar(
+        [
+            Command("[SOURce#]:CURRent", lambda _: "first", channel=1),
+            Command("[SOURce#]:CURRent", lambda _: "second", channel=12),
+            Command("OUTPut#:STATe", lambda _: "third", channel=12),
+        ]
+    )
+
+
+@pytest.mark.parametrize(
+    ("message", "answer"),
+    [
+        (b"CURR", "first"),
+        (b"SOUR:CURR", "first"),
+        (b"SOURCE1:CURRENT", "first"),
+        (b"SOUR12:CURR", "second"),
+        (b"OUTP12:STAT", "third"),
+    ],
+)
+def test_a_suffix_names_a_channel(message: bytes, answer: str) -> None:
+    (unit,) = by_channel().parse(message)
+
+    assert unit.act is not None
+    assert unit.act(0.0) == answer
+
+
+@pytest.mark.parametrize("message", [b"SOUR2:CURR", b"SOUR0:CURR", b"OUTP:STAT", b"OUTP1:STAT"])
+def test_a_channel_that_is_not_there_is_out_of_range(message: bytes) -> None:
+    assert [unit.complaint for unit in by_channel().parse(message)] == [-114]
 
 
 def test_a_suffix_where_none_belongs_is_another_header() -> None:

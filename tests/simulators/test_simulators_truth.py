@@ -7,7 +7,16 @@ from collections.abc import Mapping
 import pytest
 
 from rigctl.optics import Detector, Element, Quantity, Train
-from rigctl_sim.truth import DRIFT_PER_H, EXTINCTION_SPREAD, RETARDANCE_WAVES, STRAY_PART, draw_truth
+from rigctl_sim.truth import (
+    COEFFICIENT_PER_K,
+    DRIFT_PER_H,
+    EXTINCTION_SPREAD,
+    FRACTION_SPREAD,
+    RETARDANCE_WAVES,
+    STRAY_PART,
+    draw_truth,
+    truth_at_levels,
+)
 
 POWER_W = 2e-3
 SEEDS = 400
@@ -155,3 +164,101 @@ def test_one_quantity_more_leaves_the_others_as_they_were() -> None:
     after = draw_truth(more, 1, given={})
 
     assert {name: after[name] for name in before} == before
+
+
+OVEN_LEVELS: Mapping[str, Mapping[str, float | None]] = {
+    "oven": {"22 degC": 22.0, "25 degC": 25.0, "28 degC": 28.0},
+    "step": {"empty": None, "plate": None},
+}
+COEFFICIENT = "part.temperature coefficient"
+
+
+def warm_train(each: str | None, coefficient: Quantity | None = None) -> Train:
+    """The usual train with its part in an oven, and a pick-off."""
+    usual = make_train()
+    retardance = Quantity("part.retardance", "retardance", 0.25, is_unknown=True, each=each)
+    exact = Quantity(COEFFICIENT, "coefficient", 0.0)
+    named = {
+        **usual.quantities,
+        retardance.name: retardance,
+        exact.name: coefficient or exact,
+        "tap.fraction": Quantity("tap.fraction", "fraction", 0.04, is_unknown=True),
+    }
+    part = Element("part", "retarder", "mount", warmed_by="oven", reference_temperature_c=25.0)
+    return Train((usual.elements[0], Element("tap", "pick-off"), part), usual.detectors, named)
+
+
+def drawn_from(train: Train, name: str) -> list[float]:
+    return [draw_truth(train, seed, given={})[name] for seed in range(SEEDS)]
+
+
+def test_the_fraction_of_a_pick_off_is_off_by_a_tenth_when_nobody_knows_better() -> None:
+    assert_normal(drawn_from(warm_train(None), "tap.fraction"), mean=0.04, sd=0.04 * FRACTION_SPREAD)
+
+
+def test_a_coefficient_that_the_recipe_leaves_out_is_none() -> None:
+    assert set(drawn_from(warm_train(None), COEFFICIENT)) == {0.0}
+
+
+def test_a_stated_coefficient_is_kept() -> None:
+    stated = Quantity(COEFFICIENT, "coefficient", -1e-4, 2e-5)
+
+    assert_normal(drawn_from(warm_train(None, stated), COEFFICIENT), mean=-1e-4, sd=2e-5)
+
+
+def test_an_unknown_coefficient_is_drawn_as_wide_as_that_of_quartz() -> None:
+    unknown = Quantity(COEFFICIENT, "coefficient", 0.0, is_unknown=True)
+
+    assert_normal(drawn_from(warm_train(None, unknown), COEFFICIENT), mean=0.0, sd=COEFFICIENT_PER_K)
+
+
+def test_a_retardance_sought_at_each_temperature_goes_with_temperature() -> None:
+    assert_normal(drawn_from(warm_train("oven"), COEFFICIENT), mean=0.0, sd=COEFFICIENT_PER_K)
+
+
+def test_a_retardance_sought_in_each_step_does_not() -> None:
+    assert set(drawn_from(warm_train("step"), COEFFICIENT)) == {0.0}
+
+
+def test_every_level_has_its_truth_from_one_draw() -> None:
+    train = warm_train("oven")
+    found = draw_truth(train, 1, given={})
+
+    levels = truth_at_levels(train, found, OVEN_LEVELS)
+
+    base, coefficient = found["part.retardance"], found[COEFFICIENT]
+    assert levels == pytest.approx(
+        {
+            "part.retardance @ 22 degC": base * (1.0 - 3.0 * coefficient),
+            "part.retardance @ 25 degC": base,
+            "part.retardance @ 28 degC": base * (1.0 + 3.0 * coefficient),
+        },
+        rel=1e-12,
+    )
+    assert coefficient != 0.0
+
+
+def test_steps_share_one_value() -> None:
+    train = warm_train("step")
+    found = draw_truth(train, 1, given={})
+
+    levels = truth_at_levels(train, found, OVEN_LEVELS)
+
+    assert levels == dict.fromkeys(["part.retardance @ empty", "part.retardance @ plate"], found["part.retardance"])
+
+
+def test_a_truth_without_levels_has_none() -> None:
+    train = warm_train(None)
+
+    assert truth_at_levels(train, draw_truth(train, 1, given={}), OVEN_LEVELS) == {}
+
+
+def test_what_the_oven_does_not_warm_is_the_same_at_each_of_its_temperatures() -> None:
+    stray = Quantity("signal.stray light", "power", 3e-9, is_free=True, each="oven")
+    train = warm_train(None).rewritten(stray)
+    found = draw_truth(train, 1, given={})
+
+    levels = truth_at_levels(train, found, OVEN_LEVELS)
+
+    assert set(levels.values()) == {found["signal.stray light"]}
+    assert len(levels) == 3

@@ -7,6 +7,8 @@ from itertools import pairwise
 import pytest
 
 from rigctl_sim.light_source import Source, Steady
+from rigctl_sim.plant import Plant, PlantMake
+from rigctl_sim.presence import Carried, Presence
 from rigctl_sim.source_noise import SourceNoise
 from rigctl_sim.trajectory import Trajectory
 from rigctl_sim.world import STEP_DEG, Mount, Way, World
@@ -164,3 +166,126 @@ def test_time_is_cut_at_every_knot_and_into_small_turns() -> None:
 
 def test_time_at_rest_is_one_piece() -> None:
     assert list(make_world().pieces(0.0, 10.0)) == [(0.0, 10.0)]
+
+
+Asked = tuple[float, float, frozenset[str]]
+
+
+class Asking:
+    """A reader that passes everything on, but less by a tenth for each kelvin above 22 and all without the plate."""
+
+    def __init__(self) -> None:
+        self.asked: list[Asked] = []
+
+    def __call__(
+        self, _angles: Mapping[str, float], power_w: float, temperatures: Mapping[str, float], absent: frozenset[str]
+    ) -> tuple[float]:
+        self.asked.append((power_w, temperatures.get("oven", 22.0), absent))
+        factor = 1.0 if "plate" in absent else 0.5 - 0.1 * (temperatures.get("oven", 22.0) - 22.0)
+        return (factor * power_w,)
+
+
+def make_oven() -> Plant:
+    return Plant(PlantMake(22.0, time_constant_s=4.0, slew_k_per_s=0.2, idle_time_constant_s=60.0))
+
+
+def test_the_light_follows_the_temperature_of_an_element() -> None:
+    oven = make_oven()
+    world = World(make_source(), Asking(), Way(plants={"oven": oven}))
+    oven.regulate(10.0, 24.0)
+
+    levels = [world.light_w(instant)[0] for instant in (5.0, 12.0, 1000.0)]
+
+    assert levels == pytest.approx([0.5 * POWER_W, (0.5 - 0.1 * 0.4) * POWER_W, 0.3 * POWER_W], rel=1e-9)
+
+
+def test_temperatures_are_too_slow_to_cut_time_by() -> None:
+    oven = make_oven()
+    world = World(make_source(), Asking(), Way(plants={"oven": oven}))
+
+    oven.regulate(10.0, 24.0)
+
+    assert world.rests_from_s() == -math.inf
+    assert list(world.pieces(10.0, 20.0)) == [(10.0, 20.0)]
+
+
+def test_a_temperature_at_rest_is_worked_out_once() -> None:
+    reader, oven = Asking(), make_oven()
+    world = World(make_source(), reader, Way(plants={"oven": oven}))
+    oven.regulate(10.0, 24.0)
+
+    for instant in range(1000, 1010):
+        world.light_w(float(instant))
+
+    assert len(reader.asked) == 1
+
+
+def test_an_element_half_in_the_beam_gets_half_of_it() -> None:
+    slide = Trajectory(1.0)
+    world = World(make_source(), Asking(), Way(presence=Presence({"plate": Carried(slide)})))
+    slide.glide(1.0, 0.0, 0.5)
+
+    levels = [world.light_w(instant)[0] for instant in (0.5, 1.25, 2.0)]
+
+    assert levels == pytest.approx([0.5 * POWER_W, 0.75 * POWER_W, POWER_W], rel=1e-12)
+
+
+def test_what_a_hand_takes_out_moves_like_anything_else() -> None:
+    world = World(make_source(), Asking(), Way())
+    before_s = world.rests_from_s()
+
+    world.take_out_by_hand("plate", True, 5.0)
+
+    assert (before_s, world.rests_from_s()) == (-math.inf, 5.1)
+    assert [world.light_w(instant)[0] for instant in (4.0, 6.0)] == [0.5 * POWER_W, POWER_W]
+
+
+def test_every_detector_gets_what_was_worked_out_for_the_first() -> None:
+    reader = Asking()
+    dial = Trajectory(0.0)
+    world = World(make_source(), reader, Way({"analyser": Mount(dial, 1.0)}))
+    dial.glide(0.0, 45.0, 3.0)
+
+    first = world.course(0.0, 2.0)
+    asked = len(reader.asked)
+
+    assert world.course(0.0, 2.0) == first
+    assert len(reader.asked) == asked > 0
+
+
+def test_a_course_is_whole() -> None:
+    dial = Trajectory(0.0)
+    dial.glide(0.0, 45.0, 3.0)
+
+    course = make_world(dial).course(-1.0, 5.0)
+
+    assert sum(duration for duration, *_ in course) == pytest.approx(6.0)
+    assert all(end == begin for (*_, end), (_, begin, *_) in pairwise(course))
+
+
+def test_the_past_is_remembered_even_when_much_of_it_is_asked_for() -> None:
+    dial = Trajectory(0.0)
+    dial.glide(0.0, 90.0, 900.0)
+    world = make_world(dial)
+    instants = [float(instant) for instant in range(900)]
+    first = [world.light_w(instant)[0] for instant in instants]
+
+    again = [world.light_w(instant)[0] for instant in instants]
+
+    assert again == first
+    assert first[450] == pytest.approx(0.5 * POWER_W, rel=1e-12)
+
+
+def test_a_world_in_which_nothing_can_move_is_at_rest() -> None:
+    world = World(make_source(), Asking(), Way())
+
+    assert world.rests_from_s() == -math.inf
+    assert world.light_w(3.0)[0] == 0.5 * POWER_W
+
+
+def test_the_source_s_noise_is_that_of_all_detectors() -> None:
+    noise = SourceNoise(1, 1e-2)
+    world = World(Source(Steady(POWER_W), 0.0, noise), malus, Way({"analyser": Mount(Trajectory(0.0), 1.0)}))
+
+    assert world.flicker(1.0, 1.1) == noise.mean(1.0, 1.1) != 0.0
+    assert world.light_w(1.05)[0] == POWER_W
