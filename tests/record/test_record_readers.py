@@ -82,25 +82,6 @@ def test_what_was_not_measured_is_declared_as_such_to_netcdf_and_hdf5(made: Made
         assert "_FillValue" not in axis.attrs
 
 
-def test_every_dimension_has_its_scale_so_that_no_reader_has_to_guess_by_length(path: Path) -> None:
-    with h5py.File(path, "r") as file:
-        for group, table in tables():
-            for variable in table.variables:
-                dims = file["entry"][group][variable.name].dims
-                assert [dim[0].name.rpartition("/")[2] for dim in dims] == list(variable.dims)
-            for scale in (*table.axes, *table.scales):
-                assert file["entry"][group][scale.name].is_scale
-
-
-def test_what_was_not_measured_is_declared_as_such_to_netcdf_and_hdf5(path: Path) -> None:
-    with h5py.File(path, "r") as file:
-        signal, axis = file["/entry/plate/signal"], file["/entry/plate/part_mount_angle"]
-
-        assert np.isnan(signal.attrs["_FillValue"]).all()
-        assert np.isnan(signal.fillvalue)
-        assert "_FillValue" not in axis.attrs
-
-
 @pytest.mark.parametrize("engine", ["h5netcdf", "netcdf4"])
 def test_xarray_opens_every_step_with_named_dimensions_units_and_times(made: Made, engine: str) -> None:
     import xarray
