@@ -4,7 +4,7 @@ It owns which records count: the last good attempt at each confirmed visit, and 
 monitor's readings take the source's wander out of the signal's. It fits nothing itself.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from math import prod
 from typing import TYPE_CHECKING
@@ -101,11 +101,21 @@ def truth_of(run: Run) -> Mapping[str, float]:
 
 
 def fit_run(run: Run) -> "Fit":
-    """Fit the train of a run's recipe to everything that the run measured."""
+    """Fit the train of a run's recipe to everything that the run measured, and note what it could not use."""
     from rigctl.polarimetry import fit
 
     data = run_data(run)
-    return fit(data.train, data.visits, data.observed)
+    fitted = fit(data.train, data.visits, data.observed)
+    return replace(fitted, notes=(*fitted.notes, *_left_out(data)))
+
+
+def _left_out(data: Data) -> Iterator[str]:
+    if data.saturated:
+        yield f"visits left out because a detector was overloaded: {data.saturated}"
+    if data.missing:
+        yield f"planned visits that were not measured: {data.missing}"
+    if data.unconfirmed:
+        yield f"visits left out because nobody confirmed what stood in the beam: {data.unconfirmed}"
 
 
 def _visit_row(visit: Visit, recipe: Recipe) -> "Row":
@@ -139,9 +149,7 @@ def _middle_s(dwells: Mapping[str, Dwell]) -> float:
     return sum(middles) / len(middles)
 
 
-def _observed(
-    dwells: Sequence[Mapping[str, Dwell]], lit: int, name: str, monitor: str
-) -> "Observed":
+def _observed(dwells: Sequence[Mapping[str, Dwell]], lit: int, name: str, monitor: str) -> "Observed":
     """Mean, sample standard deviation and number of each dwell's readings; flagged readings left out.
 
     With a monitor, each reading of a lit dwell is divided by what the monitor read in the same moment, over its mean

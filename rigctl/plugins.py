@@ -32,6 +32,8 @@ def find_drivers() -> Mapping[str, Driver]:
         driver = _loaded(point)
         if not isinstance(driver, Driver) or driver.name != point.name:
             raise PlanError(f"the plugin '{point.name}' is not a Driver of that name", do="Mend or remove its package.")
+        if driver.name in drivers and drivers[driver.name] is not driver:
+            raise PlanError(f"two packages bring a driver '{driver.name}'", do="Remove one of them.")
         drivers[driver.name] = driver
     return drivers
 

@@ -16,7 +16,6 @@ from typing import Protocol
 
 from rigctl.errors import StopRequestedError
 
-
 PULSE_S = 0.5
 """No wait is longer than this without a pulse."""
 
@@ -126,7 +125,6 @@ class WallTimeline:
             else:
                 poller.poll(whole_ms - 1)
             self.stop.check()
-
 
     def pulse(self) -> None:
         """Call `on_pulse`, such as a watchdog's heartbeat."""

@@ -4,14 +4,13 @@ One module a command; each imports what is heavy inside its function, so that `p
 """
 
 import sys
-import traceback
 from collections.abc import Sequence
 
 import typer
 
 from rigctl import __version__
 from rigctl.cli import check, fit, rehearse, run, schema, simulate, verify
-from rigctl.cli.console import complain
+from rigctl.cli.console import complain, complain_of_bug
 from rigctl.errors import PolrigError, UsageError
 
 BUG = 70
@@ -20,7 +19,6 @@ BUG = 70
 app = typer.Typer(
     name="polrig",
     help="Rehearse, run and fit unattended angle sweeps of polarizing optics.",
-    no_args_is_help=True,
     add_completion=False,
     rich_markup_mode=None,
     pretty_exceptions_enable=False,
@@ -47,18 +45,24 @@ for _command in (check, rehearse, run, simulate, fit, verify, schema):
 
 
 def run_command(arguments: Sequence[str] | None = None) -> int:
-    """Run one command line and return its exit code; an expected error is told without a traceback."""
+    """Run one command line and return its exit code; an expected error is told without a traceback.
+
+    Without any argument the help is shown, and the exit code is that of a wrong command line.
+    """
+    given = list(sys.argv[1:] if arguments is None else arguments)
     try:
-        code = app(args=arguments, standalone_mode=False)
+        code = app(args=given or ["--help"], standalone_mode=False)
     except typer.TyperException as error:
         complain(f"polrig: {error.format_message()}\n  `polrig COMMAND --help` tells what a command takes.")
         return UsageError.exit_code
     except PolrigError as error:
         complain(str(error))
         return error.exit_code
-    except Exception:  # noqa: BLE001  # a bug always shows its traceback
-        complain(traceback.format_exc() + "This is a bug in polrig; please report it with the lines above.")
+    except Exception as error:  # noqa: BLE001  # a bug always shows its traceback
+        complain_of_bug(error)
         return BUG
+    if not given:
+        return UsageError.exit_code
     return code if isinstance(code, int) else 0
 
 

@@ -5,8 +5,10 @@ A terminal that was closed, or a pipe whose reader left, must not end a run: suc
 
 import json
 import math
+import os
 import shutil
 import sys
+import traceback
 from collections.abc import Mapping
 from contextlib import suppress
 from typing import Any, TextIO
@@ -14,7 +16,10 @@ from typing import Any, TextIO
 
 def _write(stream: TextIO, text: str) -> None:
     with suppress(OSError, ValueError):
-        stream.write(text)
+        try:
+            stream.write(text)
+        except UnicodeEncodeError:  # a stream of few letters gets the others as escapes
+            stream.write(text.encode(stream.encoding, "backslashreplace").decode(stream.encoding))
         stream.flush()
 
 
@@ -26,6 +31,12 @@ def say(text: str) -> None:
 def complain(text: str) -> None:
     """Print what went wrong, on standard error."""
     _write(sys.stderr, text + "\n")
+
+
+def complain_of_bug(error: BaseException) -> None:
+    """Print a bug with its traceback, on standard error."""
+    lines = "".join(traceback.format_exception(error))
+    complain(lines + "This is a bug in polrig; please report it with the lines above.")
 
 
 def say_json(value: Mapping[str, Any]) -> None:
@@ -79,8 +90,15 @@ class TerminalProgress:
         self._rewrite("")
 
     def _rewrite(self, text: str) -> None:
-        width = shutil.get_terminal_size().columns
-        _write(sys.stderr, "\r\x1b[K" + text[: max(width - 1, 0)])
+        _write(sys.stderr, "\r\x1b[K" + text[: max(_columns() - 1, 0)])
+
+
+def _columns() -> int:
+    """Width of the terminal on standard error; standard output may go elsewhere."""
+    with suppress(OSError, ValueError):
+        if columns := os.get_terminal_size(sys.stderr.fileno()).columns:
+            return columns
+    return shutil.get_terminal_size().columns
 
 
 class LogProgress:

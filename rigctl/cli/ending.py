@@ -2,7 +2,7 @@
 
 from typing import TYPE_CHECKING, Any
 
-from rigctl.cli.console import complain, duration, say, say_json
+from rigctl.cli.console import complain, complain_of_bug, duration, say, say_json
 from rigctl.cli.show import fit_as_dict, fit_lines
 from rigctl.errors import NotSafeError, PolrigError, UndecidedError
 
@@ -15,7 +15,12 @@ def tell_outcome(job: "Job", outcome: "Outcome", lead: str, *, as_json: bool) ->
     from rigctl.estimates import asks_for_anything, truth_of
     from rigctl.record import load_run
 
-    run = load_run(job.path)
+    _complain_about(outcome)  # before anything that may fail: the beam may be on
+    try:
+        run = load_run(job.path)
+    except PolrigError as error:
+        complain(str(error))
+        return outcome.exit_code or error.exit_code
     answer: dict[str, Any] = {
         "file": str(job.path),
         "status": run.status,
@@ -27,7 +32,6 @@ def tell_outcome(job: "Job", outcome: "Outcome", lead: str, *, as_json: bool) ->
     if not as_json:
         say(lead)
         say(f"run file: {job.path}  ({answer['visits']} visits, {duration(run.duration_s)}, {run.status})")
-    _complain_about(outcome)
     fitted, code = _fit(run, outcome.exit_code) if asks_for_anything(run) else (None, outcome.exit_code)
     answer["exit_code"] = code
     if as_json:
@@ -36,8 +40,6 @@ def tell_outcome(job: "Job", outcome: "Outcome", lead: str, *, as_json: bool) ->
         say("")
         for line in fit_lines(fitted, truth_of(run)):
             say(line)
-    if outcome.bug is not None:
-        raise outcome.bug
     return code
 
 
@@ -47,7 +49,9 @@ def _complain_about(outcome: "Outcome") -> None:
             complain(f"'{step.role}' could not be confirmed {step.wanted}: {step.trouble}")
     if outcome.exit_code == NotSafeError.exit_code:
         complain("THE BEAM COULD NOT BE CONFIRMED BLOCKED. Treat it as on: go and look.")
-    if outcome.why:
+    if outcome.bug is not None:
+        complain_of_bug(outcome.bug)
+    elif outcome.why:
         complain(outcome.why)
 
 

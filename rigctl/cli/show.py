@@ -62,11 +62,24 @@ def _row(estimate: "Estimate", truth: Mapping[str, float]) -> tuple[str, str, st
     )
 
 
+def _scale_and_unit_of(estimate: "Estimate") -> tuple[float, str]:
+    return scale_and_unit(estimate.kind, max(abs(estimate.value), estimate.u))
+
+
 def _truth_text(estimate: "Estimate", truth: Mapping[str, float]) -> str:
     if estimate.name not in truth:
         return ""
-    scale, unit = scale_and_unit(estimate.kind, max(abs(estimate.value), estimate.u))
-    return f"truth {truth[estimate.name] * scale:.{decimals_for(estimate.u * scale)}f} {unit}".rstrip()
+    scale, unit = _scale_and_unit_of(estimate)
+    true = comparable_truth(estimate.kind, estimate.value, truth[estimate.name])
+    return f"truth {true * scale:.{decimals_for(estimate.u * scale)}f} {unit}".rstrip()
+
+
+def comparable_truth(kind: str, value: float, truth: float) -> float:
+    """Return a truth so that it can be compared with an estimate: of an angle, the nearest modulo 180 deg.
+
+    An axis has no direction, so angles that differ by half a turn are the same.
+    """
+    return value + math.remainder(truth - value, 180.0) if kind == "angle" else truth
 
 
 def _remark(estimate: "Estimate") -> str:
@@ -74,7 +87,7 @@ def _remark(estimate: "Estimate") -> str:
     is_resolved = estimate.kind == "ratio" and estimate.value > 3.0 * estimate.u > 0.0
     written = [f"that is {1.0 / estimate.value:.4g}:1"] if is_resolved else []
     if estimate.interval is not None:
-        low, high = (value * scale_and_unit(estimate.kind, estimate.value)[0] for value in estimate.interval)
+        low, high = (value * _scale_and_unit_of(estimate)[0] for value in estimate.interval)
         written.append(f"95 %: {low:.4g} to {high:.4g}")
     return "; ".join([*written, *([estimate.note] if estimate.note else [])])
 
@@ -139,5 +152,6 @@ def fit_as_dict(fit: "Fit", truth: Mapping[str, float]) -> dict[str, Any]:
     values = as_dict(fit)
     for estimate in values["estimates"]:
         if estimate["name"] in truth:
-            estimate["truth"] = truth[estimate["name"]]
+            true = truth[estimate["name"]]
+            estimate["truth"] = comparable_truth(estimate["kind"], estimate["value"], true)
     return values

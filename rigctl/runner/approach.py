@@ -3,9 +3,18 @@
 Pure arithmetic on angles; who turns the mount is elsewhere.
 """
 
+from dataclasses import dataclass
 from typing import Literal
 
 Approach = Literal["from below", "from above", "either"]
+
+
+@dataclass(frozen=True, slots=True)
+class Standing:
+    """Where a mount stands after a completed move, deg, and the approach by which it came there."""
+
+    angle_deg: float
+    approach: Approach
 
 
 def waypoints(
@@ -28,3 +37,19 @@ def waypoints(
     if last_deg is not None and sense * (target_deg - last_deg) > 0.0:
         return (target_deg,)
     return (target_deg - sense * 2.0 * backlash_deg, target_deg)
+
+
+def way_to(
+    target_deg: float, approach: Approach, *, standing: Standing | None, backlash_deg: float
+) -> tuple[float, ...]:
+    """Return the angles to move to, in order; none where the mount stands there and came by the same approach.
+
+    Parameters
+    ----------
+    standing
+        None where the mount's last move is unknown or did not end.
+    """
+    last_deg = standing.angle_deg if standing is not None and standing.approach == approach else None
+    if last_deg == target_deg:
+        return ()
+    return waypoints(last_deg, target_deg, approach, backlash_deg=backlash_deg)

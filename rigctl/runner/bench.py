@@ -30,7 +30,7 @@ from rigctl.runner.limits import LimitedController, LimitedSource, controller_li
 from rigctl.timeline import Timeline
 
 OpenChannel = Callable[[str, Opening], Channel]
-"""Opens the channel to an address, as the instrument's family wants it opened: a wire on hardware, a twin in a rehearsal."""
+"""Opens the channel to an address, as the instrument's family wants it opened; in a rehearsal, to its twin."""
 
 EMITTING = ("current source", "shutter")
 """Kinds of role that decide whether light leaves the bench."""
@@ -54,6 +54,7 @@ class OpenBench:
     has_let_light_in: bool = False
     """Whether this run ever told the shutter to open."""
     links: dict[str, Link] = field(default_factory=dict)
+    capabilities: dict[str, Capabilities] = field(default_factory=dict)
     instruments: dict[str, Instrument] = field(default_factory=dict)
     """Every instrument by its role, in the order of the recipe, for identifying and reading settings."""
 
@@ -73,6 +74,7 @@ class OpenBench:
     def add(self, role: str, kind: str, instrument: Any) -> None:
         """Put an instrument into its role; a source or controller goes behind its limits."""
         self.instruments[role] = instrument
+        self.capabilities[role] = instrument.capabilities
         if kind == "current source":
             limits = source_limits(self.rig, self.entries[role], instrument.capabilities)
             self.sources[role] = LimitedSource(instrument, limits, role)

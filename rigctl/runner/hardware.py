@@ -70,8 +70,6 @@ def real_job(  # noqa: PLR0913  # a run is put together from this many independe
         person=person,
         progress=progress,
         path=path,
-        header=make_header(
-            recipe, rig, start=timeline.start, identifier=identifier, operator=operator, part=part
-        ),
+        header=make_header(recipe, rig, start=timeline.start, identifier=identifier, operator=operator, part=part),
         guard=guard,
     )

@@ -164,7 +164,7 @@ class LimitedSource:
         self.is_on = True
 
     def switch_off(self) -> bool:
-        """Set zero, switch the output off and return whether it reads back on; the second follows whatever the first."""
+        """Set zero, switch the output off, whatever became of the zero, and return whether it reads back on."""
         try:
             self._source.set_current(0.0)
             self.set_a = 0.0
@@ -233,7 +233,8 @@ def refuse_beyond_limits(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver]
     ------
     `LimitError` naming every setpoint that lies beyond; nothing was sent.
     """
-    beyond = [text for role, value in _setpoints(recipe) if (text := _beyond(recipe, rig, drivers, role=role, value=value))]
+    found = (_beyond(recipe, rig, drivers, role=role, value=value) for role, value in _setpoints(recipe))
+    beyond = [text for text in found if text]
     if beyond:
         raise LimitError(
             "; ".join(dict.fromkeys(beyond)),
@@ -259,11 +260,11 @@ def _beyond(recipe: Recipe, rig: Rig, drivers: Mapping[str, Driver], *, role: st
     able = drivers[entry.driver].capabilities(entry.options)
     if isinstance(able, SourceCapabilities):
         bound = source_limits(rig, entry, able).current_a
-        is_beyond = value > bound.value
-        return f"'{role}' is to go to {value * 1e3:.6g} mA, beyond {bound.value * 1e3:.6g} mA of {bound.owner}" * is_beyond
+        if value > bound.value:
+            return f"'{role}' is to go to {value * 1e3:.6g} mA, beyond {bound.value * 1e3:.6g} mA of {bound.owner}"
     if isinstance(able, ControllerCapabilities):
         limits = controller_limits(rig, entry, able, cooled=cooled_diodes(recipe, rig, role))
         bound = limits.low_c if value < limits.low_c.value else limits.high_c
-        is_beyond = not limits.low_c.value <= value <= limits.high_c.value
-        return f"'{role}' is to go to {value:.6g} degC, beyond {bound.value:.4g} degC of {bound.owner}" * is_beyond
+        if not limits.low_c.value <= value <= limits.high_c.value:
+            return f"'{role}' is to go to {value:.6g} degC, beyond {bound.value:.4g} degC of {bound.owner}"
     return ""

@@ -47,7 +47,7 @@ class Measuring:
         self.darkness = Darkness(bench, timeline, self.visiting, person)
         self.presence = Presence(bench, timeline, person)
         self.total, self.done, self.began_s = count_visits(recipe), 0, 0.0
-        self.expected_s = Forecast(recipe, {r: i.capabilities for r, i in bench.instruments.items()}).duration_s()
+        self.expected_s = Forecast(recipe, bench.capabilities).duration_s()
 
     def measure(self) -> None:
         """Do everything that the recipe asks for."""

@@ -9,7 +9,9 @@ from typing import Protocol
 class Person(Protocol):
     """Somebody beside the bench."""
 
-    is_there: bool
+    @property
+    def is_there(self) -> bool:
+        """Whether anybody can be asked at all."""
 
     def block_beam(self) -> None:
         """Ask for something opaque in the beam at the source; returns when it is there."""
@@ -51,11 +53,11 @@ class NobodyThere:
         """Refuse."""
         raise _nobody()
 
-    def take_out(self, element: str) -> None:
+    def take_out(self, element: str) -> None:  # noqa: ARG002  # nobody hears it
         """Refuse."""
         raise _nobody()
 
-    def put_in(self, element: str) -> None:
+    def put_in(self, element: str) -> None:  # noqa: ARG002
         """Refuse."""
         raise _nobody()
 

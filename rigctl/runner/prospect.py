@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from rigctl.optics import Row
     from rigctl.polarimetry import Prediction
 
+
 def planned_rows(recipe: Recipe, *, duration_s: float) -> "list[Row]":
     """Return the visits of a recipe and its darks, evenly spread in time, as rows for a train."""
     from rigctl.optics import Row

@@ -84,9 +84,7 @@ def rehearsal_job(  # noqa: PLR0913  # a rehearsal is put together from this man
         recipe=recipe,
         rig=rig,
         drivers=drivers,
-        open_channel=lambda address, _opening: wrap(
-            LoopbackChannel(address, bench.twin(address), timeline), timeline
-        ),
+        open_channel=lambda address, _opening: wrap(LoopbackChannel(address, bench.twin(address), timeline), timeline),
         timeline=timeline,
         person=SimulatedPerson(bench, timeline),
         progress=progress,

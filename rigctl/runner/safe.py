@@ -66,9 +66,7 @@ def is_beam_off(steps: tuple[SafeStep, ...]) -> bool:
     return all(step.is_confirmed for step in sources or shutters)
 
 
-def _steps(
-    bench: OpenBench, timeline: Timeline, *, is_success: bool
-) -> Iterator[tuple[str, str, Callable[[], None]]]:
+def _steps(bench: OpenBench, timeline: Timeline, *, is_success: bool) -> Iterator[tuple[str, str, Callable[[], None]]]:
     if bench.shutter is not None:
         yield bench.shutter_role, CLOSED, partial(_close, bench.shutter, timeline)
     for role, source in bench.sources.items():

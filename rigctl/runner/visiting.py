@@ -10,7 +10,7 @@ from typing import Any
 from rigctl.files.recipe import Axis, Step
 from rigctl.interfaces import Dwell, Flag
 from rigctl.record.records import dwell_record
-from rigctl.runner.approach import waypoints
+from rigctl.runner.approach import Standing, way_to
 from rigctl.runner.bench import OpenBench
 from rigctl.runner.plan import Visit, axis_name, settle_s
 from rigctl.runner.polling import complete
@@ -27,7 +27,7 @@ class Visiting:
         self.bench, self.timeline, self.climate = bench, timeline, climate
         self.used_ranges_w: dict[str, set[float]] = {role: set() for role in bench.meters}
         self._ranges_w: dict[str, float] = {}
-        self._standing_deg: dict[str, float] = {}
+        self._standing: dict[str, Standing] = {}
         self._read_deg: dict[str, float] = {}
 
     def use_range(self, role: str, power_w: float) -> float:
@@ -50,7 +50,7 @@ class Visiting:
 
     def forget_positions(self) -> None:
         """Trust no angle: the next approach starts from the far side."""
-        self._standing_deg.clear()
+        self._standing.clear()
 
     def take(self, visit: Visit, step: Step) -> Record:
         """Bring everything there, settle and dwell; return the visit's record without its attempt and status."""
@@ -109,19 +109,17 @@ class Visiting:
         """Turn every mount that is not there yet, all together, each from its own side."""
         ways = {axis.role: way for axis in axes if (way := self._way(axis, asked[axis.role]))}
         for role in ways:
-            self._standing_deg.pop(role, None)
+            self._standing.pop(role, None)
         while ways:
             moves = {role: self.bench.stages[role].begin_move(way.pop(0)) for role, way in ways.items()}
             self._read_deg.update(complete(self.timeline, moves))
             ways = {role: way for role, way in ways.items() if way}
-        self._standing_deg.update({axis.role: asked[axis.role] for axis in axes})
+        self._standing.update({axis.role: Standing(asked[axis.role], axis.approach) for axis in axes})
 
     def _way(self, axis: Axis, target_deg: float) -> list[float]:
-        last_deg = self._standing_deg.get(axis.role)
-        if last_deg == target_deg:
-            return []
         backlash_deg = self.bench.stages[axis.role].capabilities.backlash_deg
-        return list(waypoints(last_deg, target_deg, axis.approach, backlash_deg=backlash_deg))
+        standing = self._standing.get(axis.role)
+        return list(way_to(target_deg, axis.approach, standing=standing, backlash_deg=backlash_deg))
 
 
 def _read_back(step: Step, conditions: Mapping[str, Mapping[str, float]]) -> dict[str, float]:

@@ -2,7 +2,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from rigctl.runner.approach import Approach, waypoints
+from rigctl.runner.approach import Approach, Standing, way_to, waypoints
 
 angles = st.floats(-720, 720).map(lambda value: round(value, 3))
 
@@ -38,3 +38,16 @@ def test_the_last_move_always_comes_from_the_wanted_side(
     assert way[-1] == target
     assert before is not None
     assert (target - before > 0) == (approach == "from below")
+
+
+def test_a_mount_that_stands_there_and_came_the_same_way_does_not_move() -> None:
+    assert way_to(45.0, "from below", standing=Standing(45.0, "from below"), backlash_deg=0.1) == ()
+
+
+def test_a_mount_that_came_from_the_other_side_starts_from_the_far_side() -> None:
+    """Its gear lies on the other flank: neither standing still nor a small move would take the play out."""
+    came_from_below = Standing(45.0, "from below")
+
+    for target in (45.0, 44.95):
+        way = way_to(target, "from above", standing=came_from_below, backlash_deg=0.1)
+        assert way == pytest.approx((target + 0.2, target))

@@ -65,7 +65,6 @@ def test_a_stop_request_ends_a_ramp_where_it_is(timeline: VirtualTimeline) -> No
     source = Source()
     limited = LimitedSource(source, LIMITS, "diode")
 
-
     timeline.stop.request("SIGINT")
     with pytest.raises(StopRequestedError):
         ramp(limited, 0.03, timeline)

@@ -89,22 +89,28 @@ def rig(
 
 
 def diode(current_a: float, **more: object) -> Diode:
-    values: dict[str, object] = {"power_w": None, "compliance_v": None, "temperature_c": None, "label_class": "3B", **more}
+    values: dict[str, object] = {
+        "power_w": None,
+        "compliance_v": None,
+        "temperature_c": None,
+        "label_class": "3B",
+        **more,
+    }
     return Diode(name="D-1", on="source 1", current_a=current_a, **values)  # type: ignore[arg-type]
 
 
-@pytest.mark.parametrize(
-    ("of_diode", "of_rig", "of_instrument"), list(itertools.permutations([0.03, 0.05, 0.07]))
-)
-def test_the_tightest_of_diode_rig_and_instrument_wins(
-    of_diode: float, of_rig: float, of_instrument: float
-) -> None:
+@pytest.mark.parametrize(("of_diode", "of_rig", "of_instrument"), list(itertools.permutations([0.03, 0.05, 0.07])))
+def test_the_tightest_of_diode_rig_and_instrument_wins(of_diode: float, of_rig: float, of_instrument: float) -> None:
     made, entry = rig(diodes={"D-1": diode(of_diode)}, limits={"current": of_rig})
     able = SourceCapabilities(of_instrument, 5.0, 1e-6)
 
     bound = source_limits(made, entry, able).current_a
 
-    owners = {of_diode: "the diode 'D-1'", of_rig: "the rig's limit of 'source 1'", of_instrument: "the instrument 'source 1'"}
+    owners = {
+        of_diode: "the diode 'D-1'",
+        of_rig: "the rig's limit of 'source 1'",
+        of_instrument: "the instrument 'source 1'",
+    }
     assert bound == Bound(0.03, owners[0.03])
 
 
