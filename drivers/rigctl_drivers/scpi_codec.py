@@ -48,9 +48,10 @@ class Reply:
 
 def parse_text(line: bytes, *, address: str) -> str:
     """Read a reply line as text: printable ASCII and nothing else."""
-    if any(not 32 <= byte < 127 for byte in line):
+    text = line.decode("latin-1")
+    if not (text.isascii() and text.isprintable()):
         raise no_reply("bytes that are no text", line, address=address)
-    return line.decode("ascii")
+    return text
 
 
 def split_outside_quotes(text: str, separator: str, *, address: str) -> tuple[str, ...]:
@@ -60,16 +61,15 @@ def split_outside_quotes(text: str, separator: str, *, address: str) -> tuple[st
     ------
     IEEE 488.2-1992, string response data and response message unit separator; from memory.
     """
-    parts, start, is_quoted = [], 0, False
-    for place, letter in enumerate(text):
-        if letter == '"':
-            is_quoted = not is_quoted
-        elif letter == separator and not is_quoted:
-            parts.append(text[start:place].strip())
-            start = place + 1
-    if is_quoted:
+    pieces = text.split('"')  # every other one stands within quotes
+    if len(pieces) % 2 == 0:
         raise no_reply("a quote that is not closed", text.encode(), address=address)
-    return (*parts, text[start:].strip())
+    parts = pieces[0].split(separator)
+    for quoted, plain in zip(pieces[1::2], pieces[2::2], strict=True):
+        first, *more = plain.split(separator)
+        parts[-1] += f'"{quoted}"{first}'
+        parts += more
+    return tuple(part.strip() for part in parts)
 
 
 def parse_complaint(text: str, *, address: str) -> Complaint:
