@@ -124,8 +124,10 @@ class HislipPort:
                 connection.send(_unknown(piece))
 
     def forget(self, connection: _Connection) -> None:
-        """A connection has ended; a session ends with either of its two."""
+        """A connection has ended; a session ends with either of its two, once its last words were heard."""
         self._connections.remove(connection)
+        if connection is self._async and self._sync is not None:
+            self._sync.client.let_leave()
         if connection in (self._sync, self._async):
             self._end_session()
 

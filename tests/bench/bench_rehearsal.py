@@ -9,6 +9,7 @@ from pathlib import Path
 
 from rigctl.files import load_recipe, match, parse_rig
 from rigctl.links.channel import Channel
+from rigctl.links.family import Opening
 from rigctl.links.loopback import LoopbackChannel
 from rigctl.links.tap import TappedChannel
 from rigctl.plugins import find_bench_factory, find_drivers
@@ -47,7 +48,7 @@ def make_job(folder: Path, seed: int, sink: io.StringIO | None = None) -> Job:
 def bare_exchanges_per_second(folder: Path) -> float:
     """One status query after another on the twin's loopback, with nothing around it."""
     job = make_job(folder, 99)
-    channel = job.open_channel(job.rig.instruments[job.rig.roles["signal"]].at)
+    channel = job.open_channel(job.rig.instruments[job.rig.roles["signal"]].at, Opening())
     assert isinstance(channel, LoopbackChannel)
     began_s = time.perf_counter()
     for _ in range(20_000):

@@ -246,6 +246,18 @@ def test_a_twin_that_hangs_up_ends_the_session(served: Served) -> None:
         assert (sync.hear(), aside.hear()) == (None, None)
 
 
+@pytest.mark.parametrize("leaves", [0, 1])
+def test_the_last_words_of_a_client_are_heard_whichever_connection_it_closes_first(served: Served, leaves: int) -> None:
+    for number in range(20):
+        with session(served) as connections:
+            connections[0].say(data(b"OUTP %d\n" % number))
+            connections[leaves].socket.close()
+    with session(served) as (sync, _):
+        sync.ask(data(b"ECHO? 1\n"))
+
+    assert served.twin.heard == [*(b"OUTP %d" % number for number in range(20)), b"ECHO? 1"]
+
+
 def test_a_reply_that_nobody_waits_for_is_lost(served: Served) -> None:
     served.twin.acts.append([Pause(0.02), b"stale\n"])
     with session(served) as (sync, _):

@@ -11,6 +11,7 @@ from rehearsal_cases import HEAD, MOUNT, RECIPE, RIG, SHUTTER, VISITS, Meddler, 
 from rigctl.errors import NotSafeError, RecordError
 from rigctl.interfaces import Driver, Instrument, Options
 from rigctl.links.channel import Channel
+from rigctl.links.family import Opening
 from rigctl.links.link import Link
 from rigctl.plugins import find_drivers
 from rigctl.record import load_run, verify_run
@@ -21,7 +22,7 @@ from rigctl.timeline import Timeline
 def is_shutter_closed(job: Job) -> bool:
     """Ask the twin itself, on a wire of its own."""
     with job.timeline.stop.masked():
-        channel = job.open_channel(SHUTTER)
+        channel = job.open_channel(SHUTTER, Opening())
         channel.discard()
         channel.write(b"ROUTE:CLOSE? (@3)\n", job.timeline.now() + 1.0)
         return channel.readline(job.timeline.now() + 1.0) == b"0\n"
@@ -245,7 +246,7 @@ def test_an_existing_file_is_never_overwritten_and_nothing_is_sent(tmp_path: Pat
     job = make_job(tmp_path / "run.h5")
 
     with pytest.raises(RecordError, match="never overwritten"):
-        run_job(replace(job, open_channel=lambda address: opened.append(address)))  # type: ignore[arg-type,return-value]
+        run_job(replace(job, open_channel=lambda address, _: opened.append(address)))  # type: ignore[arg-type,return-value]
 
     assert (tmp_path / "run.h5").read_bytes() == b"precious"
     assert not opened
