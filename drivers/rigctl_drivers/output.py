@@ -14,7 +14,7 @@ from rigctl_drivers.scpi_shell import ask, insist
 
 
 class Output:
-    """One channel's output.
+    """One channel's output; `place` is what messages call it.
 
     Parameters
     ----------
@@ -29,6 +29,7 @@ class Output:
     def __init__(self, link: Link, channel: int, *, why_off: Callable[[], InstrumentError | None]) -> None:
         self._link, self._why_off = link, why_off
         self._state = f"OUTPUT{channel}:STATE"
+        self.place = f"{link.address}, channel {channel}"
 
     @property
     def query(self) -> str:
@@ -55,7 +56,7 @@ class Output:
             return True
         raise self._why_off() or InstrumentError(
             "the output does not go on",
-            where=self._link.address,
+            where=self.place,
             do="look at the instrument: its key switch, its remote mode, its display",
         )
 
@@ -72,7 +73,7 @@ class Output:
         if self.is_on(insist(self._link, f"{self._state} OFF", self.query)):
             raise InstrumentError(
                 "the output reads back on after it was switched off",
-                where=self._link.address,
+                where=self.place,
                 do="switch it off by hand now, with its key or at the mains",
             )
         return False

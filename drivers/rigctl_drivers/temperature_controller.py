@@ -168,7 +168,7 @@ class ScpiTemperatureController:
         return None
 
     def _trouble(self, what: str, *, do: str) -> InstrumentError:
-        return InstrumentError(what, where=self._link.address, do=do)
+        return InstrumentError(what, where=self._output.place, do=do)
 
 
 def capabilities(options: Options) -> ControllerCapabilities:

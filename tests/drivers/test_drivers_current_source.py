@@ -157,7 +157,7 @@ def test_an_output_that_stays_off_is_told_in_words_with_what_to_do(
     with pytest.raises(InstrumentError, match=words) as caught:
         make_source(scpi).set_output(True)
 
-    assert caught.value.where == ADDRESS
+    assert caught.value.where == f"{ADDRESS}, channel 1"
     assert remedy in caught.value.do
 
 

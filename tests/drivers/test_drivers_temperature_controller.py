@@ -216,7 +216,7 @@ def test_a_sensor_that_is_open_or_shorted_is_a_fault_and_no_temperature(
     with pytest.raises(InstrumentError, match="it is open, shorted or not the one") as caught:
         make_controller(scpi, thermistor=sensor).conditions()
 
-    assert caught.value.where == ADDRESS
+    assert caught.value.where == f"{ADDRESS}, channel 1"
     assert "leads" in caught.value.do
 
 
