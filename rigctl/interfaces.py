@@ -347,6 +347,9 @@ class Bench(Protocol):
     def truth(self) -> Mapping[str, float]:
         """Return the hidden value of every quantity of the train, by name, in its kind's base unit."""
 
+    def emits(self, now_s: float) -> bool:
+        """Whether the source is on; of a source that nobody drives, whether its light is let in."""
+
     def block_by_hand(self, is_blocked: bool, now_s: float) -> None:
         """A person puts something into the beam, or takes it away."""
 

@@ -33,6 +33,10 @@ class SimulatedBench:
         """
         return dict(self._truth)
 
+    def emits(self, now_s: float) -> bool:
+        """Whether the bench could harm somebody now: the source on, or light let in where nobody can switch it."""
+        return self._world.emits(now_s)
+
     def block_by_hand(self, is_blocked: bool, now_s: float) -> None:
         """Block the beam at the source by hand, or clear it."""
         self._world.block_by_hand(is_blocked, now_s)

@@ -89,6 +89,11 @@ class World:
         """Part of all light that the caps let pass, stray light included: 0 when they are on."""
         return self._caps(instant_s)
 
+    def emits(self, instant_s: float) -> bool:
+        """Whether the source is on; of one that nobody drives, whether its light is let in."""
+        is_let_in = all(opening(instant_s) > 0.0 for opening in self._openings)
+        return self._source.emission.is_on(instant_s) and (self._source.emission.is_driven or is_let_in)
+
     def rests_from_s(self) -> float:
         """Return the instant from which nothing moves, as far as is known; temperatures are too slow to count."""
         return max([moving.rests_from_s for moving in self._moving], default=-math.inf)
