@@ -6,6 +6,7 @@ is asked for is compared before it is sent, and what was set is compared as read
 """
 
 from collections.abc import Iterator, Mapping
+from contextlib import suppress
 from dataclasses import dataclass
 
 from rigctl.errors import InstrumentError, LimitError
@@ -164,12 +165,17 @@ class LimitedSource:
         self.is_on = True
 
     def switch_off(self) -> bool:
-        """Set zero, switch the output off, whatever became of the zero, and return whether it reads back on."""
+        """Switch the output off, then set zero; return whether it reads back on.
+
+        Off comes first: on a wire that has lost its step, setting zero may wait for many seconds. A zero that cannot
+        be set harms nothing, since the output never goes on before it was set again.
+        """
         try:
-            self._source.set_current(0.0)
-            self.set_a = 0.0
-        finally:
             self.is_on = self._source.set_output(False)
+        finally:
+            with suppress(Exception):
+                self._source.set_current(0.0)
+            self.set_a = 0.0
         return self.is_on
 
     def conditions(self) -> SourceConditions:

@@ -176,16 +176,25 @@ def test_an_output_that_does_not_go_on_is_told() -> None:
         LimitedSource(Source(goes_on=False), LIMITS, "diode").switch_on()
 
 
-def test_switching_off_follows_even_when_setting_zero_fails() -> None:
+def test_the_output_goes_off_before_zero_is_set() -> None:
+    source = Source()
+
+    is_on = LimitedSource(source, LIMITS, "diode").switch_off()
+
+    assert not is_on
+    assert source.log == [("output", 0.0), ("current", 0.0)]
+
+
+def test_a_zero_that_cannot_be_set_does_not_hide_that_the_output_is_off() -> None:
     class Broken(Source):
         def set_current(self, current_a: float) -> float:
             raise RuntimeError("a driver's bug")
 
     source = Broken()
 
-    with pytest.raises(RuntimeError):
-        LimitedSource(source, LIMITS, "diode").switch_off()
+    is_on = LimitedSource(source, LIMITS, "diode").switch_off()
 
+    assert not is_on
     assert source.log == [("output", 0.0)]
 
 
