@@ -5,9 +5,9 @@ It owns the checks between elements and of elements against roles; it passes ove
 
 from collections.abc import Collection
 
+from rigctl.files.labels import STEP
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.part import Part
-from rigctl.files.recipe import EACH_STEP
 from rigctl.files.roles import Roles
 from rigctl.files.written_optics import PICK_OFF
 
@@ -123,7 +123,7 @@ def _check_each(kind: str, part: Part, roles: Roles) -> None:
         if name == "retardance" and level.text == part.at("warmed by").text and COEFFICIENT in unknown:
             what = "the coefficient follows from the retardance at each level, so both cannot be found"
             level.wrong(what, expected="'each', or an unknown temperature coefficient")
-        if level.text is not None and level.text != EACH_STEP:
+        if level.text is not None and level.text != STEP:
             roles.use(level, "temperature controller")
 
 

@@ -26,8 +26,6 @@ AXIS_KINDS: Mapping[RoleKind, AxisKind] = {
 """What is set by a role of a kind, where a sweep or a preparation sets it."""
 BY_HAND = "hand"
 """How a dark is taken where no shutter does it: a person blocks the beam."""
-EACH_STEP = "step"
-"""Where a quantity is found anew: not at each level of a role, but in each step."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -101,10 +101,9 @@ def _wavelength_m(document: Document) -> float | None:
     source = document.data.get("source")
     text = source.get("wavelength") if isinstance(source, dict) else None
     try:
-        value = parse_measured(text, "length").value if isinstance(text, str) else 0.0
+        return parse_measured(text, "length").value if isinstance(text, str) else None
     except QuantityError:
         return None
-    return value if value > 0 else None
 
 
 def _axis_kinds(document: Document) -> dict[str, AxisKind]:

@@ -7,13 +7,14 @@ from collections.abc import Callable, Collection
 from dataclasses import dataclass, field
 from typing import get_args
 
+from rigctl.files.labels import STEP
 from rigctl.files.leaves import LABEL, is_label
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.part import Part
-from rigctl.files.recipe import BY_HAND, EACH_STEP
+from rigctl.files.recipe import BY_HAND
 from rigctl.interfaces import RoleKind
 
-RESERVED_ROLES = (BY_HAND, EACH_STEP, "repeat", "source")
+RESERVED_ROLES = (BY_HAND, STEP, "repeat", "source")
 """Words that mean something else where a role may stand."""
 
 

@@ -142,6 +142,14 @@ def test_repeats_count_from_one_and_set_nothing(count: int) -> None:
     assert added(f"repeat: {count}") == Axis("", "repeat", tuple(float(n) for n in range(1, count + 1)))
 
 
+def test_a_step_may_have_a_million_visits() -> None:
+    step = night(
+        {"[{part mount: {turn: 1, step: 10 deg}}]": "[{repeat: 10000}, {oven: {range: 20 to 29.9 degC, step: 0.1 K}}]"}
+    ).steps[0]
+
+    assert [len(axis.values) for axis in step.sweep] == [10000, 100]
+
+
 def test_a_turn_may_go_there_and_back() -> None:
     mount = night({MOUNT: "part mount: {turn: 1, step: 90 deg, there and back: true}"}).steps[1].sweep[1]
 

@@ -7,6 +7,7 @@ from typing import TypeVar
 
 import pytest
 from files_cases import DRIVERS, RECIPE, RIG, StubBench, replaced
+from files_edits import edits, shuffled_lines
 from full_cases import BENCH, NIGHT
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -19,51 +20,6 @@ from rigctl.files.rig import Rig
 from rigctl.plugins import find_drivers
 
 T = TypeVar("T")
-
-PIECES = st.one_of(
-    st.sampled_from(
-        [
-            "&a ",
-            "*a",
-            "!!str ",
-            "<<: ",
-            "---\n",
-            "\t",
-            "\0",
-            "\r",
-            "\ufeff",
-            "{",
-            "}",
-            "[",
-            "]",
-            ": ",
-            ", ",
-            "- ",
-        ]
-    ),
-    st.sampled_from(["nan", "-", "0", "1e999", "%", "+-", "deg", "'", '"', "|", ">", "#", "? ", "\n", "  ", "°"]),
-    st.sampled_from(["polarizer", "retarder", "detector", "turn", "values: [1 deg]", "unknown", "steps", "dark"]),
-    st.sampled_from(["pick-off", "repeat: 3", "segments", "oven", "diode", "without", "each", "steady", "A", "degC"]),
-    st.text(max_size=5),
-)
-
-
-@st.composite
-def edits(draw: st.DrawFn, text: str) -> str:
-    """A good text after one to four random edits."""
-    for _ in range(draw(st.integers(min_value=1, max_value=4))):
-        at = draw(st.integers(min_value=0, max_value=len(text)))
-        until = min(len(text), at + draw(st.integers(min_value=0, max_value=12)))
-        text = text[:at] + draw(PIECES) + text[until:]
-    return text
-
-
-@st.composite
-def shuffled_lines(draw: st.DrawFn, text: str) -> str:
-    """A good text with lines left out, repeated and moved."""
-    lines = text.splitlines(keepends=True)
-    return "".join(draw(st.lists(st.sampled_from(lines), max_size=20)))
-
 
 MUTATED_RECIPES = st.one_of(
     edits(RECIPE), edits(NIGHT), shuffled_lines(RECIPE), shuffled_lines(NIGHT), shuffled_lines(RIG + RECIPE), st.text()

@@ -9,9 +9,14 @@ from typing import Any
 import pytest
 import yaml
 from files_cases import DRIVERS, RECIPE, RIG, StubBench, replaced
+from files_edits import edits, replacements
 from full_cases import BENCH, NIGHT
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from jsonschema import Draft202012Validator
 
+from rigctl.errors import FileError
+from rigctl.files import parse_recipe, parse_rig
 from rigctl.files.schema import recipe_schema, rig_schema
 from rigctl.kinds import KINDS
 from rigctl.plugins import find_bench_factory, find_drivers
@@ -185,6 +190,30 @@ def test_classes_that_are_digits_pass_as_numbers_too(written: str) -> None:
     text = replaced(BENCH, {"class on label: 3B": f"class on label: {written}"})
 
     assert complaints(rig_schema(find_drivers(), None), text) == []
+
+
+@given(text=st.one_of(edits(NIGHT), edits(RECIPE), replacements(NIGHT)))
+@settings(max_examples=300, deadline=None)
+def test_every_recipe_that_can_be_read_passes(text: str) -> None:
+    try:
+        parse_recipe(text, "r.yaml")
+    except FileError:
+        return
+
+    assert complaints(recipe_schema(), text, yaml.BaseLoader) == []
+    assert complaints(recipe_schema(), text, EditorLoader) == []
+
+
+@given(text=st.one_of(edits(RIG), replacements(RIG)))
+@settings(max_examples=200, deadline=None)
+def test_every_rig_file_that_can_be_read_passes(text: str) -> None:
+    try:
+        parse_rig(text, "b.yaml", DRIVERS, StubBench())
+    except FileError:
+        return
+
+    assert complaints(stubbed(), text, yaml.BaseLoader) == []
+    assert complaints(stubbed(), text, EditorLoader) == []
 
 
 def leaves(schema: Any) -> Iterator[dict[str, Any]]:
