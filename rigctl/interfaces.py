@@ -5,16 +5,54 @@ and the runner polls it when it is due. Angles are degrees in the bench's sense 
 to an eye facing the light), powers watts, times seconds, instants seconds since the run began.
 """
 
-import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from enum import IntFlag
 from typing import Any, Generic, Literal, Protocol, TypeVar
 
+from rigctl.capabilities import (
+    Capabilities,
+    ControllerCapabilities,
+    MeterCapabilities,
+    ShutterCapabilities,
+    SourceCapabilities,
+    StageCapabilities,
+    SwitchCapabilities,
+)
 from rigctl.kinds import Sign
 from rigctl.links.channel import Twin
 from rigctl.links.family import Family
 from rigctl.links.link import Link
+from rigctl.readings import ControllerConditions, Dwell, Flag, Identity, SourceConditions
+
+__all__ = [
+    "Begun",
+    "Bench",
+    "BenchFactory",
+    "Capabilities",
+    "ControllerCapabilities",
+    "ControllerConditions",
+    "CurrentSource",
+    "Driver",
+    "Dwell",
+    "Flag",
+    "Identity",
+    "Instrument",
+    "MeterCapabilities",
+    "Option",
+    "Options",
+    "PowerMeter",
+    "Relay",
+    "RoleKind",
+    "RotationStage",
+    "Shutter",
+    "ShutterCapabilities",
+    "Slide",
+    "SourceCapabilities",
+    "SourceConditions",
+    "StageCapabilities",
+    "SwitchCapabilities",
+    "TemperatureController",
+]
 
 T = TypeVar("T")
 
@@ -35,125 +73,6 @@ class Begun(Generic[T]):
     poll: Callable[[], T | None]
     again_s: float
     give_up_s: float
-
-
-class Flag(IntFlag):
-    """What is wrong with the readings of one dwell; 0 is nothing."""
-
-    OVERLOAD = 1
-    UNDERRANGE = 2
-    NOT_A_NUMBER = 4
-    QUESTIONABLE = 8
-
-
-@dataclass(frozen=True, slots=True)
-class Dwell:
-    """Readings of one detector at one visit.
-
-    `levels_w` has one entry a reading, NaN where the reading was a flag; `flags` is their union.
-    `began_s` and `ended_s` bound the integration.
-    """
-
-    levels_w: tuple[float, ...]
-    flags: Flag
-    range_w: float
-    began_s: float
-    ended_s: float
-
-
-@dataclass(frozen=True, slots=True)
-class Identity:
-    """Who answered: the four fields of IEEE 488.2 `*IDN?`, empty where the convention has none."""
-
-    maker: str
-    model: str
-    serial: str
-    firmware: str
-
-    @property
-    def is_simulated(self) -> bool:
-        """Whether a twin says of itself that it is one."""
-        return self.model.startswith("simulated")
-
-
-@dataclass(frozen=True, slots=True)
-class StageCapabilities:
-    """What a mount can do; travel and backlash in degrees, the bench's sense."""
-
-    travel_deg: tuple[float, float]
-    speed_deg_per_s: float
-    acceleration_deg_per_s2: float
-    backlash_deg: float
-    resolution_deg: float
-    can_spin: bool = False
-
-    def travel_time_s(self, distance_deg: float) -> float:
-        """Duration of a move with a trapezoidal (or triangular) speed profile, s."""
-        distance, speed, acceleration = abs(distance_deg), self.speed_deg_per_s, self.acceleration_deg_per_s2
-        if distance >= speed**2 / acceleration:
-            return distance / speed + speed / acceleration
-        return 2.0 * math.sqrt(distance / acceleration)
-
-
-@dataclass(frozen=True, slots=True)
-class MeterCapabilities:
-    """What a power meter can do.
-
-    `ranges_w` are full scales in ascending order; `time_constant_s` and `noise_w` belong to each range.
-    `relative_noise` is the part of a reading's scatter that grows with the power, the source's own included.
-    """
-
-    ranges_w: tuple[float, ...]
-    time_constant_s: tuple[float, ...]
-    noise_w: tuple[float, ...]
-    relative_noise: float
-    saturation_w: float
-    aperture_s: tuple[float, float]
-
-
-@dataclass(frozen=True, slots=True)
-class ShutterCapabilities:
-    """What a shutter can do."""
-
-    moves_in_s: float
-
-
-@dataclass(frozen=True, slots=True)
-class SourceCapabilities:
-    """What a current source can do."""
-
-    current_a: float
-    """Largest current, A."""
-    compliance_v: float
-    """Largest compliance voltage, V."""
-    resolution_a: float
-
-
-@dataclass(frozen=True, slots=True)
-class ControllerCapabilities:
-    """What a temperature controller can do; `span_c` is what its plant can reach, degC."""
-
-    span_c: tuple[float, float]
-    resolution_k: float
-    typical_rate_k_per_s: float
-    """How fast a setpoint is approached, K/s; for forecasts only."""
-
-
-@dataclass(frozen=True, slots=True)
-class SwitchCapabilities:
-    """What a slide or a relay can do."""
-
-    moves_in_s: float
-
-
-Capabilities = (
-    StageCapabilities
-    | MeterCapabilities
-    | ShutterCapabilities
-    | SourceCapabilities
-    | ControllerCapabilities
-    | SwitchCapabilities
-)
 
 
 class Instrument(Protocol):
@@ -217,18 +136,6 @@ class Shutter(Instrument, Protocol):
         """Read the state back now."""
 
 
-@dataclass(frozen=True, slots=True)
-class SourceConditions:
-    """What a current source reads back in one exchange."""
-
-    current_a: float
-    voltage_v: float
-    is_on: bool
-    is_interlock_open: bool
-    is_at_compliance: bool
-    is_tripped: bool
-
-
 class CurrentSource(Instrument, Protocol):
     """What drives a diode. The runner never uses it bare: every setpoint passes `rigctl.runner.limits`."""
 
@@ -248,16 +155,6 @@ class CurrentSource(Instrument, Protocol):
 
     def conditions(self) -> SourceConditions:
         """Read everything that tells how the diode is doing."""
-
-
-@dataclass(frozen=True, slots=True)
-class ControllerConditions:
-    """What a temperature controller reads back in one exchange; the temperature comes from the resistance."""
-
-    temperature_c: float
-    resistance_ohm: float
-    is_on: bool
-    is_at_limit: bool
 
 
 class TemperatureController(Instrument, Protocol):
