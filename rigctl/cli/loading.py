@@ -26,12 +26,14 @@ class Loaded:
 def load(recipe_path: Path, rig_path: Path | None) -> Loaded:
     """Load a recipe and a rig (None: a well-behaved simulated one) and match them."""
     from rigctl.files import load_recipe, load_rig, match, parse_rig
+    from rigctl.files.ready import recipe_path as ready_recipe
+    from rigctl.files.ready import rig_path as ready_rig
     from rigctl.plugins import find_bench_factory, find_drivers
 
     drivers, factory = find_drivers(), find_bench_factory()
-    recipe = load_recipe(recipe_path)
+    recipe = load_recipe(ready_recipe(recipe_path))
     if rig_path is not None:
-        rig = load_rig(rig_path, drivers, factory)
+        rig = load_rig(ready_rig(rig_path), drivers, factory)
     else:
         text = factory.default_rig({name: role.kind for name, role in recipe.roles.items()})
         rig = parse_rig(text, "the default rig", drivers, factory)
