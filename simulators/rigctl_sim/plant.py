@@ -81,8 +81,7 @@ class Plant:
         dT/dt = (goal - T)/tau, held within the slew: a straight line until the gap is slew times tau, then an
         exponential; both meet with the same slope.
         """
-        is_there = now_s >= self.rests_from_s and goal_c == self._rests_at_c
-        if is_there or now_s >= self._fails_at_s:
+        if self._rests_at(now_s, goal_c):
             return
         here_c, make = self(now_s), self.make
         knee_k = make.slew_k_per_s * make.time_constant_s
@@ -99,8 +98,11 @@ class Plant:
 
     def leave(self, now_s: float) -> None:
         """Drive it no more: it goes back to ambient."""
-        if now_s < self._fails_at_s:
+        if now_s < self._fails_at_s and not self._rests_at(now_s, self.make.ambient_c):
             self._leave(now_s)
+
+    def _rests_at(self, now_s: float, goal_c: float) -> bool:
+        return now_s >= self.rests_from_s and goal_c == self._rests_at_c
 
     def _leave(self, now_s: float) -> None:
         here_c = self(now_s)

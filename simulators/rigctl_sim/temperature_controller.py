@@ -190,7 +190,7 @@ class SimulatedTemperatureController:
     def _switch(self, at_s: float, is_on: bool) -> None:
         if is_on and at_s >= self._make.sensor_breaks_at_s:
             raise Complaint(-221)
-        if self._is_on and not is_on:
+        if not is_on:
             self._plant.leave(at_s)
         self._is_on = is_on
         self._drive(at_s)

@@ -218,6 +218,13 @@ def test_a_reset_switches_off_and_forgets_every_setting(wire: Wire, current: Tra
     assert current(4.0) == 0.0
 
 
+def test_a_reset_clears_a_trip(wire: Wire) -> None:
+    wire.send(COMPLIANCE + b" 1.66\n", at_s=1.0)
+    set_going(wire, 34.0, at_s=2.0)
+
+    assert wire.ask(b"*RST;:" + STATE) == "0;0;0"
+
+
 def test_another_channel_has_its_own_number(current: Trajectory) -> None:
     wire = Wire(make_twin(current, channel=3))
 

@@ -206,6 +206,16 @@ def test_a_diode_that_nobody_cools_is_as_warm_as_the_room(recipe: Recipe, driver
     assert power_w(bench, at_s=SETTLED_S) == pytest.approx(expected, rel=1e-6)
 
 
+def test_without_anything_that_cools_it_the_diode_is_prepared_at_the_temperature_of_the_room(
+    recipe: Recipe, drivers: Mapping[str, Driver]
+) -> None:
+    bench = FACTORY.build(recipe, make_rig(drivers, without="  diode tec:"), 3)
+
+    tell(bench, RACK, ON, at_s=0.0)
+
+    assert power_w(bench, at_s=SETTLED_S) == pytest.approx(expected_w(recipe, bench), rel=1e-6)
+
+
 @pytest.mark.parametrize("celsius", [22.0, 28.0])
 def test_the_oven_warms_its_element(recipe: Recipe, bench: Bench, celsius: float) -> None:
     switch_on(bench)

@@ -210,7 +210,7 @@ def test_two_heads_that_read_at_the_same_time_see_the_same_noise() -> None:
     levels = [head.mean_w(1.0, 1.1, time_constant_s=TAU_S) for head in (one, other)]
 
     assert levels[0] == pytest.approx(levels[1] - STRAY_W, rel=1e-12)
-    assert abs(levels[0] / POWER_W - 1.0) > 1e-5
+    assert levels[0] / POWER_W - 1.0 == pytest.approx(SourceNoise(1, 1e-2).mean(1.0, 1.1), rel=1e-9)
 
 
 def test_heads_of_different_lag_see_the_same_noise_too() -> None:

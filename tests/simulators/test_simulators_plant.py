@@ -129,6 +129,14 @@ def test_left_alone_it_goes_back_to_ambient() -> None:
     assert plant(1e6) == AMBIENT_C
 
 
+def test_left_alone_at_ambient_it_stays_at_rest() -> None:
+    plant = Plant(MAKE)
+
+    plant.leave(5.0)
+
+    assert plant.rests_from_s == -math.inf
+
+
 def test_what_fails_goes_back_to_ambient_from_that_instant_on() -> None:
     plant = Plant(MAKE, fails_at_s=500.0)
     plant.regulate(10.0, 40.0)

@@ -1,6 +1,7 @@
 """Headers, paths and parameters by the rules of IEEE 488.2 and SCPI-1999; the section stands at each rule."""
 
 import itertools
+import math
 import re
 
 import pytest
@@ -105,6 +106,12 @@ def test_nodes_stand_in_their_order_and_only_bracketed_ones_may_be_left_out(head
 @pytest.mark.parametrize(("text", "value"), [("-40", -40.0), ("-0.04KCEL", -40.0), ("-10000MCEL", -10.0)])
 def test_bounds_below_zero_are_within_them(text: str, value: float) -> None:
     assert number("CEL", -40.0, -10.0, default=-20.0)(text) == pytest.approx(value)
+
+
+@pytest.mark.parametrize(("low", "high", "text"), [(5e-6, 1.0, "5UCEL"), (-1.0, -5e-6, "-5UCEL")])
+def test_a_bound_written_with_a_prefix_is_within(low: float, high: float, text: str) -> None:
+    """5 times 1e-6 is a digit of its last place below 5e-6."""
+    assert number("CEL", low, high, default=low)(text) == pytest.approx(math.copysign(5e-6, low))
 
 
 @pytest.mark.parametrize("text", ["-40.001", "-9.999", "0"])

@@ -253,6 +253,16 @@ def test_a_truth_without_levels_has_none() -> None:
     assert truth_at_levels(train, draw_truth(train, 1, given={}), OVEN_LEVELS) == {}
 
 
+def test_levels_of_another_temperature_do_not_warm_the_element() -> None:
+    train = warm_train("diode tec", Quantity(COEFFICIENT, "coefficient", 1e-3))
+    found = draw_truth(train, 1, given={})
+
+    levels = truth_at_levels(train, found, {"diode tec": {"20 degC": 20.0, "30 degC": 30.0}})
+
+    assert set(levels.values()) == {found["part.retardance"]}
+    assert len(levels) == 2
+
+
 def test_what_the_oven_does_not_warm_is_the_same_at_each_of_its_temperatures() -> None:
     stray = Quantity("signal.stray light", "power", 3e-9, is_free=True, each="oven")
     train = warm_train(None).rewritten(stray)

@@ -44,7 +44,7 @@ class Register:
             holders.add(channel)
         else:
             holders.discard(channel)
-        if holders and not self.condition & bit:
+        if not self.condition & bit:
             self.event |= bit
         self.condition = self.condition | bit if holders else self.condition & ~bit
 

@@ -33,7 +33,7 @@ class Command:
     ----------
     pattern
         As the standard prints it: capitals are the short form, brackets stand around nodes that may be left
-        out, `#` stands where a mnemonic may bear the number of its channel, a final `?` makes it a query:
+        out, `#` stands once, where a mnemonic may bear the number of its channel, a final `?` makes it a query:
         `[SENSe#]:POWer[:DC]:RANGe?`.
     act
         Called with the instant and the parameters; what a query answers is its text.
@@ -126,15 +126,13 @@ class Grammar:
         if channels is None:
             too_long = any(len(word) > _LONGEST_MNEMONIC for word in re.split(r"[:?]", header))
             raise Complaint(-112 if too_long else -113)
-        wanted = set()
+        channel = 1
         for word, may in zip(header.rstrip("?").split(":"), self._may_have_suffix[bare], strict=True):
             suffix = _SUFFIX.search(word)
             if suffix and not may:
                 raise Complaint(-113)
-            if may:
-                wanted.add(int(suffix[1]) if suffix else 1)
-        channel = wanted.pop() if wanted else 1
-        if wanted or channel not in channels:
+            channel = int(suffix[1]) if suffix else channel
+        if channel not in channels:
             raise Complaint(-114)
         return channels[channel]
 
