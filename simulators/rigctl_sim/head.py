@@ -53,7 +53,7 @@ class HeadInBeam:
 
     def _mean_light_w(self, begin_s: float, end_s: float, time_constant_s: float) -> float:
         remembers_from_s = begin_s - FORGOTTEN * time_constant_s
-        if self._world.rests_from_s() <= remembers_from_s:
+        if self._world.is_at_rest(remembers_from_s):
             middle_s = 0.5 * (begin_s + end_s)
             return self._world.light_w(middle_s - time_constant_s)[self._detector]
         if not remembers_from_s <= self._shown_at_s <= begin_s:

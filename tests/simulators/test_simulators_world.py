@@ -139,7 +139,7 @@ def test_light_at_rest_is_worked_out_once() -> None:
 
 
 def test_nothing_moves_before_somebody_moves_it() -> None:
-    assert make_world().rests_from_s() == -math.inf
+    assert make_world().is_at_rest(-math.inf)
 
 
 def test_everything_rests_when_the_last_has_come_to_rest() -> None:
@@ -147,7 +147,8 @@ def test_everything_rests_when_the_last_has_come_to_rest() -> None:
     dial.glide(0.0, 5.0, 3.0)
     shutter.glide(1.0, 1.0, 0.02)
 
-    assert make_world(dial, shutter).rests_from_s() == 3.0
+    world = make_world(dial, shutter)
+    assert [world.is_at_rest(since) for since in (-math.inf, 2.999, 3.0, 4.0)] == [False, False, True, True]
 
 
 def test_time_is_cut_at_every_knot_and_into_small_turns() -> None:
@@ -205,7 +206,7 @@ def test_temperatures_are_too_slow_to_cut_time_by() -> None:
 
     oven.regulate(10.0, 24.0)
 
-    assert world.rests_from_s() == -math.inf
+    assert world.is_at_rest(-math.inf)
     assert list(world.pieces(10.0, 20.0)) == [(10.0, 20.0)]
 
 
@@ -232,11 +233,11 @@ def test_an_element_half_in_the_beam_gets_half_of_it() -> None:
 
 def test_what_a_hand_takes_out_moves_like_anything_else() -> None:
     world = World(make_source(), Asking(), Way())
-    before_s = world.rests_from_s()
+    was_at_rest = world.is_at_rest(5.0)
 
     world.take_out_by_hand("plate", True, 5.0)
 
-    assert (before_s, world.rests_from_s()) == (-math.inf, 5.1)
+    assert [was_at_rest, world.is_at_rest(5.0), world.is_at_rest(5.1)] == [True, False, True]
     assert [world.light_w(instant)[0] for instant in (4.0, 6.0)] == [0.5 * POWER_W, POWER_W]
 
 
@@ -279,7 +280,7 @@ def test_the_past_is_remembered_even_when_much_of_it_is_asked_for() -> None:
 def test_a_world_in_which_nothing_can_move_is_at_rest() -> None:
     world = World(make_source(), Asking(), Way())
 
-    assert world.rests_from_s() == -math.inf
+    assert world.is_at_rest(-math.inf)
     assert world.light_w(3.0)[0] == 0.5 * POWER_W
 
 
