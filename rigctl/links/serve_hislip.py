@@ -31,6 +31,8 @@ from rigctl.links.served import HOST, Client
 from rigctl.timeline import Timeline
 
 _LINES = re.compile(rb"[^\n]*\n|[^\n]+")
+_WAS_DELIVERED = 0x01
+"""Bit of a control code: the client has handed the end of the last answer on."""
 _MESSAGE_AVAILABLE = 0x10
 """Bit of the status byte. Source: IEEE 488.2-1992, 11.2; from memory."""
 
@@ -77,7 +79,7 @@ class HislipPort:
         self._session = 0
         self._message_id = ANY_ID
         self._longest_bytes = LONGEST_MESSAGE_BYTES
-        self._is_clearing = False
+        self._is_clearing = self._has_said = False
 
     def ready_in_s(self) -> float | None:
         """How long until the twin has bytes to fetch; None: it has none, or the client must read first."""
@@ -116,7 +118,8 @@ class HislipPort:
                 self._hear(piece)
             case Kind.DEVICE_CLEAR_COMPLETE if connection is self._sync:
                 self._twin.take(self._timeline.now())
-                self._is_clearing, self._message_id = False, ANY_ID
+                self._is_clearing = self._has_said = False
+                self._message_id = ANY_ID
                 connection.send(Piece(Kind.DEVICE_CLEAR_ACKNOWLEDGE))
             case _ if connection is self._async:
                 connection.send(self._aside(piece))
@@ -148,7 +151,8 @@ class HislipPort:
         else:
             self._sync = connection
             self._session = (self._session + 1) & 0xFFFF
-            self._message_id, self._longest_bytes, self._is_clearing = ANY_ID, LONGEST_MESSAGE_BYTES, False
+            self._message_id, self._longest_bytes = ANY_ID, LONGEST_MESSAGE_BYTES
+            self._is_clearing = self._has_said = False
             connection.send(Piece(Kind.INITIALIZE_RESPONSE, 0, VERSION << 16 | self._session))
 
     def _join(self, connection: _Connection, piece: Piece) -> None:
@@ -162,7 +166,7 @@ class HislipPort:
         """Hand data to the twin; the end of a message ends its last line too."""
         if self._is_clearing:
             return
-        self._message_id = piece.parameter
+        self._message_id, self._has_said = piece.parameter, False
         ends = piece.is_last and piece.kind == Kind.DATA_END and not piece.payload.endswith(b"\n")
         self._twin.receive(piece.payload + b"\n" * ends, self._timeline.now())
 
@@ -176,8 +180,8 @@ class HislipPort:
                 self._is_clearing = True
                 return Piece(Kind.ASYNC_DEVICE_CLEAR_ACKNOWLEDGE)
             case Kind.ASYNC_STATUS_QUERY:
-                has_answer = self._twin.next_ready_s() is not None and self.ready_in_s() == 0.0
-                return Piece(Kind.ASYNC_STATUS_RESPONSE, _MESSAGE_AVAILABLE * has_answer)
+                self._has_said &= not piece.control & _WAS_DELIVERED
+                return Piece(Kind.ASYNC_STATUS_RESPONSE, _MESSAGE_AVAILABLE * self._has_said)
             case _:
                 return _unknown(piece)
 
@@ -190,6 +194,7 @@ class HislipPort:
                 chunk = line[begin : begin + self._longest_bytes]
                 kind = Kind.DATA_END if chunk.endswith(b"\n") else Kind.DATA
                 messages += Piece(kind, 0, self._message_id, chunk).pack()
+        self._has_said |= bool(messages)
         self._sync.client.send(bytes(messages))
 
     def _end_session(self) -> None:

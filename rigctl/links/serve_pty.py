@@ -29,7 +29,7 @@ class PacedBytes:
     def put(self, data: bytes, now_s: float) -> None:
         """Send bytes after those that are on their way."""
         if not self._bytes:
-            self._begun_s = max(now_s, self._begun_s)
+            self._begun_s = now_s
         self._bytes += data[: _MOST_ON_THE_WAY_BYTES - len(self._bytes)]
 
     def next_s(self) -> float | None:

@@ -282,9 +282,13 @@ def test_a_stop_request_wakes_a_read_and_the_safe_commands_pass_after_a_clear(
 def test_a_message_that_left_in_part_is_sent_to_its_end_first(
     channel: HislipChannel, script: Scripted, wall: WallTimeline
 ) -> None:
-    long = b"x" * 2**24 + b"\n"
+    long = b"x" * 2**20 + b"\n"
+    channel._sync._stream._socket.setsockopt(socket.SOL_SOCKET, socket.SO_SNDBUF, 2**14)
+    script.ends[0][0].setsockopt(socket.SOL_SOCKET, socket.SO_RCVBUF, 2**14)
     with pytest.raises(LinkTimeoutError, match="takes no bytes"):
         channel.write(long, wall.now() + SOON_S)
+
+    assert 0 < len(channel._sync._unsent) < 2**20
 
     def far_end() -> None:
         assert script.hear(1).kind == Kind.ASYNC_DEVICE_CLEAR

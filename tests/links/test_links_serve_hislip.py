@@ -1,6 +1,7 @@
 """Our HiSLIP server, met message by message."""
 
 import contextlib
+import selectors
 import socket
 import threading
 import time
@@ -15,6 +16,7 @@ from rigctl.links.hislip import HislipChannel
 from rigctl.links.hislip_messages import FIRST_ID, SIZE, VERSION, Fatal, Kind, MessageReader, Piece
 from rigctl.links.link import Link
 from rigctl.links.serve import TwinServer
+from rigctl.links.serve_hislip import HislipPort
 from rigctl.timeline import WallTimeline
 
 OVEN = "visa://TCPIP0::10.0.0.9::hislip0::INSTR"
@@ -61,6 +63,13 @@ class Caller:
                 return None
             self._reader.add(data)
         return piece
+
+    def heard(self) -> Piece | None:
+        """What is here by now; None: nothing."""
+        self.socket.setblocking(False)
+        with contextlib.suppress(BlockingIOError):
+            self._reader.add(self.socket.recv(4096))
+        return self._reader.take()
 
     def ask(self, message: Piece) -> Piece | None:
         self.say(message)
@@ -158,9 +167,72 @@ def test_a_device_clear_throws_away_what_was_being_said(served: Served) -> None:
     assert served.twin.heard == [b"READ?", b"ECHO? fresh"]
 
 
-def test_the_status_byte_says_whether_an_answer_waits(served: Served) -> None:
-    with session(served) as (_, aside):
-        assert aside.ask(Piece(Kind.ASYNC_STATUS_QUERY)) == Piece(Kind.ASYNC_STATUS_RESPONSE, 0)
+def test_an_answer_that_is_ready_when_a_clear_ends_is_thrown_away(wall: WallTimeline) -> None:
+    twin = ActingTwin([b"stale\n"])
+    with selectors.DefaultSelector() as selector:
+        port = HislipPort(twin, wall, selector, device="hislip0")
+        place = parse_address(port.address)
+        assert isinstance(place, HislipAddress)
+        with (
+            Caller(socket.create_connection((place.host, place.port), timeout=10.0)) as sync,
+            Caller(socket.create_connection((place.host, place.port), timeout=10.0)) as aside,
+        ):
+            for caller, message in (
+                (sync, HELLO),
+                (aside, Piece(Kind.ASYNC_INITIALIZE, 0, 1)),
+                (aside, Piece(Kind.ASYNC_DEVICE_CLEAR)),
+            ):
+                caller.say(message)
+                while (answer := caller.heard()) is None:
+                    turn(selector)
+                assert answer.kind != Kind.FATAL_ERROR
+            twin.receive(b"READ?\n", wall.now())
+            sync.say(Piece(Kind.DEVICE_CLEAR_COMPLETE))
+            while (answer := sync.heard()) is None:
+                turn(selector)
+            port.pump()
+
+            assert answer.kind == Kind.DEVICE_CLEAR_ACKNOWLEDGE
+            assert sync.heard() is None
+        port.close()
+
+
+def turn(selector: selectors.BaseSelector) -> None:
+    """One turn of a server's loop, without the pump."""
+    for key, events in selector.select(0.01):
+        key.data(events)
+
+
+@pytest.mark.parametrize(("was_delivered", "status"), [(0, 0x10), (1, 0)])
+def test_the_status_byte_says_whether_an_answer_waits(served: Served, was_delivered: int, status: int) -> None:
+    query = Piece(Kind.ASYNC_STATUS_QUERY)
+    with session(served) as (sync, aside):
+        before = aside.ask(query)
+        sync.ask(data(b"ECHO? 1\n"))
+        after = aside.ask(Piece(Kind.ASYNC_STATUS_QUERY, was_delivered))
+        sync.ask(Piece(Kind.DEVICE_CLEAR_COMPLETE))
+        cleared = aside.ask(query)
+
+    assert (before, after, cleared) == tuple(Piece(Kind.ASYNC_STATUS_RESPONSE, bits) for bits in (0, status, 0))
+
+
+def test_nobody_joins_the_session_of_another(served: Served) -> None:
+    with served.dial() as sync, served.dial() as stranger:
+        welcome = sync.ask(HELLO)
+        assert welcome is not None
+        refusal = stranger.ask(Piece(Kind.ASYNC_INITIALIZE, 0, (welcome.parameter + 1) & 0xFFFF))
+
+    assert refusal is not None
+    assert (refusal.kind, refusal.control) == (Kind.FATAL_ERROR, Fatal.BAD_INITIALIZATION)
+
+
+def test_a_session_is_joined_once(served: Served) -> None:
+    with session(served) as (sync, _), served.dial() as second:
+        refusal = second.ask(Piece(Kind.ASYNC_INITIALIZE, 0, 1))
+
+        assert refusal is not None
+        assert (refusal.kind, refusal.control) == (Kind.FATAL_ERROR, Fatal.BAD_INITIALIZATION)
+        assert sync.ask(data(b"ECHO? 1\n")) == data(b"1\n")
 
 
 @pytest.mark.parametrize("is_aside", [True, False])

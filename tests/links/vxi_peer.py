@@ -32,6 +32,7 @@ class VxiPeer:
         self.twin = twin
         self.clears = 0
         self.reads = 0
+        self.ends_without_line_feed = False
         self._output = b""
         self._lock = threading.Lock()
         self._timeline = WallTimeline()
@@ -113,6 +114,8 @@ class VxiPeer:
                 line, end, _ = self._output.partition(b"\n")
                 data = (line + end)[:most]
                 self._output = self._output[len(data) :]
+            if data and self.ends_without_line_feed:
+                return struct.pack("!2I", 0, END) + opaque(data.removesuffix(b"\n"))
             if data:
                 return struct.pack("!2I", 0, END if data.endswith(b"\n") else 0) + opaque(data)
             if time.monotonic() >= until:
