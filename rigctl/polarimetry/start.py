@@ -39,7 +39,7 @@ class _Axis:
 
 def starts(problem: Problem) -> list[Array]:
     """Starting points, best first, shape (P,) each; the nominal values when no node fits at all."""
-    problem = _thinned(problem)
+    problem = thinned(problem)
     axes = _axes(problem)
     grid = np.meshgrid(*(axis.nodes for axis in axes), indexing="ij")
     columns = {n: nodes.reshape(-1, 1) for axis, nodes in zip(axes, grid, strict=True) for n in axis.names}
@@ -50,7 +50,7 @@ def starts(problem: Problem) -> list[Array]:
     return [_point(problem, *_apart(problem, axes, point)) for point in points] or [problem.nominal]
 
 
-def _thinned(problem: Problem) -> Problem:
+def thinned(problem: Problem) -> Problem:
     """The problem with at most so many visits, of every kind some: a start needs no more."""
     visits = problem.visits
     if visits.count <= MOST_VISITS:

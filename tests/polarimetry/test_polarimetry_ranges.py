@@ -139,6 +139,14 @@ def test_a_small_extinction_ratio_is_resolved_on_the_sensitive_range(seed: int) 
     assert not result.refusals
 
 
+def test_chi_squared_is_split_with_the_stray_light_of_each_range() -> None:
+    split = fitted(polarizer_case(), dim_and_bright(), TRUTH).split
+
+    assert split is not None
+    assert split.not_harmonics < 2.0 * split.not_harmonics_dof
+    assert split.not_train < 3.0 * split.not_train_dof
+
+
 def test_flanks_on_the_sensitive_range_tell_its_gain() -> None:
     gain = found(fitted(polarizer_case(), dim_and_bright(), TRUTH), "signal.gain @ 2 uW")
 

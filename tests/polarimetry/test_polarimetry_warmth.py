@@ -190,6 +190,16 @@ def test_a_known_coefficient_forbids_to_reflect() -> None:
     assert "part.retardance -> 1 - it" in symmetries(warm_plate(per_k=0.0), visits).sentences()
 
 
+def test_a_known_coefficient_forbids_to_change_the_order() -> None:
+    solution = {"part.retardance": 0.24, "part.dial offset": 1.0}
+
+    known = symmetries(warm_plate(11.25, per_k=1e-3), two_ovens()).nearest(solution)
+    nought = symmetries(warm_plate(11.25, per_k=0.0), two_ovens()).nearest(solution)
+
+    assert known["part.retardance"] == 0.24
+    assert nought["part.retardance"] == pytest.approx(11.24, abs=1e-12)
+
+
 def test_a_plate_of_many_orders_is_found_with_its_coefficient() -> None:
     # 11.25 waves at 1e-4/K: 0.011 waves from one temperature to the other.
     truth = {"part.retardance": 11.23, "part.temperature coefficient": 1.2e-4, "part.dial offset": 3.0}
