@@ -216,6 +216,16 @@ def test_the_status_byte_says_whether_an_answer_waits(served: Served, was_delive
     assert (before, after, cleared) == tuple(Piece(Kind.ASYNC_STATUS_RESPONSE, bits) for bits in (0, status, 0))
 
 
+def test_a_new_question_takes_the_place_of_an_answer_that_waits(served: Served) -> None:
+    with session(served) as (sync, aside):
+        sync.ask(data(b"ECHO? 1\n"))
+        sync.say(data(b"OUTP 0\n", FIRST_ID + 2))
+        while b"OUTP 0" not in served.twin.heard:
+            time.sleep(0.002)
+
+        assert aside.ask(Piece(Kind.ASYNC_STATUS_QUERY)) == Piece(Kind.ASYNC_STATUS_RESPONSE, 0)
+
+
 def test_nobody_joins_the_session_of_another(served: Served) -> None:
     with served.dial() as sync, served.dial() as stranger:
         welcome = sync.ask(HELLO)
