@@ -4,6 +4,7 @@ Pure: a plan is a function of the recipe.
 """
 
 import itertools
+import math
 import random
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
@@ -14,6 +15,8 @@ from rigctl.record.layout import AxisLayout, StepLayout
 DARK_DWELLS = 5
 """Dwells of one dark: with four readings each, its mean is known four times better than one reading."""
 REPEAT = "repeat"
+TIME_CONSTANTS = math.log(1e4)
+"""So many time constants leave a ten-thousandth of a change, where nobody asks for better."""
 UNITS = {"angle": "deg", "temperature": "degC", "current": "A", REPEAT: "1"}
 
 
@@ -95,6 +98,6 @@ def settle_s(step: Step, time_constant_s: float) -> float:
 
     Source
     ------
-    First-order step response: 9.21 time constants leave 1e-4 of a change, where no uncertainty is asked for.
+    First-order step response: exp(-t / time constant) of a change is left after t.
     """
-    return max([9.21 * time_constant_s, *(axis.settle_s for axis in step.sweep)])
+    return max([TIME_CONSTANTS * time_constant_s, *(axis.settle_s for axis in step.sweep)])

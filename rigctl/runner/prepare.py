@@ -10,11 +10,8 @@ from rigctl.files.recipe import Preparation, Steady
 from rigctl.interfaces import ControllerConditions, SourceConditions
 from rigctl.runner.bench import OpenBench
 from rigctl.runner.driving import ramp
-from rigctl.runner.steady import wait_until_steady
+from rigctl.runner.steady import STEADY, wait_until_steady
 from rigctl.timeline import Timeline
-
-STEADY = Steady(within_k=0.05, for_s=60.0, give_up_s=1800.0)
-"""Where a recipe says nothing: a twentieth of a kelvin for a minute, half an hour at most."""
 
 
 class Climate:
@@ -28,11 +25,14 @@ class Climate:
 
     def __init__(self, bench: OpenBench, timeline: Timeline, tell: Callable[[str, dict[str, float]], None]) -> None:
         self.bench, self.timeline, self._tell = bench, timeline, tell
+        self._wanted_a: dict[str, tuple[float, float | None]] = {}
+        """Which current each source was last asked for, A, and by what ramp, A/s."""
 
     def prepare(self, wanted: Preparation) -> None:
         """Do one line of `prepare:`."""
         if wanted.role in self.bench.controllers:
             self.set_temperature(wanted.role, wanted.to, wanted.steady)
+            self.bring_back()
             return
         self.set_current(wanted.role, wanted.to, wanted.ramp_a_per_s)
         self.timeline.wait_until(self.timeline.now() + wanted.warm_up_s)
@@ -54,6 +54,13 @@ class Climate:
             _refuse_ill(role, source.conditions())
             source.switch_on()
         ramp(source, to_a, self.timeline, rate_a_per_s=rate_a_per_s)
+        self._wanted_a[role] = (to_a, rate_a_per_s)
+
+    def bring_back(self) -> None:
+        """Ramp every current back to where it was asked to be, after a temperature moved without it."""
+        for role, (to_a, rate_a_per_s) in self._wanted_a.items():
+            if self.bench.sources[role].set_a != to_a:
+                self.set_current(role, to_a, rate_a_per_s)
 
     def rest(self) -> None:
         """Ramp every source down and switch it off, as for a background."""

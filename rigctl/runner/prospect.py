@@ -35,8 +35,8 @@ def planned_rows(recipe: Recipe, *, duration_s: float) -> "list[Row]":
             angles = {axis.role: visit.asked[axis.role] for axis in step.sweep if axis.kind == "angle"}
             rows.append(Row(0.0, True, angles, temperatures, present, labels))
         rows += [Row(0.0, False)] * DARK_DWELLS * sum(dark.after for dark in darks)
-    pace_s = duration_s / max(len(rows) - 1, 1)
-    return [replace(row, time_s=pace_s * place) for place, row in enumerate(rows)]
+    last = max(len(rows) - 1, 1)
+    return [replace(row, time_s=duration_s * place / last) for place, row in enumerate(rows)]
 
 
 def expected_peak_w(recipe: Recipe, role: str, step: Step | None = None) -> float:

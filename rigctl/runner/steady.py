@@ -15,6 +15,9 @@ from rigctl.timeline import Timeline
 LOOK_EVERY_S = 1.0
 """A thermal plant of a diode moves over seconds; a look costs one exchange."""
 
+STEADY = Steady(within_k=0.05, for_s=60.0, give_up_s=1800.0)
+"""Where a recipe says nothing: a twentieth of a kelvin for a minute, half an hour at most."""
+
 Listener = Callable[[str, ControllerConditions], None]
 
 

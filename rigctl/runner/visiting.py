@@ -101,6 +101,7 @@ class Visiting:
         for axis in step.sweep:
             if axis.kind == "current":
                 self.climate.set_current(axis.role, visit.asked[axis.role], axis.ramp_a_per_s)
+        self.climate.bring_back()
         turning = [axis for axis in step.sweep if axis.kind == "angle"]
         self._turn(turning, visit.asked)
         return {axis.role: self._read_deg[axis.role] for axis in turning}

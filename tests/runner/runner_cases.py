@@ -6,6 +6,7 @@ from dataclasses import dataclass, field
 
 from rehearsal_cases import RECIPE, RIG, Meddler
 
+from rigctl.files import parse_recipe, parse_rig
 from rigctl.files.rig import InstrumentEntry
 from rigctl.interfaces import (
     Begun,
@@ -18,9 +19,11 @@ from rigctl.interfaces import (
 )
 from rigctl.links.channel import Channel
 from rigctl.links.link import Link
-from rigctl.plugins import find_drivers
+from rigctl.plugins import find_bench_factory, find_drivers
 from rigctl.runner.bench import OpenBench, open_bench
+from rigctl.runner.prepare import Climate
 from rigctl.runner.run import Job
+from rigctl.runner.visiting import Visiting
 from rigctl.timeline import Timeline
 
 SWEEP = "sweep: [{part mount: {turn: 1, step: 30 deg, approach: from below, settle: 150 ms}}]"
@@ -223,6 +226,17 @@ def fake_bench(
     """A bench of instruments without a wire, all at one address."""
     roles = [*(["shutter"] if shutter else []), *(stages or {}), *(meters or {})]
     entries = {role: InstrumentEntry(role, "fake", ADDRESS, {}, {}) for role in roles}
-    bench = OpenBench(entries, dict(stages or {}), dict(meters or {}), shutter, "shutter" if shutter else "")
-    bench.links[ADDRESS] = Link(ADDRESS, DeafChannel, find_drivers()["scpi-switch"].family, timeline)
+    drivers = find_drivers()
+    rig = parse_rig(RIG, "rig.yaml", drivers, find_bench_factory())
+    bench = OpenBench(parse_recipe(RECIPE, "recipe.yaml"), rig, entries)
+    bench.stages.update(stages or {})
+    bench.meters.update(meters or {})
+    if shutter is not None:
+        bench.shutter, bench.shutter_role = shutter, "shutter"
+    bench.links[ADDRESS] = Link(ADDRESS, DeafChannel, drivers["scpi-switch"].family, timeline)
     return bench
+
+
+def visiting_on(bench: OpenBench, timeline: Timeline) -> Visiting:
+    """What takes visits on a bench; nobody hears how its temperatures move."""
+    return Visiting(bench, timeline, Climate(bench, timeline, lambda _role, _values: None))

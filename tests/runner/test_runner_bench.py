@@ -27,9 +27,9 @@ def test_every_role_is_filled_with_its_instrument_and_link(tmp_path: Path) -> No
         }
 
 
-def test_the_shutter_comes_first_among_the_instruments(tmp_path: Path) -> None:
+def test_the_shutter_is_asked_first_who_it_is(tmp_path: Path) -> None:
     with opened(make_job(tmp_path / "run.h5")) as bench:
-        assert [role for role, _ in bench.instruments()] == ["shutter", "part mount", "signal"]
+        assert list(identify_all(bench)) == ["shutter", "part mount", "signal"]
 
 
 def test_roles_that_the_recipe_does_not_use_or_the_rig_does_not_fill_are_left_out(tmp_path: Path) -> None:

@@ -14,6 +14,7 @@ from runner_cases import TWO_AXES, TWO_MOUNTS, TWO_STEPS
 
 from rigctl import __version__
 from rigctl.links.channel import Channel, Twin
+from rigctl.links.family import Opening
 from rigctl.links.tcp import TcpChannel
 from rigctl.plugins import find_bench_factory
 from rigctl.record import Header
@@ -130,7 +131,7 @@ def test_a_rehearsal_says_that_it_is_one_and_keeps_its_seed_and_truth(tmp_path: 
 class BenchWithHand:
     """A bench that keeps what a hand did."""
 
-    done: list[tuple[bool, float]] = field(default_factory=list)
+    done: list[tuple[str, bool, float]] = field(default_factory=list)
 
     def twin(self, address: str) -> Twin:
         raise AssertionError(f"nobody asks for {address}")
@@ -138,8 +139,17 @@ class BenchWithHand:
     def truth(self) -> dict[str, float]:
         return {}
 
+    def emits(self, now_s: float) -> bool:
+        return False
+
     def block_by_hand(self, is_blocked: bool, now_s: float) -> None:
-        self.done.append((is_blocked, now_s))
+        self.done.append(("block", is_blocked, now_s))
+
+    def cap_by_hand(self, is_capped: bool, now_s: float) -> None:
+        self.done.append(("caps", is_capped, now_s))
+
+    def take_out_by_hand(self, element: str, is_out: bool, now_s: float) -> None:
+        self.done.append((element, is_out, now_s))
 
 
 def test_the_simulated_person_acts_at_once_at_the_virtual_instant(stop: StopRequest) -> None:
@@ -149,8 +159,20 @@ def test_the_simulated_person_acts_at_once_at_the_virtual_instant(stop: StopRequ
     person.block_beam()
     timeline.wait_until(5.0)
     person.clear_beam()
+    person.cap_detectors()
+    person.take_out("part")
+    timeline.wait_until(7.0)
+    person.put_in("part")
+    person.uncap_detectors()
 
-    assert bench.done == [(True, 0.0), (False, 5.0)]
+    assert bench.done == [
+        ("block", True, 0.0),
+        ("block", False, 5.0),
+        ("caps", True, 5.0),
+        ("part", True, 5.0),
+        ("part", False, 7.0),
+        ("caps", False, 7.0),
+    ]
 
 
 def test_a_real_run_keeps_its_records_at_once_and_has_no_truth(tmp_path: Path, stop: StopRequest) -> None:
@@ -191,14 +213,20 @@ def test_a_real_run_reaches_its_instruments_over_the_network_through_the_tap(tmp
             wrap=tap,
         )
         assert tapped == []
-        channel = job.open_channel(address)
+        channel = job.open_channel(address, Opening())
         channel.close()
 
     assert isinstance(channel, TcpChannel)
     assert tapped == [channel]
 
 
-@pytest.mark.parametrize("ask", ["block_beam", "clear_beam"])
+@pytest.mark.parametrize("ask", ["block_beam", "clear_beam", "cap_detectors", "uncap_detectors"])
 def test_asking_for_hands_where_nobody_is_there_is_a_bug(ask: str) -> None:
     with pytest.raises(AssertionError, match="nobody is there"):
         getattr(NobodyThere(), ask)()
+
+
+@pytest.mark.parametrize("ask", ["take_out", "put_in"])
+def test_asking_for_an_element_to_be_moved_where_nobody_is_there_is_a_bug(ask: str) -> None:
+    with pytest.raises(AssertionError, match="nobody is there"):
+        getattr(NobodyThere(), ask)("part")

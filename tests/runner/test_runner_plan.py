@@ -11,16 +11,16 @@ from rigctl.files import parse_recipe
 from rigctl.files.recipe import Axis, Step
 from rigctl.record import load_run
 from rigctl.runner.bench import declared_capabilities
+from rigctl.runner.forecast import Forecast
 from rigctl.runner.plan import (
     DARK_DWELLS,
     aperture_s,
-    count_darks,
     count_visits,
-    duration_s,
     settle_s,
     step_layouts,
     step_visits,
 )
+from rigctl.runner.prospect import planned_rows
 from rigctl.runner.run import run_job
 
 NO_DARK = RECIPE.replace("dark: {by: shutter, before: true, after: true}", "")
@@ -32,7 +32,7 @@ def test_the_first_axis_turns_slowest() -> None:
 
     visits = list(step_visits(step))
 
-    assert [(visit.asked_deg["analyser"], visit.asked_deg["part mount"]) for visit in visits] == [
+    assert [(visit.asked["analyser"], visit.asked["part mount"]) for visit in visits] == [
         (0.0, 10.0),
         (0.0, 50.0),
         (45.0, 10.0),
@@ -69,13 +69,13 @@ def test_a_dwell_is_divided_evenly_among_its_readings() -> None:
 
 
 def test_a_slow_meter_is_given_the_time_to_forget_all_but_a_ten_thousandth() -> None:
-    step = Step("data", (Axis("part mount", (0.0, 5.0), settle_s=0.1),))
+    step = Step("data", (Axis("part mount", "angle", (0.0, 5.0), settle_s=0.1),))
 
     assert math.exp(-settle_s(step, 0.5) / 0.5) == pytest.approx(1e-4)
 
 
 def test_a_quick_meter_is_given_the_longest_settling_that_an_axis_asks_for() -> None:
-    step = Step("data", (Axis("a", (0.0,), settle_s=0.2), Axis("b", (0.0,), settle_s=0.3)))
+    step = Step("data", (Axis("a", "angle", (0.0,), settle_s=0.2), Axis("b", "angle", (0.0,), settle_s=0.3)))
 
     assert settle_s(step, 1e-3) == 0.3
 
@@ -86,7 +86,8 @@ def test_each_step_has_darks_of_its_own(recipe: str, darks: int, tmp_path: Path)
 
     run_job(job)
 
-    assert count_darks(job.recipe) == darks
+    planned = planned_rows(job.recipe, duration_s=1.0)
+    assert sum(not row.is_open for row in planned) == darks * DARK_DWELLS
     assert len(load_run(tmp_path / "run.h5").darks) == darks * DARK_DWELLS
 
 
@@ -111,7 +112,7 @@ def test_the_duration_told_beforehand_is_that_of_the_rehearsal_within_three_perc
 
     outcome = run_job(job)
 
-    expected_s = duration_s(job.recipe, declared_capabilities(job.recipe, job.rig, job.drivers))
+    expected_s = Forecast(job.recipe, declared_capabilities(job.recipe, job.rig, job.drivers)).duration_s()
     assert outcome.exit_code == 0
     assert expected_s == pytest.approx(job.timeline.now(), rel=0.03)
 
@@ -124,4 +125,4 @@ def test_a_recipe_whose_shutter_nobody_filled_has_a_duration_too(tmp_path: Path)
 
     capabilities = declared_capabilities(job.recipe, job.rig, job.drivers)
     assert "shutter" not in capabilities
-    assert duration_s(job.recipe, capabilities) == pytest.approx(job.timeline.now(), rel=0.03)
+    assert Forecast(job.recipe, capabilities).duration_s() == pytest.approx(job.timeline.now(), rel=0.03)

@@ -14,11 +14,11 @@ from runner_cases import SWEEP, TWO_MOUNTS, TWO_STEPS
 from rigctl.estimates import fit_run
 from rigctl.files import parse_recipe
 from rigctl.files.arrangement import train_of
-from rigctl.optics import Visits
+from rigctl.optics import Visits, visits_of
 from rigctl.record import load_run
 from rigctl.runner.bench import declared_capabilities
 from rigctl.runner.plan import DARK_DWELLS
-from rigctl.runner.prospect import expected_peak_w, planned_visits, predicted
+from rigctl.runner.prospect import expected_peak_w, planned_rows, predicted
 from rigctl.runner.run import run_job
 
 NIGHTS = 40
@@ -33,7 +33,7 @@ NEARLY_KNOWN = RECIPE.replace(SWEEP, "sweep: [{part mount: {turn: 1, step: 5 deg
 
 def planned(text: str, *, duration_s: float = 3600.0) -> Visits:
     recipe = parse_recipe(text, "recipe.yaml")
-    return planned_visits(recipe, train_of(recipe), duration_s=duration_s)
+    return visits_of(planned_rows(recipe, duration_s=duration_s), train_of(recipe))
 
 
 @pytest.mark.parametrize("text", [RECIPE, TWO_STEPS, RECIPE.replace("before: true", "before: false")])

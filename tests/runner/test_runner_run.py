@@ -15,6 +15,7 @@ from rigctl.links.family import Opening
 from rigctl.links.link import Link
 from rigctl.plugins import find_drivers
 from rigctl.record import load_run, verify_run
+from rigctl.runner.person import NobodyThere
 from rigctl.runner.run import Job, run_job
 from rigctl.timeline import Timeline
 
@@ -245,8 +246,12 @@ def test_an_existing_file_is_never_overwritten_and_nothing_is_sent(tmp_path: Pat
     opened: list[str] = []
     job = make_job(tmp_path / "run.h5")
 
+    def open_channel(address: str, opening: Opening) -> Channel:
+        opened.append(address)
+        return job.open_channel(address, opening)
+
     with pytest.raises(RecordError, match="never overwritten"):
-        run_job(replace(job, open_channel=lambda address, _: opened.append(address)))  # type: ignore[arg-type,return-value]
+        run_job(replace(job, open_channel=open_channel))
 
     assert (tmp_path / "run.h5").read_bytes() == b"precious"
     assert not opened
@@ -259,7 +264,7 @@ def test_darks_by_hand_ask_the_person_to_block_and_to_clear(tmp_path: Path) -> N
     job = make_job(tmp_path / "run.h5", rig=rig)
     asked: list[str] = []
 
-    class Listening:
+    class Listening(NobodyThere):
         def block_beam(self) -> None:
             asked.append("block")
             job.person.block_beam()

@@ -1,4 +1,4 @@
-"""Single visits: the way to an angle as it goes over the wire, settling, ranges, darks."""
+"""Single visits: the way to an angle as it goes over the wire, settling, ranges."""
 
 from collections.abc import Iterator
 from datetime import UTC, datetime
@@ -17,34 +17,19 @@ from runner_cases import (
     FakeShutter,
     FakeStage,
     fake_bench,
+    visiting_on,
 )
 
 from rigctl.files import parse_recipe
-from rigctl.files.recipe import Recipe
 from rigctl.interfaces import Flag
 from rigctl.record import load_run
 from rigctl.runner.bench import OpenBench
-from rigctl.runner.person import NobodyThere
-from rigctl.runner.plan import DARK_DWELLS, step_visits
+from rigctl.runner.plan import step_visits
 from rigctl.runner.run import run_job
-from rigctl.runner.visiting import Visiting, is_dark_by_hand, is_overloaded
+from rigctl.runner.visiting import is_overloaded
 from rigctl.timeline import VirtualTimeline
 
 PLAIN = parse_recipe(RECIPE, "recipe.yaml")
-BY_HAND = parse_recipe(RECIPE.replace("by: shutter", "by: hand"), "recipe.yaml")
-
-
-class Somebody:
-    """Keeps what was asked of the person."""
-
-    def __init__(self) -> None:
-        self.asked: list[str] = []
-
-    def block_beam(self) -> None:
-        self.asked.append("block")
-
-    def clear_beam(self) -> None:
-        self.asked.append("clear")
 
 
 @pytest.fixture
@@ -121,7 +106,7 @@ def test_the_angle_that_is_recorded_is_the_one_that_was_read_back(tmp_path: Path
 
 
 def test_a_range_is_the_smallest_that_holds_the_power_and_never_beyond_the_largest(timeline: VirtualTimeline) -> None:
-    visiting = Visiting(whole_bench(timeline), PLAIN, timeline, NobodyThere())
+    visiting = visiting_on(whole_bench(timeline), timeline)
 
     assert visiting.use_range("signal", 3e-6) == 2e-5
     assert visiting.use_range("signal", 1.0) == 2e-4
@@ -129,7 +114,7 @@ def test_a_range_is_the_smallest_that_holds_the_power_and_never_beyond_the_large
 
 def test_a_range_is_raised_one_by_one_until_there_is_no_larger(timeline: VirtualTimeline) -> None:
     meter = FakeMeter(timeline)
-    visiting = Visiting(fake_bench(timeline, meters={"signal": meter}), PLAIN, timeline, NobodyThere())
+    visiting = visiting_on(fake_bench(timeline, meters={"signal": meter}), timeline)
     visiting.use_range("signal", 1e-6)
 
     steps = [(visiting.raise_range("signal"), meter.range_w) for _ in range(3)]
@@ -141,7 +126,7 @@ def test_a_range_is_raised_one_by_one_until_there_is_no_larger(timeline: Virtual
 def test_settling_follows_the_time_constant_of_the_range_in_use(
     power_w: float, time_constant_s: float, timeline: VirtualTimeline
 ) -> None:
-    visiting = Visiting(whole_bench(timeline), PLAIN, timeline, NobodyThere())
+    visiting = visiting_on(whole_bench(timeline), timeline)
     visiting.use_range("signal", power_w)
     (step,) = PLAIN.steps
     visit = next(step_visits(step))
@@ -159,7 +144,7 @@ def test_the_slowest_of_several_meters_decides(timeline: VirtualTimeline) -> Non
         stages={"part mount": FakeStage(timeline)},
         meters={"signal": FakeMeter(timeline), "monitor": FakeMeter(timeline)},
     )
-    visiting = Visiting(bench, PLAIN, timeline, NobodyThere())
+    visiting = visiting_on(bench, timeline)
     visiting.use_range("signal", SLOW_WHEN_SENSITIVE.ranges_w[2])
     visiting.use_range("monitor", SLOW_WHEN_SENSITIVE.ranges_w[0])
     (step,) = PLAIN.steps
@@ -172,7 +157,7 @@ def test_the_slowest_of_several_meters_decides(timeline: VirtualTimeline) -> Non
 def test_positions_that_are_not_trusted_are_approached_anew(timeline: VirtualTimeline) -> None:
     stage = FakeStage(timeline)
     bench = fake_bench(timeline, stages={"part mount": stage}, meters={"signal": FakeMeter(timeline)})
-    visiting = Visiting(bench, PLAIN, timeline, NobodyThere())
+    visiting = visiting_on(bench, timeline)
     visiting.use_range("signal", 1e-4)
     (step,) = PLAIN.steps
     visit = next(step_visits(step))
@@ -183,54 +168,6 @@ def test_positions_that_are_not_trusted_are_approached_anew(timeline: VirtualTim
     visiting.take(visit, step)
 
     assert stage.asked_deg == [-0.2, 0.0, -0.2, 0.0]
-
-
-def test_a_dark_closes_the_shutter_and_dwells_several_times(timeline: VirtualTimeline) -> None:
-    shutter = FakeShutter(timeline)
-    bench = fake_bench(timeline, shutter=shutter, meters={"signal": FakeMeter(timeline)})
-    visiting = Visiting(bench, PLAIN, timeline, NobodyThere())
-    visiting.use_range("signal", 1e-4)
-
-    records = visiting.dark("data", "before")
-
-    assert shutter.states == [False]
-    assert len(records) == DARK_DWELLS
-    assert {(record["kind"], record["when"], record["how"]) for record in records} == {("dark", "before", "by shutter")}
-
-
-def test_a_person_is_asked_once_for_a_block_that_stays_and_once_to_clear_it(timeline: VirtualTimeline) -> None:
-    person = Somebody()
-    visiting = Visiting(whole_bench(timeline), BY_HAND, timeline, person)
-    visiting.use_range("signal", 1e-4)
-
-    visiting.dark("data", "after")
-    visiting.dark("data", "before")
-    visiting.open_beam()
-    visiting.open_beam()
-
-    assert person.asked == ["block", "clear"]
-
-
-def test_only_an_opened_shutter_counts_as_light_let_in(timeline: VirtualTimeline) -> None:
-    bench = whole_bench(timeline)
-    visiting = Visiting(bench, PLAIN, timeline, NobodyThere())
-
-    visiting.set_shutter(is_open=False)
-    before = bench.has_let_light_in
-    visiting.set_shutter(is_open=True)
-    visiting.set_shutter(is_open=False)
-
-    assert not before
-    assert bench.has_let_light_in
-
-
-@pytest.mark.parametrize(
-    ("recipe", "has_shutter", "is_by_hand"), [(BY_HAND, True, True), (PLAIN, False, True), (PLAIN, True, False)]
-)
-def test_darks_fall_to_a_person_where_the_recipe_says_so_or_no_shutter_is_there(
-    recipe: Recipe, has_shutter: bool, is_by_hand: bool
-) -> None:
-    assert is_dark_by_hand(recipe, has_shutter) == is_by_hand
 
 
 def test_an_overload_is_found_among_other_flags() -> None:
