@@ -32,6 +32,7 @@ GUESS, SILENCE = 1e-3, 1e-9  # relative noise of dwells without scatter: at firs
 SCOUT_STEPS = 20  # enough to tell a good basin from a bad one, also along a curved valley
 HOPELESS = 10.0  # times the best chi-squared of all scouts
 ALIKE = 1.0  # rise of chi-squared that one standard uncertainty makes
+FAR = 3.0  # tolerances
 BY_NOISE = 6.0  # standard uncertainties
 NEARLY_AS_WELL = 9.0  # rise of chi-squared that three standard uncertainties make
 
@@ -117,16 +118,29 @@ def _search(problem: Problem, moves: Symmetries) -> tuple[Descent, tuple[str, ..
     held = guarded(problem, points[0])
     scouts = [descend(held, z, most_steps=SCOUT_STEPS) for z in points]
     hope = NEARLY_AS_WELL + HOPELESS * min(scout.chi2 for scout in scouts)
-    walked = (descend(held, scout.z) for scout in scouts if scout.chi2 <= hope)
-    possible_first = sorted(walked, key=lambda descent: (_is_impossible(held, descent), descent.chi2))
-    found = sorted(possible_first, key=lambda descent: _rank(held, moves, descent, possible_first[0]))
+    walked = [descend(held, scout.z) for scout in scouts if scout.chi2 <= hope]
+    best = min(walked, key=lambda descent: (_is_impossible(held, descent), descent.chi2))
+    walked += [descend(held, z) for z in _nearer(held, moves, best.z)]
+    found = sorted(walked, key=lambda descent: _rank(held, moves, descent, best))
     rivals = [d.z for d in found if d.chi2 < found[0].chi2 + NEARLY_AS_WELL and not _is_impossible(held, d)]
     homes = _distinct(held, moves, [found[0].z, *rivals], near=1e-2)
     return found[0], tuple(_rival(held, moves, z) for z in homes[1:])
 
 
+def _nearer(problem: Problem, moves: Symmetries, z: Array) -> list[Array]:
+    """The same solution with its angles where they were said to be, if it lies far from there.
+
+    The sweep may have a mirror image that is no simple move, and the grid may have shown that one alone.
+    """
+    home = moves.nearest(_people(problem, z))
+    if all(abs(home[q.name] - q.value) <= FAR * (q.u or np.inf) for q in moves.unknowns):
+        return []
+    angles = {q.name: q.value for q in moves.unknowns if q.kind == "angle" and q.u}
+    return [np.array([angles.get(name, v) for name, v in zip(problem.names, z, strict=True)])]
+
+
 def _rank(problem: Problem, moves: Symmetries, descent: Descent, best: Descent) -> tuple[bool, float, float]:
-    """Order among solutions: possible before impossible, and of those that fit alike the nearest to the nominal."""
+    """Order among solutions: possible ones first, the best fit first, of those alike the nearest to the nominal."""
     excess = max(0.0, descent.chi2 - best.chi2 - ALIKE)
     home = moves.nearest(_people(problem, descent.z))
     return _is_impossible(problem, descent), excess, moves.distance(home)

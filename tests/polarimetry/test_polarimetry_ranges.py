@@ -140,7 +140,7 @@ def test_a_small_extinction_ratio_is_resolved_on_the_sensitive_range(seed: int) 
 
 
 def test_chi_squared_is_split_with_the_stray_light_of_each_range() -> None:
-    split = fitted(polarizer_case(), dim_and_bright(), TRUTH).split
+    split = fitted(polarizer_case(), dim_and_bright(), {**TRUTH, "signal.stray light @ 1 mW": 1e-5}).split
 
     assert split is not None
     assert split.not_harmonics < 2.0 * split.not_harmonics_dof

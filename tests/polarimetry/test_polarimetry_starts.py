@@ -133,6 +133,14 @@ def test_thinned_visits_do_not_fall_in_step_with_the_angles() -> None:
     assert np.unique(np.round(angles % 90.0, 2)).size > 150
 
 
+def test_a_start_is_worked_out_from_the_thinned_visits_alone() -> None:
+    whole = problem_of(polarizer_case(), sweep(step_deg=0.1), {"part.dial offset": 33.0})
+    noise_w = 1e-6 * np.random.default_rng(0).standard_normal(whole.visits.count)
+    noisy = replace(whole, level_w={"signal": whole.level_w["signal"] + noise_w})
+
+    assert np.array_equal(starts(noisy)[0], starts(thinned(noisy))[0])
+
+
 def test_a_thinned_start_is_as_good() -> None:
     truth = {"part.dial offset": 33.0, "part.extinction ratio": 1e-3, "source.power": 1e-3}
     problem = problem_of(polarizer_case(), sweep(step_deg=0.1), truth)

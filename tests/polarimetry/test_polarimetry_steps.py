@@ -90,6 +90,20 @@ def test_the_solution_nearest_to_the_nominal_axis_is_told_and_its_mirror_image_n
     assert "exit cube.axis = -23.0" in mirror or "exit cube.axis = -23.1" in mirror
 
 
+def test_a_mirror_image_that_the_grid_shows_alone_is_left_for_the_side_asked_for() -> None:
+    # With very different retardances the one grid for all three holds only the basin of the other side.
+    truth = {
+        "part.retardance @ 22 degC": 0.311,
+        "part.retardance @ 25 degC": 0.288,
+        "part.retardance @ 28 degC": 0.163,
+        "part.dial offset": 3.886,
+        "exit cube.axis": 20.036,
+    }
+
+    for seed in range(3):
+        assert_found(fitted(three_ovens_case(), empty_pair_and_three_ovens(), truth, seed), truth)
+
+
 def test_the_nominal_axis_chooses_the_side() -> None:
     other = empty_pair_case().rewritten(quantity("exit cube.axis", -22.5, 5.0, is_unknown=True))
 
