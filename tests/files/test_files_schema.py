@@ -3,6 +3,7 @@
 import json
 import re
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -18,6 +19,7 @@ from jsonschema import Draft202012Validator
 from rigctl.errors import FileError
 from rigctl.files import parse_recipe, parse_rig
 from rigctl.files.schema import recipe_schema, rig_schema
+from rigctl.interfaces import Option
 from rigctl.kinds import KINDS
 from rigctl.plugins import find_bench_factory, find_drivers
 
@@ -155,6 +157,7 @@ def test_a_slip_in_a_recipe_is_refused_at_its_place(old: str, new: str, path: st
         ("positive: clockwise", "positive: left", "instruments/mount 1/positive"),
         ("-10 to 400 deg", "400 deg", "instruments/mount 1/travel"),
         ("[20 uW, 2 mW]", "[20 uW, 2 mA]", "instruments/head 7/ranges"),
+        ("[20 uW, 2 mW]", "[]", "instruments/head 7/ranges"),
         ("channel: 3", "channel: three", "instruments/shutter 1/channel"),
         ("limits: {power: 5 mW}", "limits: {current: 5 mA}", "instruments/head 7/limits"),
         ("limits: {power: 5 mW}", "limits: {}", "instruments/head 7/limits"),
@@ -273,3 +276,35 @@ def test_every_unit_of_every_kind_fits_the_pattern(kind: str) -> None:
         assert re.search(quantity_schema(kind)["pattern"], f"-1.5e-3 {unit}")
         assert re.search(measured_schema(kind)["pattern"], f"5 {unit} +- 0.1 {unit} (k=2)")
         assert not re.search(quantity_schema(kind)["pattern"], f"5 {unit}x")
+
+
+@pytest.mark.parametrize(
+    ("option", "right", "wrong"),
+    [
+        (Option("text"), ["A", 7, True], [[], {}]),
+        (Option("choice", choices=("on", "off")), ["on"], ["On", 1]),
+        (Option("whole number"), [3, "-3", "0012"], ["1e3", 1.5, []]),
+        (Option("angle"), ["5 deg", "-.5 mrad"], [5, "5", "5 mm"]),
+        (Option("ratio"), ["1000:1", "30 dB", "4 %", 0.04], ["4 %%", "30 db"]),
+        (Option("span of temperature"), ["10 to 40 degC", "283 K to 40 degC"], ["10 degC", "10 to 40", "40 degC to"]),
+        (Option("list of power"), ["1 mW", ["1 mW"], ["1 uW", "1 mW"]], [[], ["1"], {}]),
+        (Option("thermistor"), ["beta 3976 K, 10 kOhm at 25 degC"], [3976, []]),
+    ],
+    ids=lambda value: value.kind if isinstance(value, Option) else "",
+)
+def test_every_kind_of_option_has_a_schema(option: Option, right: list[object], wrong: list[object]) -> None:
+    driver = replace(DRIVERS["flap"], options={"k": option})
+    schema = rig_schema({"flap": driver}, None)
+    validator = Draft202012Validator(schema["$defs"]["driver flap"]["properties"]["k"])
+
+    assert [value for value in right if not validator.is_valid(value)] == []
+    assert [value for value in wrong if validator.is_valid(value)] == []
+
+
+def test_an_option_says_what_it_means_where_it_does() -> None:
+    driver = replace(DRIVERS["flap"], options={"k": Option("time", meaning="how fast it moves")})
+
+    option = rig_schema({"flap": driver}, None)["$defs"]["driver flap"]["properties"]["k"]
+
+    assert option["description"] == "how fast it moves"
+    assert option["examples"] == [KINDS["time"].example]
