@@ -5,7 +5,9 @@ from typing import Annotated
 
 import typer
 
-RecipePath = Annotated[Path, typer.Argument(metavar="RECIPE", help="What to measure: a YAML file, or the name of a ready recipe.")]
+RecipePath = Annotated[
+    Path, typer.Argument(metavar="RECIPE", help="What to measure: a YAML file, or the name of a ready recipe.")
+]
 RunPath = Annotated[Path, typer.Argument(metavar="FILE", help="A run file (HDF5).")]
 Out = Annotated[
     Path | None,

@@ -13,7 +13,6 @@ from typing import Any
 
 from rigctl.errors import DamagedFileError, RecordError, UsageError
 from rigctl.record.journal import JournalContent, journal_path, parse_journal
-from rigctl.record.layout import Header
 from rigctl.record.publish import publish_final
 from rigctl.record.run import Run
 from rigctl.record.verify import Verification, check_file, open_view
@@ -124,7 +123,4 @@ def _run(records: Sequence[Mapping[str, Any]], path: Path, *, is_live: bool) -> 
             where=str(path),
             do="try again; where it stays so, nothing was measured and it can be deleted",
         )
-    run = Run(Header.from_record(records[0]), is_live=is_live)
-    for record in records:
-        run.keep(record, run.parse(record))
-    return run
+    return Run.of(records, is_live=is_live)

@@ -3,8 +3,8 @@
 It does no input or output.
 """
 
-from collections.abc import Iterator, Mapping
-from typing import Any
+from collections.abc import Iterator, Mapping, Sequence
+from typing import Any, Self
 
 from rigctl.record.layout import Header
 from rigctl.record.records import (
@@ -55,6 +55,14 @@ class Run:
             self.attempts.append(parsed)
         elif isinstance(parsed, Dark):
             self.darks.append(parsed)
+
+    @classmethod
+    def of(cls, records: Sequence[Mapping[str, Any]], *, is_live: bool) -> Self:
+        """Return the run whose records these are, the header first."""
+        run = cls(Header.from_record(records[0]), is_live=is_live)
+        for record in records:
+            run.keep(record, run.parse(record))
+        return run
 
     def of_kind(self, kind: str) -> list[Mapping[str, Any]]:
         """Return the records of one kind, oldest first."""

@@ -11,7 +11,7 @@ from typing import Any, Self
 
 from rigctl.errors import RecordError
 from rigctl.record.disk import sync_directory
-from rigctl.record.journal import Journal, journal_path
+from rigctl.record.journal import Journal, journal_path, parse_journal
 from rigctl.record.layout import Header, check_header
 from rigctl.record.publish import publish, publish_final
 from rigctl.record.run import Run
@@ -48,7 +48,7 @@ def create_run(path: Path, header: Header, *, durable: bool) -> "RunWriter":
     try:
         _refuse_overwriting(path)
         journal.append(header.to_record())
-        writer = RunWriter(path, Run(header, is_live=True), journal, durable=durable)
+        writer = RunWriter(path, header, journal, durable=durable)
         if durable:
             sync_directory(path.parent)
             writer.view()
@@ -76,16 +76,20 @@ class RunWriter:
     reader folds it into the run file.
     """
 
-    def __init__(self, path: Path, run: Run, journal: Journal, *, durable: bool) -> None:
-        self.path, self.run = path, run
-        self._journal, self._durable = journal, durable
+    def __init__(self, path: Path, header: Header, journal: Journal, *, durable: bool) -> None:
+        self.path = path
+        self._blank, self._journal, self._durable = Run(header, is_live=True), journal, durable
         self._next_view_s = 0.0
+
+    @property
+    def run(self) -> Run:
+        """What was recorded so far, read back from the journal: memory does not grow with the night."""
+        return Run.of(parse_journal(self._journal.content()).records, is_live=True)
 
     def append(self, record: Mapping[str, Any]) -> None:
         """Record something; when durable it is on the disk once this returns."""
-        parsed = self.run.parse(record)
+        self._blank.parse(record)
         self._journal.append(record)
-        self.run.keep(record, parsed)
 
     def view(self) -> None:
         """Bring the run file up to date."""

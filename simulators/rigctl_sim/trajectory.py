@@ -5,7 +5,7 @@ present never changes; what lies ahead may be cut short by a hold.
 """
 
 import math
-from bisect import bisect_right
+from bisect import bisect_left, bisect_right
 from dataclasses import dataclass
 
 
@@ -57,8 +57,7 @@ class Trajectory:
 
     def knots(self, after_s: float, before_s: float) -> list[float]:
         """Return the instants between two, both left out, at which the acceleration changes."""
-        first = bisect_right(self._starts, after_s)
-        return [start for start in self._starts[first:] if start < before_s]
+        return self._starts[bisect_right(self._starts, after_s) : bisect_left(self._starts, before_s)]
 
     def move(self, start_s: float, target: float, *, speed: float, acceleration: float) -> float:
         """Add a move from rest to rest; return the instant at which it ends.
