@@ -4,8 +4,10 @@ It does no input or output.
 """
 
 from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import replace
 from typing import Any, Self
 
+from rigctl.readings import Identity
 from rigctl.record.layout import Header
 from rigctl.record.records import (
     KEYS,
@@ -48,13 +50,15 @@ class Run:
         return None
 
     def keep(self, record: Mapping[str, Any], parsed: Visit | Dark | None) -> None:
-        """Take in a record that was parsed."""
+        """Take in a record that was parsed; where a twin says who it is, the run is a simulated one."""
         self.records.append(record)
         self._by_kind[record["kind"]].append(record)
         if isinstance(parsed, Visit):
             self.attempts.append(parsed)
         elif isinstance(parsed, Dark):
             self.darks.append(parsed)
+        elif record["kind"] == "identity" and Identity(**record["identity"]).is_simulated:
+            self.header = replace(self.header, is_simulated=True)
 
     @classmethod
     def of(cls, records: Sequence[Mapping[str, Any]], *, is_live: bool) -> Self:

@@ -41,7 +41,7 @@ def main() -> None:
         try:
             while not rig_path.exists():
                 time.sleep(0.05)
-            subprocess.run([*COMMAND, "run", recipe_path, "--rig", rig_path, "--out", run_path], check=True)
+            subprocess.run([*COMMAND, "run", recipe_path, "--rig", rig_path, "--arm", "--out", run_path], check=True)
         finally:
             twins.terminate()
             twins.wait(10)

@@ -3,6 +3,7 @@
 import json
 import os
 import pty
+import select
 import signal
 import socket
 import subprocess
@@ -26,7 +27,7 @@ def twins(tmp_path: Path) -> Iterator[Twins]:
 
 
 def start_run(twins: Twins, path: Path) -> subprocess.Popen[str]:
-    arguments = ["run", twins.recipe, "--rig", twins.rig, "--out", path]
+    arguments = ["run", twins.recipe, "--rig", twins.rig, "--arm", "--out", path]
     return subprocess.Popen(
         [*COMMAND, *map(str, arguments)], stderr=subprocess.PIPE, stdout=subprocess.PIPE, stdin=subprocess.DEVNULL,
         text=True,
@@ -34,7 +35,9 @@ def start_run(twins: Twins, path: Path) -> subprocess.Popen[str]:
 
 
 def test_a_live_run_over_tcp_measures_fits_and_leaves_the_beam_blocked(twins: Twins, tmp_path: Path) -> None:
-    done = polrig("run", twins.recipe, "--rig", twins.rig, "--out", tmp_path / "run.h5", "--part", "P-7", "--json")
+    done = polrig(
+        "run", twins.recipe, "--rig", twins.rig, "--arm", "--out", tmp_path / "run.h5", "--part", "P-7", "--json"
+    )
 
     answer = json.loads(done.stdout)
     assert done.returncode == 0, done.stderr
@@ -43,12 +46,14 @@ def test_a_live_run_over_tcp_measures_fits_and_leaves_the_beam_blocked(twins: Tw
         "part.extinction ratio",
         "part.dial offset",
     ]
-    assert load_run(tmp_path / "run.h5").header.part == "P-7"
+    run = load_run(tmp_path / "run.h5")
+    assert run.header.part == "P-7"
+    assert run.header.is_simulated  # the twins say so of themselves
     assert twins.is_shutter_closed()
 
 
 def test_a_live_run_and_a_rehearsal_of_one_seed_agree_on_the_truth(twins: Twins, tmp_path: Path) -> None:
-    live = polrig("run", twins.recipe, "--rig", twins.rig, "--out", tmp_path / "run.h5", "--json")
+    live = polrig("run", twins.recipe, "--rig", twins.rig, "--arm", "--out", tmp_path / "run.h5", "--json")
     rehearsed = polrig("rehearse", twins.recipe, "--rig", twins.original, "--out", tmp_path / "rehearsal.h5", "--json")
 
     fits = [json.loads(done.stdout)["fit"]["estimates"] for done in (live, rehearsed)]
@@ -114,7 +119,9 @@ def test_nobody_listening_is_exit_code_3_and_says_which_address(tmp_path: Path) 
     (tmp_path / "recipe.yaml").write_text(RECIPE, encoding="utf-8")
     (tmp_path / "rig.yaml").write_text(RIG.replace(":5001", f":{port}"), encoding="utf-8")
 
-    done = polrig("run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--out", tmp_path / "run.h5")
+    done = polrig(
+        "run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--arm", "--out", tmp_path / "run.h5"
+    )
 
     assert done.returncode == 3
     assert f"tcp://127.0.0.1:{port}" in done.stderr
@@ -125,7 +132,7 @@ def test_two_runs_on_one_bench_are_refused_while_the_first_goes_on(tmp_path: Pat
     with serving(tmp_path, SLOW_RECIPE) as twins:
         first = start_run(twins, tmp_path / "first.h5")
         wait_for_visits(tmp_path / "first.h5.journal", 1)
-        second = polrig("run", twins.recipe, "--rig", twins.rig, "--out", tmp_path / "second.h5")
+        second = polrig("run", twins.recipe, "--rig", twins.rig, "--arm", "--out", tmp_path / "second.h5")
         first.send_signal(signal.SIGINT)
         first.communicate(timeout=20.0)
 
@@ -144,7 +151,9 @@ def test_darks_by_hand_without_a_terminal_end_at_once_with_exit_code_2_and_nothi
         (tmp_path / "recipe.yaml").write_text(RECIPE.replace("by: shutter", "by: hand"), encoding="utf-8")
         (tmp_path / "rig.yaml").write_text(RIG.replace(":5001", f":{port}"), encoding="utf-8")
 
-        done = polrig("run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--out", tmp_path / "run.h5")
+        done = polrig(
+            "run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--arm", "--out", tmp_path / "run.h5"
+        )
 
         assert done.returncode == 2
         assert "by hand" in done.stderr
@@ -156,17 +165,24 @@ def test_darks_by_hand_without_a_terminal_end_at_once_with_exit_code_2_and_nothi
 def read_until(terminal: int, text: bytes, timeout_s: float = 30.0) -> bytes:
     seen, deadline = b"", time.monotonic() + timeout_s
     while text not in seen:
-        assert time.monotonic() < deadline, seen
+        assert select.select([terminal], [], [], max(deadline - time.monotonic(), 0.0))[0], seen
         seen += os.read(terminal, 4096)
     return seen
 
 
+def run_at_a_terminal(twins: Twins, path: Path) -> tuple[int, int]:
+    """Start a run on a terminal of its own and arm it; its process and the terminal."""
+    pid, terminal = pty.fork()
+    if pid == 0:
+        os.execv(COMMAND[0], [*COMMAND, "run", str(twins.recipe), "--rig", str(twins.rig), "--out", str(path)])
+    assert b"CAUTION" in read_until(terminal, b"Type 'arm'")
+    os.write(terminal, b"arm\n")
+    return pid, terminal
+
+
 def test_at_a_terminal_darks_by_hand_ask_for_the_block_and_wait_for_enter(tmp_path: Path) -> None:
     with serving(tmp_path, RECIPE.replace("by: shutter", "by: hand")) as twins:
-        pid, terminal = pty.fork()
-        if pid == 0:
-            os.execv(COMMAND[0], [*COMMAND, "run", str(twins.recipe), "--rig", str(twins.rig), "--out",
-                                  str(tmp_path / "run.h5")])  # fmt: skip
+        pid, terminal = run_at_a_terminal(twins, tmp_path / "run.h5")
         read_until(terminal, b"Block the beam")
         os.write(terminal, b"\n")
         seen = read_until(terminal, b"Take the block out")
@@ -184,10 +200,7 @@ def test_at_a_terminal_darks_by_hand_ask_for_the_block_and_wait_for_enter(tmp_pa
 
 def test_ctrl_c_while_asked_for_a_block_ends_with_exit_code_6(tmp_path: Path) -> None:
     with serving(tmp_path, RECIPE.replace("by: shutter", "by: hand")) as twins:
-        pid, terminal = pty.fork()
-        if pid == 0:
-            os.execv(COMMAND[0], [*COMMAND, "run", str(twins.recipe), "--rig", str(twins.rig), "--out",
-                                  str(tmp_path / "run.h5")])  # fmt: skip
+        pid, terminal = run_at_a_terminal(twins, tmp_path / "run.h5")
         read_until(terminal, b"Block the beam")
         os.write(terminal, b"\x03")
         read_until(terminal, b"SIGINT")
@@ -197,12 +210,57 @@ def test_ctrl_c_while_asked_for_a_block_ends_with_exit_code_6(tmp_path: Path) ->
     assert os.waitstatus_to_exitcode(status) == 6
 
 
+@pytest.mark.parametrize("answer", [b"\n", b"no\n", b"ARM\n"])
+def test_at_a_terminal_anything_but_the_word_leaves_the_bench_as_it_is(answer: bytes, tmp_path: Path) -> None:
+    with serving(tmp_path) as twins:
+        pid, terminal = pty.fork()
+        if pid == 0:
+            os.execv(COMMAND[0], [*COMMAND, "run", str(twins.recipe), "--rig", str(twins.rig), "--out",
+                                  str(tmp_path / "run.h5")])  # fmt: skip
+        read_until(terminal, b"Type 'arm'")
+        os.write(terminal, answer)
+        read_until(terminal, b"nothing was sent")
+        _, status = os.waitpid(pid, 0)
+        os.close(terminal)
+
+    assert os.waitstatus_to_exitcode(status) == 6
+    assert not (tmp_path / "run.h5").exists()
+
+
+def test_what_may_emit_wants_arming_where_nobody_can_be_asked(tmp_path: Path) -> None:
+    with socket.create_server(("127.0.0.1", 0)) as listener:
+        listener.settimeout(0.1)
+        port = listener.getsockname()[1]
+        (tmp_path / "recipe.yaml").write_text(RECIPE, encoding="utf-8")
+        (tmp_path / "rig.yaml").write_text(RIG.replace(":5003", f":{port}"), encoding="utf-8")
+
+        done = polrig("run", tmp_path / "recipe.yaml", "--rig", tmp_path / "rig.yaml", "--out", tmp_path / "run.h5")
+
+        assert done.returncode == 2
+        assert "--arm" in done.stderr
+        assert "no safety function" in done.stderr
+        assert not (tmp_path / "run.h5").exists()
+        with pytest.raises(TimeoutError):
+            listener.accept()
+
+
+def test_a_bench_without_shutter_and_source_needs_no_arming(tmp_path: Path) -> None:
+    """Nothing on it can be switched: somebody lets the light in, and the recipe asks for no dark."""
+    recipe = RECIPE.replace("dark: {by: shutter, before: true, after: true}\n", "")
+    with serving(tmp_path, recipe, RIG.replace(", shutter: shutter 1", "")) as twins:
+        done = polrig("run", twins.recipe, "--rig", twins.rig, "--out", tmp_path / "run.h5")
+
+    assert "CAUTION" not in done.stderr
+    assert load_run(tmp_path / "run.h5").status == "complete"
+
+
 def test_trace_writes_every_byte_both_ways_with_times(twins: Twins, tmp_path: Path) -> None:
     polrig(
         "run",
         twins.recipe,
         "--rig",
         twins.rig,
+        "--arm",
         "--out",
         tmp_path / "run.h5",
         "--trace",
