@@ -51,7 +51,7 @@ class Roles:
         return wanted
 
     def check(self) -> None:
-        """Check the names of all roles."""
+        """Check the names of all roles, and that one shutter at most stands before everything else."""
         seen: dict[str, str] = {}
         for name, part in self.part.items().items():
             twin = seen.setdefault(name.replace(" ", "_"), name)
@@ -61,6 +61,10 @@ class Roles:
                 part.wrong_key(f"the word {quoted(name)} has a meaning of its own", expected="another name")
             elif twin != name:
                 part.wrong_key(f"the roles {quoted(twin)} and {quoted(name)} differ only by '_'")
+        shutters = [name for name in self.part.items() if self.kind(name) == "shutter"]
+        for name in shutters[1:]:
+            what = f"the role {quoted(name)} is a second shutter beside {quoted(shutters[0])}"
+            self.part.at(name).wrong_key(what, expected="one shutter, before everything else in the light's way")
 
     def check_used(self, kinds: Collection[str]) -> None:
         """Refuse roles of some kinds that nothing uses: most likely a name was mistaken."""

@@ -522,6 +522,15 @@ def test_words_that_mean_something_else_are_no_roles(word: str) -> None:
     assert lines == [f"n.yaml:3:3: the word '{word}' has a meaning of its own; expected another name"]
 
 
+@pytest.mark.parametrize("second", ["shutter", "{is: shutter, optional: true}"])
+def test_a_second_shutter_is_told_with_its_place(second: str) -> None:
+    at, what, expected, _ = mistake({"source:": f"  second one: {second}\nsource:"})
+
+    assert at.startswith(f"second one: {second}")
+    assert what == "the role 'second one' is a second shutter beside 'shutter'"
+    assert expected == "one shutter, before everything else in the light's way"
+
+
 def test_all_mistakes_of_a_whole_night_are_told_at_once() -> None:
     changes = {
         "driven by: diode": "driven by: diod",

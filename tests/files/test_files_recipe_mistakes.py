@@ -386,7 +386,7 @@ def test_a_wrong_key_or_value_is_told(old: str, new: str, place: str, what: str,
         ),
         (
             "signal: power meter",
-            "signal: power meter\n  a/b: shutter",
+            "signal: power meter\n  a/b: relay",
             "5:3",
             "'a/b' is no name of a role",
             "a letter, then letters A to Z, digits, spaces or '_', at most 40 in all",
@@ -394,7 +394,7 @@ def test_a_wrong_key_or_value_is_told(old: str, new: str, place: str, what: str,
         ),
         (
             "signal: power meter",
-            "signal: power meter\n  hand: shutter",
+            "signal: power meter\n  hand: relay",
             "5:3",
             "the word 'hand' has a meaning of its own",
             "another name",
@@ -634,6 +634,6 @@ def test_a_recipe_has_a_sweep_or_steps_but_not_both() -> None:
 
 
 def test_two_roles_that_the_run_file_could_not_tell_apart_are_refused() -> None:
-    assert complaints({"  signal:": "  part_mount: shutter\n  signal:"}) == [
+    assert complaints({"  signal:": "  part_mount: relay\n  signal:"}) == [
         "r.yaml:4:3: the roles 'part mount' and 'part_mount' differ only by '_'"
     ]
