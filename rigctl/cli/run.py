@@ -1,15 +1,11 @@
 """`polrig run`: the real run."""
 
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import Annotated
 
 import typer
 
 from rigctl.cli.options import AsJson, Out, RecipePath, Trace
-from rigctl.errors import PlanError
-
-if TYPE_CHECKING:
-    from rigctl.cli.loading import Loaded
 
 NAME = "run"
 
@@ -32,16 +28,15 @@ def command(
     from rigctl.cli.person import PersonAtTerminal, is_somebody_there
     from rigctl.cli.signals import stopping_on_signals
     from rigctl.cli.tracing import tapping
+    from rigctl.runner.beforehand import refuse_beforehand
     from rigctl.runner.bench import emitting_roles
     from rigctl.runner.hardware import real_job
-    from rigctl.runner.limits import refuse_beyond_limits
     from rigctl.runner.person import NobodyThere
     from rigctl.runner.run import run_job
     from rigctl.timeline import StopRequest
 
     loaded = load(recipe, rig)
-    refuse_beyond_limits(loaded.recipe, loaded.rig, loaded.drivers)
-    _refuse_without_hands(loaded)
+    refuse_beforehand(loaded.recipe, loaded.rig, loaded.drivers, is_somebody_there=is_somebody_there())
     if emitting_roles(loaded.recipe, loaded.rig):
         arm_or_refuse(loaded.recipe, loaded.rig, is_armed=arm)
     path = free_path(out, recipe.stem)
@@ -62,23 +57,3 @@ def command(
         outcome = run_job(job)
     progress.end()
     return tell_outcome(job, outcome, f"ran '{loaded.recipe.title}'", as_json=as_json)
-
-
-def _refuse_without_hands(loaded: "Loaded") -> None:
-    """Refuse what needs hands where nobody can be asked for them."""
-    from rigctl.cli.person import is_somebody_there
-    from rigctl.runner.bench import filled_roles
-    from rigctl.runner.darks import needs_hands
-    from rigctl.runner.presence import refuse_without_hands
-
-    if is_somebody_there():
-        return
-    recipe = loaded.recipe
-    refuse_without_hands(recipe, loaded.rig)
-    has_shutter = any(recipe.roles[role].kind == "shutter" for role in filled_roles(recipe, loaded.rig))
-    if needs_hands(recipe, has_shutter=has_shutter):
-        raise PlanError(
-            "its darks are taken by hand, and nobody can be asked: this is no terminal",
-            where=recipe.path,
-            do="Run it at a terminal, or give the rig a shutter and the recipe `dark: {by: shutter}`.",
-        )

@@ -90,6 +90,7 @@ class Measuring:
             meter.set_dwell(self.recipe.dwell.readings, aperture_s(self.recipe))
             self.visiting.use_range(role, expected_peak_w(self.recipe, role))
         for source in self.bench.sources.values():
+            source.switch_off()  # whoever used it before may have left it on
             source.program()
         for controller in self.bench.controllers.values():
             controller.program()

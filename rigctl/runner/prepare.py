@@ -54,6 +54,8 @@ class Climate:
             _refuse_ill(role, source.conditions())
             source.switch_on()
         ramp(source, to_a, self.timeline, rate_a_per_s=rate_a_per_s)
+        if to_a > 0.0:
+            _refuse_ill(role, source.conditions(), must_be_on=True)
         self._wanted_a[role] = (to_a, rate_a_per_s)
 
     def bring_back(self) -> None:

@@ -49,7 +49,8 @@ class Presence:
     def __init__(self, bench: OpenBench, timeline: Timeline, person: Person) -> None:
         self.bench, self.timeline, self.person = bench, timeline, person
         self._parts = movable(bench.recipe)
-        self._is_in = dict.fromkeys(self._parts, True)
+        # what a person moves stands where the recipe has it; a slide may have been left anywhere
+        self._is_in = {name: True if needs_hands(part, bench.rig) else None for name, part in self._parts.items()}
 
     def arrange(self, step: Step) -> bool:
         """Bring every element where a step wants it; return whether that was confirmed."""

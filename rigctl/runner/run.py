@@ -15,6 +15,7 @@ from rigctl.files.rig import Rig
 from rigctl.interfaces import Driver
 from rigctl.record.layout import Header
 from rigctl.record.run_writer import RunWriter, create_run
+from rigctl.runner.beforehand import refuse_beforehand
 from rigctl.runner.bench import OpenBench, OpenChannel, open_bench
 from rigctl.runner.guard import Guard, NoGuard
 from rigctl.runner.measuring import Measuring
@@ -57,9 +58,11 @@ def run_job(job: Job) -> Outcome:
 
     Errors
     ------
-    `RecordError` when the run file cannot be created (nothing was sent then). Every later failure is an outcome,
-    after the bench was made safe; a bug keeps its exception in `Outcome.bug`.
+    `LimitError` and `PlanError` for what is refused beforehand, `RecordError` when the run file cannot be created:
+    nothing was sent then. Every later failure is an outcome, after the bench was made safe; a bug keeps its exception
+    in `Outcome.bug`.
     """
+    refuse_beforehand(job.recipe, job.rig, job.drivers, is_somebody_there=job.person.is_there)
     with create_run(job.path, job.header, durable=job.is_durable) as writer:
         outcome = _safely(job, writer)
         _tell_safe(job, writer, outcome.safe_steps)
