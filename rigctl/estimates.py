@@ -61,20 +61,13 @@ def run_data(run: Run) -> Data:
     saturated = sum(visit.status == "saturated" for visit in placed)
     planned = sum(prod(step.shape) for step in run.header.steps)
     return Data(
-        train=_seen_by(train, detectors),
+        train=train.read_by(detectors),
         visits=visits_of(rows, train),
         observed={name: _observed(dwells, len(good), name, monitor) for name in detectors},
         saturated=saturated,
         missing=planned - len(visits) - saturated,
         unconfirmed=len(visits) - len(good),
     )
-
-
-def _seen_by(train: "Train", names: Sequence[str]) -> "Train":
-    """Return a train without the detectors that are not named."""
-    gone = [f"{detector.name}." for detector in train.detectors if detector.name not in names]
-    kept = {name: q for name, q in train.quantities.items() if not name.startswith(tuple(gone))}
-    return replace(train, detectors=tuple(d for d in train.detectors if d.name in names), quantities=kept)
 
 
 def asks_for_anything(run: Run) -> bool:

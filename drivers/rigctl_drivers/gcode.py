@@ -29,7 +29,7 @@ COUNTER_CLOCKWISE = "counter-clockwise to an eye facing the light"
 CLOCKWISE = "clockwise to an eye facing the light"
 AT_START, NEVER = "at start", "never"
 
-AGAIN_S = 0.05
+AGAIN_S = 0.01
 HOMING_S = (1.0, 180.0)
 """When a search for the zero is first looked at, and when it is given up, s; slow mounts need minutes."""
 ARRIVED_STEPS = 1.5
@@ -106,8 +106,8 @@ class GcodeRotary:
         """
         from_deg = self.angle_deg() if self._standing_deg is None else self._standing_deg
         self._standing_deg = None
-        began_s = self._link.timeline.now()
         self._wire.command(format_move(self._axis, self._sense * angle_deg))
+        began_s = self._link.timeline.now()  # a slow wire takes a while to carry the command
         takes_s = self.capabilities.travel_time_s(angle_deg - from_deg)
         move = Move(round(angle_deg, 3))
         return Begun(

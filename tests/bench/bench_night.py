@@ -37,7 +37,8 @@ source: {{wavelength: 785.2 nm, power: 2 mW +- 20 %, driven by: diode, cooled by
 optics:
   - polarizer: {{name: entry polarizer, axis: 0 deg, extinction ratio: 100000:1 +- 30 %}}
   - pick-off: {{to: monitor, fraction: 0.04 +- 0.002}}
-  - retarder: {{name: part, turned by: part mount, warmed by: oven, retardance: 0.25 waves, unknown: [retardance, dial offset]}}
+  - retarder:
+      {{name: part, turned by: part mount, warmed by: oven, retardance: 0.25 waves, unknown: [retardance, dial offset]}}
   - polarizer: {{name: exit polarizer, axis: 0 deg +- 0.1 deg, extinction ratio: 100000:1 +- 30 %}}
   - detector: {{role: signal}}
 prepare:
@@ -46,7 +47,9 @@ prepare:
 steps:
   - name: night
     sweep:
-      - oven: {{values: [22 degC, 25 degC, 28 degC, 31 degC], steady: {{within: 0.05 K, for: 5 min, give up after: 60 min}}}}
+      - oven:
+          values: [22 degC, 25 degC, 28 degC, 31 degC]
+          steady: {{within: 0.05 K, for: 5 min, give up after: 60 min}}
       - part mount: {{turn: {turns}, step: 1 deg, approach: from below}}
 dwell: {{time: 400 ms, at least: 4 readings}}
 dark: {{by: shutter, before: true, after: true, every: 1 h}}
