@@ -21,6 +21,7 @@ from rigctl.links.channel import Channel
 from rigctl.links.link import Link
 from rigctl.plugins import find_bench_factory, find_drivers
 from rigctl.runner.bench import OpenBench, open_bench
+from rigctl.runner.limits import LimitedSource
 from rigctl.runner.prepare import Climate
 from rigctl.runner.run import Job
 from rigctl.runner.visiting import Visiting
@@ -222,15 +223,17 @@ def fake_bench(
     shutter: FakeShutter | None = None,
     stages: Mapping[str, FakeStage] | None = None,
     meters: Mapping[str, FakeMeter] | None = None,
+    sources: Mapping[str, LimitedSource] | None = None,
 ) -> OpenBench:
     """A bench of instruments without a wire, all at one address."""
-    roles = [*(["shutter"] if shutter else []), *(stages or {}), *(meters or {})]
+    roles = [*(["shutter"] if shutter else []), *(stages or {}), *(meters or {}), *(sources or {})]
     entries = {role: InstrumentEntry(role, "fake", ADDRESS, {}, {}) for role in roles}
     drivers = find_drivers()
     rig = parse_rig(RIG, "rig.yaml", drivers, find_bench_factory())
     bench = OpenBench(parse_recipe(RECIPE, "recipe.yaml"), rig, entries)
     bench.stages.update(stages or {})
     bench.meters.update(meters or {})
+    bench.sources.update(sources or {})
     if shutter is not None:
         bench.shutter, bench.shutter_role = shutter, "shutter"
     bench.links[ADDRESS] = Link(ADDRESS, DeafChannel, drivers["scpi-switch"].family, timeline)
