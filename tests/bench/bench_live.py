@@ -83,7 +83,7 @@ instruments:
   mount 1: {driver: gcode-rotary, at: "serial:///dev/ttyUSB0?baud=115200", speed: 40 deg/s, acceleration: 200 deg/s2}
   head 1: {driver: scpi-power-meter, at: tcp://127.0.0.1:5002}
   head 2: {driver: scpi-power-meter, at: tcp://127.0.0.1:5003}
-  head 3: {driver: scpi-power-meter, at: "serial:///dev/ttyUSB1?baud=115200"}
+  head 3: {driver: scpi-power-meter, at: "serial:///dev/ttyUSB1?baud=460800"}
 roles: {part mount: mount 1, signal: head 1, monitor: head 2, second monitor: head 3}
 """
 

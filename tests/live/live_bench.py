@@ -46,7 +46,10 @@ instruments:
   tec 1: {{driver: scpi-temperature-controller, at: "{source}", channel: 2}}
   shutter 1: {{driver: scpi-switch, at: "{shutter}", channel: 3}}
 diodes:
-  D-1: {{on: source 1, limits: {{current: 45 mA, compliance: 2.5 V, temperature: 10 degC to 40 degC}}, class on label: 3B}}
+  D-1:
+    on: source 1
+    limits: {{current: 45 mA, compliance: 2.5 V, temperature: 10 degC to 40 degC}}
+    class on label: 3B
 roles: {{part mount: mount 1, signal: head 1, diode: source 1, diode tec: tec 1, shutter: shutter 1}}
 """
 WIRES = {
