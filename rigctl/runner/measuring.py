@@ -17,7 +17,7 @@ from rigctl.runner.polling import complete
 from rigctl.runner.prepare import Climate
 from rigctl.runner.presence import Presence
 from rigctl.runner.progress import Level, Progress
-from rigctl.runner.prospect import expected_peak_w
+from rigctl.runner.prospect import expected_peaks_w
 from rigctl.runner.visiting import Visiting, is_overloaded
 from rigctl.timeline import Timeline
 
@@ -47,6 +47,7 @@ class Measuring:
         self.darkness = Darkness(bench, timeline, self.visiting, person)
         self.presence = Presence(bench, timeline, person)
         self.total, self.done, self.began_s = count_visits(recipe), 0, 0.0
+        self.peaks_w = expected_peaks_w(recipe)
         self.expected_s = Forecast(recipe, bench.capabilities).duration_s()
 
     def measure(self) -> None:
@@ -88,7 +89,7 @@ class Measuring:
         for role, meter in self.bench.meters.items():
             meter.set_wavelength(self.recipe.source.wavelength.value)
             meter.set_dwell(self.recipe.dwell.readings, aperture_s(self.recipe))
-            self.visiting.use_range(role, expected_peak_w(self.recipe, role))
+            self.visiting.use_range(role, max(peaks_w.get(role, 0.0) for peaks_w in self.peaks_w.values()))
         for source in self.bench.sources.values():
             source.switch_off()  # whoever used it before may have left it on
             source.program()
@@ -112,7 +113,7 @@ class Measuring:
         if not is_confirmed:
             self._event(f"step '{step.name}': nobody confirmed {', '.join(step.without)} out of the beam", "warning")
         for role in self.bench.meters:
-            self.visiting.use_range(role, expected_peak_w(self.recipe, role, step))
+            self.visiting.use_range(role, self.peaks_w[step.name].get(role, 0.0))
         self._darks(step, "before", kinds=("dark",))
         self.progress.phase(f"step '{step.name}'")
         self.darkness.let_light_in()

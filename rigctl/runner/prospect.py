@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 
 from rigctl.files.arrangement import train_of
 from rigctl.files.labels import STEP, level_labels
-from rigctl.files.recipe import Recipe, Step
+from rigctl.files.recipe import Recipe
 from rigctl.interfaces import Capabilities, MeterCapabilities
 from rigctl.runner.forecast import Forecast
 from rigctl.runner.plan import DARK_DWELLS, step_visits
@@ -39,29 +39,37 @@ def planned_rows(recipe: Recipe, *, duration_s: float) -> "list[Row]":
     return [replace(row, time_s=duration_s * place / last) for place, row in enumerate(rows)]
 
 
-def expected_peak_w(recipe: Recipe, role: str, step: Step | None = None) -> float:
-    """Return the largest power that the recipe's nominal values give at a detector, W.
+def expected_peaks_w(recipe: Recipe) -> Mapping[str, Mapping[str, float]]:
+    """Return the largest power that the recipe's nominal values give at each detector in each step, W.
 
     Three standard uncertainties of the source's power are added, so that a source on the bright side does not
     overload the range.
 
-    Parameters
-    ----------
-    step
-        Only its visits count; None: those of the whole recipe.
+    Returns
+    -------
+    By step and detector.
     """
+    import numpy as np
+
     from rigctl.optics import readings, visits_of
 
     train = train_of(recipe)
-    if role not in {detector.name for detector in train.detectors}:
-        return 0.0
     rows = planned_rows(replace(recipe, darks=()), duration_s=0.0)
     visits = visits_of(rows, train)
     levelled = train.levelled(visits)
-    counts = [step is None or row.labels[STEP] == step.name for row in rows]
+    power_w = readings(levelled, visits, levelled.values({}))
+    steps = np.array([row.labels[STEP] for row in rows])
     power = recipe.source.power
     margin = 1.5 if power is None else 1.0 + 3.0 * (power.u or 0.0) / power.value
-    return float(readings(levelled, visits, levelled.values({}))[role][counts].max()) * margin
+    return {
+        step.name: {role: float(column[steps == step.name].max()) * margin for role, column in power_w.items()}
+        for step in recipe.steps
+    }
+
+
+def expected_peak_w(recipe: Recipe, role: str) -> float:
+    """Return the largest power expected at a detector in any step, W."""
+    return max(peaks_w[role] for peaks_w in expected_peaks_w(recipe).values())
 
 
 def predicted(recipe: Recipe, capabilities: Mapping[str, Capabilities]) -> "Prediction":

@@ -265,6 +265,8 @@ def test_darks_by_hand_ask_the_person_to_block_and_to_clear(tmp_path: Path) -> N
     asked: list[str] = []
 
     class Listening(NobodyThere):
+        is_there = True
+
         def block_beam(self) -> None:
             asked.append("block")
             job.person.block_beam()
