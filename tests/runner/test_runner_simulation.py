@@ -61,11 +61,12 @@ def test_a_comment_that_mentions_an_address_keeps_it() -> None:
     assert f"# {MOUNT}, the left plug" in text
 
 
-def test_a_rig_on_a_single_line_gets_every_address_in_its_place() -> None:
-    """The first address grows, and must not shift where the second is looked for."""
-    text = written(FLOW, {MOUNT: LONGER, HEAD: "tcp://127.0.0.1:2"})
+@pytest.mark.parametrize("first", [LONGER, "tcp://h:1"])
+def test_a_rig_on_a_single_line_gets_every_address_in_its_place(first: str) -> None:
+    """The first address grows or shrinks, and must not shift where the second is looked for."""
+    text = written(FLOW, {MOUNT: first, HEAD: "tcp://127.0.0.1:2"})
 
-    assert text == FLOW.replace(MOUNT, LONGER).replace(HEAD, "tcp://127.0.0.1:2")
+    assert text == FLOW.replace(MOUNT, first).replace(HEAD, "tcp://127.0.0.1:2")
 
 
 def test_instruments_at_one_address_get_one_new_address() -> None:
