@@ -11,6 +11,7 @@ from rigctl.interfaces import (
     ControllerCapabilities,
     MeterCapabilities,
     ShutterCapabilities,
+    SourceCapabilities,
     StageCapabilities,
 )
 from rigctl.runner.approach import Standing, way_to
@@ -20,7 +21,7 @@ from rigctl.runner.steady import STEADY
 
 EXCHANGE_S = 0.002
 """An ordinary exchange on a local network; common practice."""
-SEEN_S = 0.02
+SEEN_S = 0.002
 """From the end of a move until the mount is seen at rest, on average; measured on the simulated mounts."""
 ROOM_C = 22.0
 """Where a temperature starts when nobody says; for the forecast only."""
@@ -55,9 +56,9 @@ class Forecast:
         return DARK_DWELLS * self.recipe.dwell.time_s + settling_s + 2 * self._shutter_s
 
     def _preparation_s(self, wanted: Preparation) -> float:
-        if isinstance(self.capabilities.get(wanted.role), ControllerCapabilities):
-            return self._temperature_s(wanted.role, wanted.to, wanted.steady)
-        return self._current_s(wanted.role, wanted.to, wanted.ramp_a_per_s) + wanted.warm_up_s
+        if isinstance(self.capabilities.get(wanted.role), SourceCapabilities):
+            return self._current_s(wanted.role, wanted.to, wanted.ramp_a_per_s) + wanted.warm_up_s
+        return self._temperature_s(wanted.role, wanted.to, wanted.steady)
 
     def _step_s(self, step: Step) -> float:
         per_visit = settle_s(step, self._slowest_s) + self.recipe.dwell.time_s + self._exchanges * EXCHANGE_S
