@@ -101,12 +101,12 @@ def predicted_u(recipe: str, rig: str, folder: Path) -> dict[str, float]:
 
 def test_fits_of_many_nights_scatter_as_was_predicted_before_the_first(tmp_path: Path) -> None:
     """Errors in units of the predicted uncertainty: mean 0 and deviation 1, within four standard errors."""
-    expected_u = predicted_u(NEARLY_KNOWN, DARK_NOISE_ONLY, tmp_path)
+    expected_u = predicted_u(NEARLY_KNOWN, AS_WRITTEN, tmp_path)
     errors: dict[str, list[float]] = {"part.extinction ratio": [], "part.dial offset": []}
 
     for seed in range(7000, 7000 + NIGHTS):
         path = tmp_path / f"{seed}.h5"
-        run_job(make_job(path, recipe=NEARLY_KNOWN, rig=DARK_NOISE_ONLY, seed=seed))
+        run_job(make_job(path, recipe=NEARLY_KNOWN, rig=AS_WRITTEN, seed=seed))
         run = load_run(path)
         fitted = fit_run(run)
         for name, found in errors.items():
