@@ -5,8 +5,8 @@ Pure arithmetic; it owns no state and knows no instrument.
 
 import math
 
-FORGOTTEN = 25.0
-"""After so many time constants a change has left exp(-25) = 1e-11 of itself; an instrument shows 1e-7."""
+FORGOTTEN = 18.0
+"""After so many time constants a change has left exp(-18) = 1.5e-8 of itself; an instrument shows 1e-7."""
 _SHORT = 1e-3
 """Parts of a time constant; Simpson's rule misses the fifth power of this, over 2880."""
 
