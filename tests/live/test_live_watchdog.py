@@ -112,23 +112,43 @@ def test_a_watchdog_that_dies_is_replaced_while_the_run_goes_on(tmp_path: Path) 
     assert took_s < OFF_WITHIN_S
 
 
-def kill_once(live: LiveBench, path: Path, delay_s: float) -> tuple[str, float, int]:
-    """Kill a run after some time; return the phase it was in, how long the source stayed on, s, and the visits."""
+def visits_in(path: Path) -> int:
+    """Number of visits that a run has acknowledged."""
+    journal = Path(f"{path}.journal")
+    return journal.read_bytes().count(b'"kind":"visit"') if journal.exists() else 0
+
+
+def wait_for_visit(path: Path, timeout_s: float = 30.0) -> None:
+    deadline = time.monotonic() + timeout_s
+    while not visits_in(path):
+        assert time.monotonic() < deadline, "no visit was ever recorded"
+        time.sleep(0.005)
+
+
+def kill_once(live: LiveBench, path: Path, number: int, source: random.Random) -> tuple[str, float]:
+    """Kill a run: before it emits, while it is prepared, or among its visits, by turns, each at a random instant.
+
+    Returns
+    -------
+    The phase that it was in, and how long the source stayed on, s.
+    """
     process = live.start_run(path)
-    time.sleep(delay_s)
+    if number % 3 == 1:
+        live.wait_until(emits=True)
+    elif number % 3 == 2:
+        wait_for_visit(path)
+    time.sleep(source.uniform(0.0, (3.0, 0.9, 2.0)[number % 3]))
     was_on = live.emits()
     process.kill()
     took_s = live.wait_until(emits=False) if was_on else 0.0
     process.communicate()
     time.sleep(0.3)
     assert not live.emits()
-    journal = Path(f"{path}.journal")
-    acknowledged = journal.read_bytes().count(b'"kind":"visit"') if journal.exists() else 0
-    phase = "before the output" if not was_on else "emitting, visits" if acknowledged else "emitting, preparing"
-    if path.exists() or journal.exists():
-        run = load_run(path)
-        assert len(run.visits("data")) >= acknowledged - 1
-    return phase, took_s, acknowledged
+    acknowledged = visits_in(path)
+    if path.exists() or acknowledged:
+        assert len(load_run(path).visits("data")) == acknowledged
+    phase = "before it emits" if not was_on else "among visits" if acknowledged else "being prepared"
+    return phase, took_s
 
 
 @pytest.mark.soak
@@ -140,10 +160,10 @@ def test_kill_9_at_fifty_random_instants_always_ends_with_the_source_off(wires: 
         folder = tmp_path / str(number)
         folder.mkdir()
         with live_bench(folder, wires=wires) as live:
-            seen.append(kill_once(live, folder / "run.h5", source.uniform(0.8, 6.5)))
+            seen.append(kill_once(live, folder / "run.h5", number, source))
 
-    times = sorted(took_s for phase, took_s, _ in seen if phase != "before the output")
-    phases = {phase: [p for p, _, _ in seen].count(phase) for phase, _, _ in seen}
+    times = sorted(took_s for phase, took_s in seen if phase != "before it emits")
+    phases = {phase: [p for p, _ in seen].count(phase) for phase, _ in seen}
     print(f"{wires}: {phases}; source off after {times[len(times) // 2]:.3f} s (median), {times[-1]:.3f} s (longest)")
     assert len(phases) == 3
     assert times[-1] < OFF_WITHIN_S
