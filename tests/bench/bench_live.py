@@ -37,12 +37,12 @@ def measure(folder: Path, recipe_text: str, rig_text: str, what: str) -> None:
     )
     recipe_path.write_text(recipe_text, encoding="utf-8")
     rig_path.write_text(rig_text, encoding="utf-8")
-    serving = [*COMMAND, "simulate", rig_path, "--recipe", recipe_path, "--write", twins_path]
-    twins = subprocess.Popen(serving, stdout=subprocess.DEVNULL)
+    serving = ("simulate", rig_path, "--recipe", recipe_path, "--write", twins_path)
+    twins = subprocess.Popen([*COMMAND, *map(str, serving)], stdout=subprocess.DEVNULL)
     try:
         while not twins_path.exists():
             time.sleep(0.05)
-        running = [*COMMAND, "run", recipe_path, "--rig", twins_path, "--arm", "--out", run_path]
+        running = [*COMMAND, *map(str, ("run", recipe_path, "--rig", twins_path, "--arm", "--out", run_path))]
         subprocess.run(running, check=True, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL)
     finally:
         twins.terminate()
