@@ -4,6 +4,8 @@ It owns the order: identify, home, set up, darks with the source off, prepare, s
 failures of a visit cost an attempt instead of the night.
 """
 
+from dataclasses import asdict
+
 from rigctl.errors import FramingError, LinkTimeoutError, PolrigError
 from rigctl.files.recipe import Dark, Recipe, Step
 from rigctl.record.run_writer import RunWriter
@@ -70,9 +72,12 @@ class Measuring:
 
     def _identify(self) -> None:
         for role, identity in identify_all(self.bench).items():
-            name = self.bench.entries[role].name
-            fields = {key: getattr(identity, key) for key in ("maker", "model", "serial", "firmware")}
-            self.writer.append({"kind": "identity", "instrument": name, "role": role, "identity": fields})
+            entry = self.bench.entries[role]
+            about = {"instrument": entry.name, "role": role}
+            self.writer.append({"kind": "identity", **about, "identity": asdict(identity)})
+            if entry.calibration is not None:
+                values = {**asdict(entry.calibration), "due": entry.calibration.due.isoformat()}
+                self.writer.append({"kind": "calibration", "instrument": entry.name, "values": values})
 
     def _home(self) -> None:
         """Home mounts that lost their place: beam blocked, meters on their largest range."""

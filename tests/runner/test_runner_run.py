@@ -299,3 +299,21 @@ def test_dwells_are_not_begun_before_the_meter_has_forgotten_the_old_level(tmp_p
     rho = truth["part.extinction ratio"]
     light = truth["source.power"] / 2 * (np.cos(theta) ** 2 + rho * np.sin(theta) ** 2)
     np.testing.assert_allclose(lit, light + truth["signal.stray light"], atol=2e-3 * max(light))
+
+
+def test_a_meter_s_certificate_goes_into_the_run_file(tmp_path: Path) -> None:
+    certificate = "calibration: {certificate: K-7, due: 2027-03-01, expanded uncertainty: 3 %, coverage factor: 2}"
+    rig = RIG.replace("at: tcp://127.0.0.1:5002}", f"at: tcp://127.0.0.1:5002, {certificate}}}")
+
+    run_job(make_job(tmp_path / "run.h5", rig=rig))
+
+    (record,) = load_run(tmp_path / "run.h5").of_kind("calibration")
+    assert record["instrument"] == "head 1"
+    assert record["values"] == {
+        "certificate": "K-7",
+        "due": "2027-03-01",
+        "expanded_uncertainty": 0.03,
+        "coverage_factor": 2.0,
+    }
+    with h5py.File(tmp_path / "run.h5") as file:
+        assert b"K-7" in str(file["entry/instrument/signal"]["calibration/certificate"][()]).encode()
