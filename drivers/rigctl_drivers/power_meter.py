@@ -128,8 +128,8 @@ class ScpiPowerMeter:
         with reading(self._link) as at:
             levels_w, flags = parse_readings(block, count=self._readings, address=at)
             range_w = parse_number(full_scale, address=at)
-            is_questionable = parse_register(status, address=at) != 0
-        flags |= Flag.QUESTIONABLE if is_questionable else Flag(0)
+            if parse_register(status, address=at) != 0:
+                flags |= Flag.QUESTIONABLE
         return Dwell(levels_w, flags, range_w=range_w, began_s=began_s, ended_s=ended_s)
 
     def _holding(self, power_w: float) -> float:

@@ -22,8 +22,8 @@ _PRINTED = 1e-6
 """Relative; seven digits, fewer than a number in single precision keeps."""
 _REGISTER = re.compile(r"[+-]?[0-9]{1,5}")
 _SHOWN = {NotAReading.OVER: math.inf, NotAReading.UNDER: -math.inf, NotAReading.NAN: math.nan}
+_NO_FLAG = Flag(0)
 _FLAGS = {
-    None: Flag(0),
     NotAReading.OVER: Flag.OVERLOAD,
     NotAReading.UNDER: Flag.UNDERRANGE,
     NotAReading.NAN: Flag.NOT_A_NUMBER,
@@ -162,9 +162,10 @@ def parse_readings(text: str, *, count: int, address: str) -> tuple[tuple[float,
     reals = [parse_real(part, address=address) for part in text.split(",")]
     if len(reals) != count:
         raise no_reply(f"{len(reals)} readings instead of {count}", text.encode(), address=address)
-    flags = Flag(0)
+    flags = _NO_FLAG
     for real in reals:
-        flags |= _FLAGS[real.flag]
+        if real.flag is not None:
+            flags |= _FLAGS[real.flag]
     return tuple(real.value for real in reals), flags
 
 

@@ -101,9 +101,9 @@ class ScpiTwin:
 
     def _execute(self, units: tuple[Unit, ...], at_s: float) -> None:
         """Execute from the present unit on, until the line ends or a command has to wait."""
+        self._catch_up(at_s)
         while self._unit_number < len(units):
             unit = units[self._unit_number]
-            self._catch_up(at_s)
             try:
                 result = self._result(unit, at_s)
             except Complaint as complaint:
