@@ -1,4 +1,7 @@
-"""A twelve-hour night rehearsed: 14,400 visits, two meters, four readings a visit, the full bench's physics.
+"""Twelve-hour nights rehearsed: 14,400 visits, two meters, four readings a visit, the bench's physics.
+
+One night has a source that nobody drives; the other a driven and cooled diode and an oven, whose conditions are read at
+every visit.
 
 Prints visits a second beside a bare loop of the same number of exchanges in the same run, the exchanges a visit, the
 memory at a tenth and at the end, and where the time goes.
@@ -54,6 +57,22 @@ steps:
 dwell: {{time: 400 ms, at least: 4 readings}}
 dark: {{by: shutter, before: true, after: true, every: 1 h}}
 """
+STEADY_RECIPE = """
+recipe: a twelve-hour night on a steady source
+roles: {{part mount: rotation stage, signal: power meter, monitor: power meter, shutter: shutter}}
+source: {{wavelength: 785.2 nm, power: 2 mW +- 20 %}}
+optics:
+  - polarizer: {{name: entry polarizer, axis: 0 deg, extinction ratio: 100000:1 +- 30 %}}
+  - pick-off: {{to: monitor, fraction: 0.04 +- 0.002}}
+  - retarder: {{name: part, turned by: part mount, retardance: 0.25 waves, unknown: [retardance, dial offset]}}
+  - polarizer: {{name: exit polarizer, axis: 0 deg +- 0.1 deg, extinction ratio: 100000:1 +- 30 %}}
+  - detector: {{role: signal}}
+steps:
+  - name: night
+    sweep: [{{repeat: 4}}, {{part mount: {{turn: {turns}, step: 1 deg, approach: from below}}}}]
+dwell: {{time: 400 ms, at least: 4 readings}}
+dark: {{by: shutter, before: true, after: true, every: 1 h}}
+"""
 TURNS = 10
 
 
@@ -79,13 +98,13 @@ def peak_mb() -> float:
     return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
 
 
-def make_job(folder: Path, turns: int, seed: int, memory: Memory) -> Job:
+def make_job(folder: Path, text: str, turns: int, *, seed: int, memory: Memory) -> Job:
     drivers, factory = find_drivers(), find_bench_factory()
-    recipe = parse_recipe(RECIPE.format(turns=turns), "night.yaml")
-    text = factory.default_rig({name: role.kind for name, role in recipe.roles.items()})
-    rig = parse_rig(text, "default", drivers, factory)
+    recipe = parse_recipe(text.format(turns=turns), "night.yaml")
+    rig_text = factory.default_rig({name: role.kind for name, role in recipe.roles.items()})
+    rig = parse_rig(rig_text, "default", drivers, factory)
     match(recipe, rig, drivers)
-    path = folder / f"night-{seed}.h5"
+    path = folder / f"{recipe.title.replace(' ', '-')}-{seed}.h5"
     return rehearsal_job(recipe, rig, drivers=drivers, factory=factory, seed=seed, path=path, progress=memory)
 
 
@@ -109,7 +128,7 @@ def counted(job: Job) -> tuple[Job, list[int]]:
 
 def bare_exchanges_a_second(folder: Path) -> float:
     """One query after another on a meter's loopback, with nothing around it."""
-    job = make_job(folder, 1, 99, Memory())
+    job = make_job(folder, RECIPE, 1, seed=99, memory=Memory())
     channel = job.open_channel(job.rig.instruments[job.rig.roles["signal"]].at, Opening())
     began_s = time.perf_counter()
     for _ in range(20_000):
@@ -127,28 +146,36 @@ def profile_of(job: Job) -> str:
     return "\n".join(line for line in text.getvalue().splitlines()[6:] if line.strip())
 
 
+def measure(folder: Path, text: str) -> None:
+    """Rehearse two nights of a recipe and print what they took."""
+    job, writes = counted(make_job(folder, text, 1, seed=1, memory=Memory()))
+    run_job(job)
+    exchanges = len(writes) / count_visits(job.recipe)
+    print(f"{job.recipe.title}: {exchanges:.2f} exchanges a visit")
+    rates = []
+    for seed in (2, 3):
+        memory = Memory()
+        job = make_job(folder, text, TURNS, seed=seed, memory=memory)
+        visits = count_visits(job.recipe)
+        began_s, cpu_s = time.perf_counter(), time.process_time()
+        outcome = run_job(job)
+        wall_s, used_s = time.perf_counter() - began_s, time.process_time() - cpu_s
+        assert outcome.exit_code == 0, outcome.why
+        rates.append(visits / used_s)
+        print(f"  {visits} visits in {wall_s:.2f} s ({used_s:.2f} s of processor): {rates[-1]:,.0f} visits a second")
+        print(f"  memory: {memory.at_tenth_mb:.0f} MB at a tenth of the night, {peak_mb():.0f} MB at its end")
+    bare = bare_exchanges_a_second(folder)
+    print(
+        f"  bare exchanges {bare:,.0f} a second: a visit takes {bare / exchanges / max(rates):.1f} times its own alone"
+    )
+
+
 def main() -> int:
     with tempfile.TemporaryDirectory() as name:
         folder = Path(name)
-        job, writes = counted(make_job(folder, 1, 1, Memory()))
-        run_job(job)
-        exchanges = len(writes) / count_visits(job.recipe)
-        rates = []
-        for seed in (2, 3):
-            memory = Memory()
-            job = make_job(folder, TURNS, seed, memory)
-            visits = count_visits(job.recipe)
-            began_s, cpu_s = time.perf_counter(), time.process_time()
-            outcome = run_job(job)
-            wall_s, used_s = time.perf_counter() - began_s, time.process_time() - cpu_s
-            assert outcome.exit_code == 0, outcome.why
-            rates.append(visits / used_s)
-            print(f"{visits} visits in {wall_s:.2f} s ({used_s:.2f} s of processor): {rates[-1]:,.0f} visits a second")
-            print(f"memory: {memory.at_tenth_mb:.0f} MB at a tenth of the night, {peak_mb():.0f} MB at its end")
-        bare = bare_exchanges_a_second(folder)
-        print(f"{exchanges:.2f} exchanges a visit; bare exchanges {bare:,.0f} a second,")
-        print(f"so a visit takes {bare / exchanges / max(rates):.1f} times its exchanges alone")
-        print(profile_of(make_job(folder, 2, 5, Memory())))
+        measure(folder, STEADY_RECIPE)
+        measure(folder, RECIPE)
+        print(profile_of(make_job(folder, RECIPE, 2, seed=5, memory=Memory())))
     return 0
 
 
