@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from rigctl.errors import DamagedFileError, RecordError, UsageError
+from rigctl.record.collector import collector_at_rest
 from rigctl.record.journal import JournalContent, journal_path, parse_journal
 from rigctl.record.publish import publish_final
 from rigctl.record.run import Run
@@ -123,4 +124,5 @@ def _run(records: Sequence[Mapping[str, Any]], path: Path, *, is_live: bool) -> 
             where=str(path),
             do="try again; where it stays so, nothing was measured and it can be deleted",
         )
-    return Run.of(records, is_live=is_live)
+    with collector_at_rest():
+        return Run.of(records, is_live=is_live)

@@ -10,6 +10,7 @@ from types import TracebackType
 from typing import Any, Self
 
 from rigctl.errors import RecordError
+from rigctl.record.collector import collector_at_rest
 from rigctl.record.disk import sync_directory
 from rigctl.record.journal import Journal, journal_path, parse_journal
 from rigctl.record.layout import Header, check_header
@@ -93,7 +94,8 @@ class RunWriter:
 
     def view(self) -> None:
         """Bring the run file up to date."""
-        publish(self.path, self.run, self._journal.content())
+        with collector_at_rest():
+            publish(self.path, self.run, self._journal.content())
 
     def view_if_due(self, timeline: Timeline) -> None:
         """Bring the run file up to date when that was long enough ago; a rehearsal waits for its end.
@@ -131,7 +133,8 @@ class RunWriter:
         """
         try:
             self.append({"kind": "end", "t": t_s, "status": status, "code": code, "why": why})
-            publish_final(self.path, self.run, self._journal.content())
+            with collector_at_rest():
+                publish_final(self.path, self.run, self._journal.content())
         finally:
             self._journal.close()
 
