@@ -15,7 +15,7 @@ test: $(READY)
 	@$(BIN)/pytest -n 2
 
 soak: $(READY)
-	@$(BIN)/pytest -n 2 -m soak
+	@$(BIN)/pytest -n 2 -m soak -rP
 
 check: $(READY)
 	@$(BIN)/ruff format --check --quiet .
