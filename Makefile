@@ -22,7 +22,7 @@ check: $(READY)
 	@$(BIN)/ruff check --quiet .
 	@$(BIN)/mypy rigctl drivers/rigctl_drivers simulators/rigctl_sim
 	@$(BIN)/mypy tests --exclude 'conftest\.py$$'
-	@for file in tests/*/conftest.py; do $(BIN)/mypy $$file || exit 1; done
+	@for file in tests/conftest.py tests/*/conftest.py; do $(BIN)/mypy $$file || exit 1; done
 	@$(BIN)/lint-imports --no-cache
 	@$(BIN)/python tests/scorecard.py
 

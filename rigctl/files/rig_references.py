@@ -8,6 +8,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from rigctl.files.leaves import LABEL, is_label
 from rigctl.files.mistakes import either, nearest_word, quoted
 from rigctl.files.options import read_options
 from rigctl.files.part import Part
@@ -96,9 +97,14 @@ def _check_addresses(
 
 
 def _check_roles(roles: Part, instruments: Part) -> None:
-    """Refuse roles filled by nothing. One instrument may fill several: those of recipes that are run in turn."""
+    """Refuse roles that no recipe can have, or that nothing fills.
+
+    One instrument may fill several: those of recipes that are run in turn.
+    """
     names = instruments.items()
-    for part in roles.items().values():
+    for role, part in roles.items().items():
+        if not is_label(role):
+            part.wrong_key(f"{quoted(role)} is no name of a role", expected=LABEL)
         name = part.text
         if name is None:
             continue

@@ -344,3 +344,10 @@ def test_a_message_offers_a_few_words_of_many() -> None:
 
     assert expected.startswith("one of 'spare 0', 'spare 1', ")
     assert expected.endswith("'spare 11' and 91 more")
+
+
+def test_a_role_that_no_recipe_can_have_is_told() -> None:
+    text = "rig: r\ninstruments:\n  m: {driver: turner, at: tcp://127.0.0.1:1}\nroles: {p&a mount: m}\n"
+
+    with pytest.raises(FileError, match=r"r\.yaml:4:9: 'p&a mount' is no name of a role"):
+        parse_rig(text, "r.yaml", DRIVERS, None)
