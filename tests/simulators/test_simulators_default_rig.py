@@ -17,10 +17,10 @@ RECIPES = sorted((Path(__file__).parents[2] / "recipes").glob("*.yaml"))
 ROLES: dict[str, RoleKind] = {
     "part mount": "rotation stage",
     "signal": "power meter",
-    'odd: "name" #1': "power meter",
+    "odd name 1": "power meter",
     "shutter": "shutter",
     "diode": "current source",
-    'another "diode"': "current source",
+    "another diode": "current source",
     "diode tec": "temperature controller",
     "oven": "temperature controller",
     "part slide": "slide",
@@ -56,7 +56,7 @@ def test_every_source_has_a_diode_with_limits(drivers: Mapping[str, Driver]) -> 
 
     found = {diode.on: (diode.current_a, diode.compliance_v, diode.label_class) for diode in rig.diodes.values()}
 
-    assert found == dict.fromkeys([rig.roles["diode"], rig.roles['another "diode"']], (0.1, 3.0, "3B"))
+    assert found == dict.fromkeys([rig.roles["diode"], rig.roles["another diode"]], (0.1, 3.0, "3B"))
 
 
 def test_a_bench_without_sources_has_no_diodes(drivers: Mapping[str, Driver]) -> None:
