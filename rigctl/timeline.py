@@ -45,11 +45,6 @@ class StopRequest:
             raise StopRequestedError(self.reasons[0])
 
     @property
-    def is_raised(self) -> bool:
-        """Whether a wait must end now with `StopRequestedError`."""
-        return bool(self.reasons) and not self._masked
-
-    @property
     def is_hurried(self) -> bool:
         """Whether masked waits are to be skipped: asked more than once."""
         return len(self.reasons) > 1

@@ -10,11 +10,10 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 from rigctl.files.recipe import Axis, Order, Recipe, Step
-from rigctl.record.layout import AxisLayout, StepLayout
+from rigctl.record.layout import REPEAT, AxisLayout, StepLayout
 
 DARK_DWELLS = 5
 """Dwells of one dark: with four readings each, its mean is known four times better than one reading."""
-REPEAT = "repeat"
 TIME_CONSTANTS = math.log(1e4)
 """So many time constants leave a ten-thousandth of a change, where nobody asks for better."""
 UNITS = {"angle": "deg", "temperature": "degC", "current": "A", REPEAT: "1"}
